@@ -1,0 +1,5 @@
+"""``python -m climarisk``."""
+
+from climarisk.cli import main
+
+main()
