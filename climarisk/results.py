@@ -1,0 +1,104 @@
+"""What a study gives back: typed results around the tables of the file contract."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+from typing import Any
+
+import pandas as pd
+
+from climarisk.aircraft import AircraftProfile
+from climarisk.fields import Field
+from climarisk.findings import Finding
+
+#: Variables of the distribution tables and their units.
+VARIABLES: dict[str, str] = {
+    "density_altitude": "ft",
+    "pressure_altitude": "ft",
+    "temperature": "degC",
+    "dew_point": "degC",
+    "relative_humidity": "%",
+    "vapour_pressure": "hPa",
+}
+PERCENTILES = (1, 5, 10, 25, 50, 75, 90, 95, 99)
+
+_STATISTICS = ["n_hours", "n_years", "coverage", "mean", *(f"p{p:02d}" for p in PERCENTILES)]
+_RISK = [
+    "n_hours",
+    "n_years",
+    "shortfall",
+    "ci_low",
+    "ci_high",
+    "outside_table",
+    "limiting",
+    "margin_p10",
+    "margin_p50",
+    "days_affected",
+]
+DISTRIBUTIONS_MONTHLY_COLUMNS = ["field", "variable", "unit", "month", *_STATISTICS]
+DISTRIBUTIONS_HOURLY_COLUMNS = ["field", "variable", "unit", "month", "hour", *_STATISTICS]
+RISK_MONTHLY_COLUMNS = ["field", "aircraft", "month", *_RISK]
+RISK_HOURLY_COLUMNS = ["field", "aircraft", "month", "hour", *_RISK]
+RISK_SEASONAL_COLUMNS = ["field", "aircraft", "season", *_RISK]
+
+#: Columns of `StudyResult.station_use`: one row per field and station used at it.
+STATION_USE_COLUMNS = [
+    "field",
+    "station",
+    "name",
+    "archive",
+    "distance_km",
+    "height_difference_m",  # field minus station
+    "first",  # first and last date with an hour in the period, ISO
+    "last",
+    "coverage",  # hours with an air temperature / hours of the period
+    "share_of_hours",  # share of the field's hours whose air came from this station
+    "pressure_kind",  # station pressure, QNH, sea-level pressure, none
+]
+
+
+@dataclass(frozen=True)
+class StudyResult:
+    """Everything one run of a study produced.
+
+    Parameters
+    ----------
+    title : str
+    fields : tuple of Field
+        Runways inside.
+    aircraft : tuple of AircraftProfile
+    settings : dict
+        The settings that shaped the numbers, as JSON-ready values: ``first_year``,
+        ``last_year``, ``window``, ``seasons``, ``bands``, ``confidence``, ...
+    distributions_monthly, distributions_hourly : DataFrame
+        Columns `DISTRIBUTIONS_MONTHLY_COLUMNS`, `DISTRIBUTIONS_HOURLY_COLUMNS`; every
+        field x variable x month (x hour), in the study's order; a cell that fails the
+        completeness rule is NaN.
+    risk_monthly, risk_hourly, risk_seasonal : DataFrame
+        Columns `RISK_MONTHLY_COLUMNS` and so on; shares 0-1.
+    station_use : DataFrame
+        Columns `STATION_USE_COLUMNS`.
+    pressure_sources : DataFrame
+        Columns ``field, source, share``: which share of a field's hours has its pressure
+        from what (``station pressure``, ``QNH``, ``sea-level pressure``, ``climatological``).
+    attributions : tuple of str
+        Licence and attribution lines of the data used.
+    findings : tuple of Finding
+    provenance : dict
+        JSON-ready: program version, hashes of the inputs, settings, stations.
+    """
+
+    title: str
+    fields: tuple[Field, ...]
+    aircraft: tuple[AircraftProfile, ...]
+    settings: dict[str, Any]
+    distributions_monthly: pd.DataFrame
+    distributions_hourly: pd.DataFrame
+    risk_monthly: pd.DataFrame
+    risk_hourly: pd.DataFrame
+    risk_seasonal: pd.DataFrame
+    station_use: pd.DataFrame
+    pressure_sources: pd.DataFrame
+    attributions: tuple[str, ...]
+    findings: tuple[Finding, ...]
+    provenance: dict[str, Any]

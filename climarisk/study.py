@@ -1,0 +1,316 @@
+"""A study as its files describe it, read and checked as a whole."""
+
+from __future__ import annotations
+
+import datetime as dt
+from dataclasses import dataclass, field
+from pathlib import Path
+from typing import Annotated, Any, Literal
+
+from annotated_types import Ge, Gt, Le, Lt, MinLen
+from pydantic import field_validator, model_validator
+
+from climarisk.aircraft import AircraftProfile, read_aircraft
+from climarisk.errors import InputError
+from climarisk.fields import Field, read_fields, read_runways
+from climarisk.inputs import Strict, Text, load_toml, nearest, repeated, validate
+from climarisk.stations import Station, read_stations
+
+_Year = Annotated[int, Ge(1800), Le(2200)]
+_Hour = Annotated[int, Ge(0), Le(23)]
+_Share = Annotated[float, Gt(0), Lt(1)]
+
+#: Meteorological seasons, used where a study names none: month numbers.
+DEFAULT_SEASONS: dict[str, tuple[int, ...]] = {
+    "DJF": (12, 1, 2),
+    "MAM": (3, 4, 5),
+    "JJA": (6, 7, 8),
+    "SON": (9, 10, 11),
+}
+
+
+class _Period(Strict):
+    first_year: _Year
+    last_year: _Year
+
+    @model_validator(mode="after")
+    def _ordered(self) -> _Period:
+        if self.last_year < self.first_year:
+            raise ValueError(
+                f"last_year {self.last_year} is before first_year {self.first_year}; swap them"
+            )
+        return self
+
+
+class _Weather(Strict):
+    source: Literal["files", "meteostat", "synthetic"] = "files"
+    stations: str | None = None
+    radius_km: Annotated[float, Gt(0), Le(1000)] = 100.0
+    seed: Annotated[int, Ge(0)] = 0
+
+
+class _Hours(Strict):
+    window: Literal["daylight", "all"] | tuple[_Hour, _Hour] = "daylight"
+
+
+class _Risk(Strict):
+    bands: Annotated[list[_Share], MinLen(1)] = [0.01, 0.05, 0.20]
+    confidence: Annotated[float, Ge(0.5), Lt(1)] = 0.90
+    humidity_in_tables: bool = True
+
+    @field_validator("bands")
+    @classmethod
+    def _rising(cls, bands: list[float]) -> list[float]:
+        if any(b <= a for a, b in zip(bands, bands[1:], strict=False)):
+            raise ValueError("the band edges must rise")
+        return bands
+
+
+class _StudyFile(Strict):
+    title: Text
+    fields: str
+    runways: str
+    aircraft: Annotated[list[str], MinLen(1)]
+    period: _Period
+    weather: _Weather = _Weather()
+    hours: _Hours = _Hours()
+    seasons: dict[Text, tuple[str, str]] = {}
+    risk: _Risk = _Risk()
+
+
+@dataclass(frozen=True)
+class Season:
+    """A named part of the year.
+
+    Parameters
+    ----------
+    name : str
+    days : frozenset of (int, int)
+        Month and day of each day in it; 29 February included where its neighbours are.
+    """
+
+    name: str
+    days: frozenset[tuple[int, int]]
+
+
+@dataclass(frozen=True)
+class Study:
+    """A checked study.
+
+    Parameters
+    ----------
+    path : Path
+        The study file.
+    title : str
+    fields : tuple of Field
+    aircraft : tuple of AircraftProfile
+    stations : tuple of Station
+        Empty for an online study that lists none.
+    source : {"files", "meteostat", "synthetic"}
+    first_year, last_year : int
+        Inclusive, by local standard time.
+    radius_km : float
+    window : {"daylight", "all"} or (int, int)
+        Hours window; a pair means full local standard hours, both ends included.
+    seasons : tuple of Season
+    bands : tuple of float
+        Edges of the bands, rising, within 0-1.
+    confidence : float
+        Of the intervals, 0.5-1.
+    humidity_in_tables : bool
+        Tables are entered with the virtual temperature instead of the air temperature.
+    seed : int
+        Of the synthetic weather.
+    inputs : tuple of Path
+        Every file read for the study, archives apart.
+    """
+
+    path: Path
+    title: str
+    fields: tuple[Field, ...]
+    aircraft: tuple[AircraftProfile, ...]
+    stations: tuple[Station, ...]
+    source: str
+    first_year: int
+    last_year: int
+    radius_km: float
+    window: str | tuple[int, int]
+    seasons: tuple[Season, ...]
+    bands: tuple[float, ...]
+    confidence: float
+    humidity_in_tables: bool
+    seed: int = 0
+    inputs: tuple[Path, ...] = field(default=())
+
+    @property
+    def name(self) -> str:
+        """The name of the study's folder."""
+        return self.path.resolve().parent.name
+
+    def settings(self) -> dict[str, Any]:
+        """The settings that shape the numbers, JSON-ready."""
+        return {
+            "first_year": self.first_year,
+            "last_year": self.last_year,
+            "source": self.source,
+            "radius_km": self.radius_km,
+            "window": self.window if isinstance(self.window, str) else list(self.window),
+            "seasons": {s.name: _season_text(s) for s in self.seasons},
+            "bands": list(self.bands),
+            "confidence": self.confidence,
+            "humidity_in_tables": self.humidity_in_tables,
+        }
+
+
+def read_study(path: Path | str) -> Study:
+    """The study of a study file.
+
+    Parameters
+    ----------
+    path : Path or str
+        The study TOML, or the folder that holds it as ``study.toml``.
+
+    Raises
+    ------
+    InputError
+        Anything is wrong in the study's files; every problem found is told.
+    """
+    path = Path(path)
+    if path.is_dir():
+        path = path / "study.toml"
+    problems: list[str] = []
+    checked = validate(_StudyFile, load_toml(path), str(path), problems)
+    if checked is None:
+        raise InputError(problems)
+    folder = path.parent
+    seasons = _seasons(checked.seasons, path, problems)
+    fields = _collect(read_fields, problems, folder / checked.fields)
+    fields_read = bool(fields)
+    fields = _collect(read_runways, problems, folder / checked.runways, fields) if fields else []
+    aircraft, aircraft_paths = _aircraft(checked.aircraft, path, problems)
+    stations = _stations(checked.weather, path, problems)
+    if fields_read and stations:
+        problems += _pin_problems(fields, stations, folder / checked.fields)
+    if problems:
+        raise InputError(problems)
+    inputs = [path, folder / checked.fields, folder / checked.runways, *aircraft_paths]
+    if checked.weather.stations:
+        inputs.append(folder / checked.weather.stations)
+        inputs += sorted({s.mapping_path for s in stations if s.mapping_path is not None})
+    return Study(
+        path=path,
+        title=checked.title,
+        fields=tuple(fields),
+        aircraft=tuple(aircraft),
+        stations=tuple(stations),
+        source=checked.weather.source,
+        first_year=checked.period.first_year,
+        last_year=checked.period.last_year,
+        radius_km=checked.weather.radius_km,
+        window=checked.hours.window,
+        seasons=tuple(seasons),
+        bands=tuple(checked.risk.bands),
+        confidence=checked.risk.confidence,
+        humidity_in_tables=checked.risk.humidity_in_tables,
+        seed=checked.weather.seed,
+        inputs=tuple(inputs),
+    )
+
+
+def _collect(read: Any, problems: list[str], *arguments: Any) -> Any:
+    """What a reader returns, its problems and its refusal added to `problems`."""
+    try:
+        result, found = read(*arguments)
+    except InputError as error:
+        problems.extend(error.problems)
+        return []
+    problems.extend(found)
+    return result
+
+
+def _aircraft(
+    patterns: list[str], path: Path, problems: list[str]
+) -> tuple[list[AircraftProfile], list[Path]]:
+    paths: list[Path] = []
+    for pattern in patterns:
+        if Path(pattern).is_absolute():
+            problems.append(f"{path}: aircraft: {pattern!r} must be relative to the study folder.")
+            continue
+        found = sorted(p for p in path.parent.glob(pattern) if p.is_file())
+        if not found:
+            problems.append(f"{path}: aircraft: no file fits {pattern!r}.")
+        paths += [p for p in found if p not in paths]
+    read = [_collect(read_aircraft, problems, p) for p in paths]
+    profiles = [p for p in read if p]
+    for twice in repeated(p.id for p in profiles):
+        problems.append(f"{path}: two aircraft profiles have the id {twice!r}; rename one.")
+    return profiles, paths
+
+
+def _stations(weather: _Weather, path: Path, problems: list[str]) -> list[Station]:
+    if weather.stations is None:
+        if weather.source != "meteostat":
+            problems.append(
+                f'{path}: [weather] source {weather.source!r} needs stations = "stations.csv".'
+            )
+        return []
+    return _collect(read_stations, problems, path.parent / weather.stations, weather.source)
+
+
+def _pin_problems(fields: list[Field], stations: list[Station], path: Path) -> list[str]:
+    known = [s.id for s in stations]
+    return [
+        f"{path}: the field {f.id!r} is pinned to the station {s!r}, which is not in the "
+        f"stations file; {nearest(s, known)}"
+        for f in fields
+        for s in f.stations
+        if s not in known
+    ]
+
+
+def _seasons(named: dict[str, tuple[str, str]], path: Path, problems: list[str]) -> list[Season]:
+    if not named:
+        year = _days_of_year()
+        return [
+            Season(name, frozenset(day for day in year if day[0] in months))
+            for name, months in DEFAULT_SEASONS.items()
+        ]
+    seasons = []
+    for name, (first, last) in named.items():
+        try:
+            seasons.append(Season(name, _days_between(_month_day(first), _month_day(last))))
+        except ValueError as error:
+            problems.append(f"{path}: [seasons] {name!r}: {error}")
+    return seasons
+
+
+def _month_day(text: str) -> tuple[int, int]:
+    try:
+        month, day = (int(part) for part in text.split("-"))
+        dt.date(2000, month, day)
+    except ValueError:
+        raise ValueError(f'{text!r} is no date; give month and day as "06-15".') from None
+    return month, day
+
+
+def _days_of_year() -> list[tuple[int, int]]:
+    first = dt.date(2000, 1, 1)  # a leap year, so that 29 February is among them
+    days = (first + dt.timedelta(days=i) for i in range(366))
+    return [(d.month, d.day) for d in days]
+
+
+def _days_between(first: tuple[int, int], last: tuple[int, int]) -> frozenset[tuple[int, int]]:
+    """Days from `first` to `last`, both included, across New Year if `last` is earlier."""
+    if first <= last:
+        return frozenset(day for day in _days_of_year() if first <= day <= last)
+    return frozenset(day for day in _days_of_year() if day >= first or day <= last)
+
+
+def _season_text(season: Season) -> list[str]:
+    """First and last day of a season, as ``MM-DD``."""
+    year = _days_of_year()
+    inside = [day in season.days for day in year]
+    starts = [i for i in range(366) if inside[i] and not inside[i - 1]]
+    ends = [i for i in range(366) if inside[i] and not inside[(i + 1) % 366]]
+    first, last = (starts[0], ends[0]) if starts else (0, 365)
+    return [f"{m:02d}-{d:02d}" for m, d in (year[first], year[last])]
