@@ -1,0 +1,168 @@
+"""The tables of the file contract: CSV, GeoPackage, GeoJSON and the provenance JSON."""
+
+from __future__ import annotations
+
+import json
+import shutil
+import tempfile
+from pathlib import Path
+from typing import Any
+
+import pandas as pd
+
+from climarisk.errors import OutputError
+from climarisk.outputs.map import render_map
+from climarisk.results import StudyResult
+
+#: Decimals written to the CSV files.  Feet, kelvins, per cent and hectopascals are finer than
+#: any source; shares keep ten, so that they can be held against a count.
+_DECIMALS = {"mean": 3, **{f"p{p:02d}": 3 for p in (1, 5, 10, 25, 50, 75, 90, 95, 99)}}
+_SHARE_DECIMALS = 10
+_SHARES = (
+    "coverage",
+    "shortfall",
+    "ci_low",
+    "ci_high",
+    "outside_table",
+    "margin_p10",
+    "margin_p50",
+    "days_affected",
+)
+#: Written into the GeoPackage in place of the clock, so that the same input gives the same bytes.
+_FIXED_DATE = "2000-01-01T00:00:00.000Z"
+
+
+def write_outputs(result: StudyResult, folder: Path) -> list[Path]:
+    """Write every file of the contract; the folder is made, other files in it stay.
+
+    All files are written beside the folder first and moved into place when the last one is
+    complete, so that a failure leaves the earlier results as they were.
+
+    Parameters
+    ----------
+    result : StudyResult
+    folder : Path
+
+    Returns
+    -------
+    list of Path
+        The files written.
+
+    Raises
+    ------
+    OutputError
+        The folder cannot be written.
+    """
+    folder = Path(folder)
+    staging = None
+    try:
+        folder.parent.mkdir(parents=True, exist_ok=True)
+        staging = Path(tempfile.mkdtemp(prefix=".climarisk-", dir=folder.parent))
+        names = _write_all(result, staging)
+        folder.mkdir(exist_ok=True)
+        for name in names:
+            (staging / name).replace(folder / name)
+    except OSError as error:
+        raise OutputError(
+            f"{folder}: the results cannot be written ({error.strerror or error}); nothing "
+            "was half-written. Free some space or choose another folder with --out."
+        ) from None
+    finally:
+        if staging is not None:
+            shutil.rmtree(staging, ignore_errors=True)
+    return [folder / name for name in names]
+
+
+def _write_all(result: StudyResult, folder: Path) -> list[str]:
+    texts = {
+        "map.html": render_map(result),
+        "distributions_monthly.csv": csv_text(result.distributions_monthly),
+        "distributions_hourly.csv": csv_text(result.distributions_hourly),
+        "risk_monthly.csv": csv_text(result.risk_monthly),
+        "risk_hourly.csv": csv_text(result.risk_hourly),
+        "risk_seasonal.csv": csv_text(result.risk_seasonal),
+        "study.json": json.dumps(result.provenance, indent=1, ensure_ascii=False) + "\n",
+    }
+    for name, text in texts.items():
+        (folder / name).write_text(text, encoding="utf-8", newline="\n")
+    _write_layers(result, folder)
+    return [*texts, "fields.gpkg", "fields.geojson"]
+
+
+def csv_text(table: pd.DataFrame) -> str:
+    """A table as CSV text; an empty cell where there is no value."""
+    decimals = {c: d for c, d in _DECIMALS.items() if c in table}
+    decimals |= {c: _SHARE_DECIMALS for c in _SHARES if c in table}
+    # Adding zero turns a negative zero into a plain one.
+    rounded = table.round(decimals)
+    numbers = rounded.select_dtypes("float").columns
+    rounded[numbers] = rounded[numbers] + 0.0
+    return rounded.to_csv(index=False, lineterminator="\n")
+
+
+def headline(result: StudyResult) -> list[dict[str, Any]]:
+    """Headline figures of each field: the worst month of density altitude and of shortfall.
+
+    Keys: ``id, name, elevation_m, da_p90_month, da_p90_ft, rh_p50_pct, worst_aircraft,
+    worst_month, worst_shortfall, cautions``; None where there are no data.
+    """
+    rows = []
+    distributions = result.distributions_monthly
+    for field in result.fields:
+        own = distributions[distributions["field"] == field.id]
+        hottest = _worst(own[own["variable"] == "density_altitude"], "p90")
+        risk = _worst(result.risk_monthly[result.risk_monthly["field"] == field.id], "shortfall")
+        humidity = own[own["variable"] == "relative_humidity"]["p50"].mean()
+        rows.append(
+            {
+                "id": field.id,
+                "name": field.name,
+                "elevation_m": round(field.elevation_m, 1),
+                "da_p90_month": None if hottest is None else int(hottest["month"]),
+                "da_p90_ft": None if hottest is None else round(float(hottest["p90"])),
+                "rh_p50_pct": None if pd.isna(humidity) else round(float(humidity), 1),
+                "worst_aircraft": None if risk is None else str(risk["aircraft"]),
+                "worst_month": None if risk is None else int(risk["month"]),
+                "worst_shortfall": None if risk is None else round(float(risk["shortfall"]), 6),
+                "cautions": sum(
+                    f.severity != "note" and f.subject == "field" and f.id == field.id
+                    for f in result.findings
+                ),
+            }
+        )
+    return rows
+
+
+def _worst(table: pd.DataFrame, column: str) -> pd.Series | None:
+    known = table[table[column].notna()]
+    return None if known.empty else known.loc[known[column].idxmax()]
+
+
+def _write_layers(result: StudyResult, folder: Path) -> None:
+    import geopandas
+    import pyogrio
+
+    rows = headline(result)
+    layer = geopandas.GeoDataFrame(
+        pd.DataFrame(rows).convert_dtypes(),
+        geometry=geopandas.points_from_xy(
+            [f.longitude for f in result.fields], [f.latitude for f in result.fields]
+        ),
+        crs="EPSG:4326",
+    )
+    pyogrio.set_gdal_config_options({"OGR_CURRENT_DATE": _FIXED_DATE})
+    try:
+        layer.to_file(folder / "fields.gpkg", layer="fields", driver="GPKG")
+    finally:
+        pyogrio.set_gdal_config_options({"OGR_CURRENT_DATE": None})
+    features = [
+        {
+            "type": "Feature",
+            "properties": row,
+            "geometry": {"type": "Point", "coordinates": [f.longitude, f.latitude]},
+        }
+        for row, f in zip(rows, result.fields, strict=True)
+    ]
+    collection = {"type": "FeatureCollection", "name": "fields", "features": features}
+    text = json.dumps(collection, indent=1, ensure_ascii=False) + "\n"
+    (folder / "fields.geojson").write_text(text, encoding="utf-8", newline="\n")

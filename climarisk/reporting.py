@@ -1,0 +1,259 @@
+"""What is said of a field beside its figures: stations used, pressure sources, findings."""
+
+from __future__ import annotations
+
+from collections.abc import Sequence
+
+import numpy as np
+import pandas as pd
+
+from climarisk.aircraft import OPERATIONS, AircraftProfile
+from climarisk.atmosphere import P0_HPA
+from climarisk.clock import LocalClock
+from climarisk.fields import STEEP_SLOPE_PCT, Field
+from climarisk.findings import Finding
+from climarisk.results import STATION_USE_COLUMNS
+from climarisk.study import Study
+from climarisk.transfer import (
+    MAXIMUM_HEIGHT_DIFFERENCE_M,
+    NO_PRESSURE,
+    PRESSURE_SOURCES,
+    REGION_KM,
+    SEA_LEVEL_CAUTION_M,
+    SEA_LEVEL_LIMIT_M,
+    Candidate,
+    FieldAir,
+    StationAir,
+    measured_around,
+)
+
+#: Without a station this near in distance and height the field's air is of low confidence
+#: (METHODS 9, step 6).
+_CONFIDENT_KM, _CONFIDENT_M = 50.0, 500.0
+#: Months with fewer counting years than this are told.
+_FEW_YEARS = 8
+
+
+def station_use(
+    field: Field,
+    chosen: Sequence[Candidate],
+    air: FieldAir,
+    clock: LocalClock,
+    grid: np.ndarray,
+) -> pd.DataFrame:
+    """One row per candidate station of a field; columns `STATION_USE_COLUMNS`."""
+    used = air.station[clock.in_period]
+    n_used = max(int((used >= 0).sum()), 1)
+    hours = grid[clock.in_period]
+    rows = []
+    for i, c in enumerate(chosen):
+        known = np.isfinite(c.air.temperature_c[clock.in_period])
+        span = hours[known].astype("datetime64[h]").astype("datetime64[D]")
+        rows.append(
+            (
+                field.id,
+                c.air.station.id,
+                c.air.station.name,
+                c.air.station.archive,
+                c.distance_km,
+                c.height_difference_m,
+                str(span[0]) if len(span) else "",
+                str(span[-1]) if len(span) else "",
+                float(known.mean()),
+                float((used == i).sum()) / n_used,
+                _main_pressure(c, clock),
+            )
+        )
+    return pd.DataFrame(rows, columns=STATION_USE_COLUMNS)
+
+
+def _main_pressure(c: Candidate, clock: LocalClock) -> str:
+    kinds = c.air.pressure_source[clock.in_period]
+    kinds = kinds[kinds != NO_PRESSURE]
+    if not len(kinds):
+        return "none"
+    return PRESSURE_SOURCES[int(np.bincount(kinds).argmax())]
+
+
+def pressure_shares(field: Field, air: FieldAir, clock: LocalClock) -> pd.DataFrame:
+    """Share of the field's hours with a pressure from each source; ``field, source, share``."""
+    sources = air.pressure_source[clock.in_period]
+    sources = sources[sources != NO_PRESSURE]
+    share = np.bincount(sources, minlength=len(PRESSURE_SOURCES)) / max(len(sources), 1)
+    rows = [(field.id, s, float(x)) for s, x in zip(PRESSURE_SOURCES, share, strict=True) if x > 0]
+    return pd.DataFrame(rows, columns=["field", "source", "share"])
+
+
+def field_findings(
+    field: Field,
+    chosen: Sequence[Candidate],
+    stations: Sequence[StationAir],
+    air: FieldAir,
+    clock: LocalClock,
+    study: Study,
+) -> list[Finding]:
+    """What there is to say of a field: its stations, its pressure, its coverage, its slopes."""
+
+    def say(severity: str, check: str, message: str) -> Finding:
+        return Finding(severity, "field", field.id, check, message)  # type: ignore[arg-type]
+
+    findings = [say("caution", "slope", text) for text in _slope_texts(field)]
+    if any(d.undeclared for d in field.runways):
+        findings.append(
+            say(
+                "note",
+                "undeclared-distances",
+                "declared distances are missing and were filled from the runway's length.",
+            )
+        )
+    if not chosen:
+        why = (
+            f"no station within {study.radius_km:g} km and {MAXIMUM_HEIGHT_DIFFERENCE_M:.0f} m "
+            "of height"
+            if not field.stations
+            else "the stations it is pinned to cannot serve it"
+        )
+        findings.append(
+            say(
+                "reject",
+                "no-station",
+                f"{field.name} ({field.id}) has no figures: {why}, or their elevation is not "
+                "trusted. Add a station, or widen radius_km.",
+            )
+        )
+        return findings
+    known = np.isfinite(air.temperature_c[clock.in_period])
+    if not known.any():
+        findings.append(
+            say(
+                "reject",
+                "no-hours",
+                f"{field.name} ({field.id}) has no figures: its stations have no hour in "
+                f"{study.first_year}-{study.last_year}.",
+            )
+        )
+        return findings
+    findings += [say(*item) for item in _air_texts(field, chosen, air, clock)]
+    findings += [
+        say("caution", "pressure", t) for t in _pressure_texts(field, chosen, stations, air)
+    ]
+    return findings
+
+
+def _slope_texts(field: Field) -> list[str]:
+    return [
+        f"runway direction {d.runway} slopes {abs(d.slope_pct):g} %: published factors do not "
+        f"hold above {STEEP_SLOPE_PCT:g} %, it needs a site-specific procedure."
+        for d in field.runways
+        if abs(d.slope_pct) > STEEP_SLOPE_PCT
+    ]
+
+
+def _air_texts(
+    field: Field, chosen: Sequence[Candidate], air: FieldAir, clock: LocalClock
+) -> list[tuple[str, str, str]]:
+    texts = []
+    nearest = min(chosen, key=lambda c: c.distance_km)
+    if not any(
+        c.distance_km <= _CONFIDENT_KM and abs(c.height_difference_m) <= _CONFIDENT_M
+        for c in chosen
+    ):
+        texts.append(
+            (
+                "caution",
+                "far-station",
+                f"low confidence: no station within {_CONFIDENT_KM:.0f} km and "
+                f"{_CONFIDENT_M:.0f} m of height; the nearest is {nearest.air.station.id}, "
+                f"{nearest.distance_km:.0f} km off and {nearest.height_difference_m:+.0f} m.",
+            )
+        )
+    known = np.isfinite(air.temperature_c) & np.isfinite(air.vapour_pressure_hpa)
+    known &= np.isfinite(air.pressure_hpa) & clock.in_period
+    years = len(np.unique(clock.year[known]))
+    if years < _FEW_YEARS:
+        texts.append(
+            (
+                "caution",
+                "few-years",
+                f"{years} of {clock.n_years} years have hours with temperature, humidity and "
+                f"pressure; percentiles need about {_FEW_YEARS} years to settle.",
+            )
+        )
+    for i, c in enumerate(chosen):
+        if not c.air.elevation_trusted and (air.station == i).any():
+            texts.append(
+                (
+                    "caution",
+                    "station-elevation",
+                    f"the elevation of its station {c.air.station.id} is contradicted by its "
+                    f"pressure; check the field's own elevation of {field.elevation_m:g} m too: "
+                    "100 m too low reads about 400 ft of density altitude too low.",
+                )
+            )
+    return texts
+
+
+def _pressure_texts(
+    field: Field, chosen: Sequence[Candidate], stations: Sequence[StationAir], air: FieldAir
+) -> list[str]:
+    texts = []
+    inverted = PRESSURE_SOURCES.index("sea-level pressure")
+    climatological = PRESSURE_SOURCES.index("climatological")
+    if (air.pressure_source == inverted).any():
+        high = [
+            c.air.station
+            for c in chosen
+            if c.air.station.elevation_m > SEA_LEVEL_CAUTION_M
+            and (c.air.pressure_source == inverted).any()
+        ]
+        texts += [
+            f"the pressure of {s.id} ({s.elevation_m:.0f} m) is sea-level pressure inverted with "
+            f"an assumed temperature; above {SEA_LEVEL_CAUTION_M:.0f} m the error grows to "
+            "hundreds of feet in the extremes."
+            for s in high
+        ]
+    if (air.pressure_source == climatological).any():
+        measured = [s.station.id for s, _ in measured_around(field, stations)]
+        what = (
+            f"the mean QNH of the month at {', '.join(measured)}"
+            if measured
+            else f"the standard {P0_HPA} hPa, no station within {REGION_KM:.0f} km having any"
+        )
+        texts.append(
+            f"the pressure of some or all months is climatological, {what}: single days can "
+            f"be off by some 150 ft. Default values, sea-level pressure above "
+            f"{SEA_LEVEL_LIMIT_M:.0f} m and stations of doubtful elevation are not used."
+        )
+    return texts
+
+
+def aircraft_findings(aircraft: Sequence[AircraftProfile]) -> list[Finding]:
+    """What there is to say of the profiles: scaled figures, masses beyond the tables."""
+    findings = []
+    for profile in aircraft:
+        if profile.is_scaled:
+            findings.append(
+                Finding(
+                    "caution",
+                    "aircraft",
+                    profile.id,
+                    "scaled",
+                    "some figures are scaled from a single sea-level value, no table: wide "
+                    "uncertainty.",
+                )
+            )
+        for operation in OPERATIONS:
+            tables = getattr(profile, operation)
+            if tables and profile.planning_kg > tables[-1].mass_kg:
+                findings.append(
+                    Finding(
+                        "caution",
+                        "aircraft",
+                        profile.id,
+                        "mass-beyond-table",
+                        f"the planning mass of {profile.planning_kg:g} kg is above the heaviest "
+                        f"{operation} table ({tables[-1].mass_kg:g} kg): every hour is outside "
+                        "the table.",
+                    )
+                )
+    return findings
