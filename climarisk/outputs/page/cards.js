@@ -1,0 +1,89 @@
+// cards.js: runways and stations of a field, one card each.
+
+const STEEP_PCT = 2;
+
+function factList(facts) {
+  return el(
+    "dl",
+    null,
+    facts.map(([term, text]) => el("div", null, el("dt", null, term), el("dd", null, text)))
+  );
+}
+
+function runwayUse(runway) {
+  if (runway.takeoff && runway.landing) return "take-off and landing";
+  if (runway.takeoff) return "take-off only";
+  return runway.landing ? "landing only" : "closed";
+}
+
+function runwayCard(runway) {
+  const steep = Math.abs(runway.slope) > STEEP_PCT;
+  const [tora, toda, asda, lda] = runway.lengths.map(lengthText);
+  const slope =
+    runway.slope === 0
+      ? "level"
+      : signed(runway.slope, 1) + " % " + (runway.slope > 0 ? "(uphill)" : "(downhill)");
+  const facts = [
+    ["TORA", tora],
+    ["TODA", toda],
+    ["ASDA", asda],
+    ["LDA", lda],
+    ["Heading", Math.round(runway.heading) + "\u00b0"],
+    ["Slope", slope],
+    ["Surface", runway.surface.replace("-", " ")],
+    ["Use", runwayUse(runway)],
+  ];
+  return el(
+    "li",
+    { class: "card" },
+    el(
+      "h4",
+      null,
+      "Runway ",
+      given(runway.runway),
+      runway.undeclared ? el("span", { class: "tag" }, "undeclared distances") : null,
+      steep
+        ? el("span", { class: "tag" }, "slope over " + STEEP_PCT + " %: needs a site-specific procedure")
+        : null
+    ),
+    factList(facts)
+  );
+}
+
+function stationCard(use) {
+  const day = (value) => (value === null ? NO_DATA : value);
+  const height = use.height_difference_m;
+  const facts = [
+    ["Distance", use.distance_km === null ? NO_DATA : use.distance_km.toFixed(1) + " km"],
+    [
+      "Field above station",
+      height === null ? NO_DATA : signed(height, 0) + " m (" + signed(feetOf(height), 0) + " ft)",
+    ],
+    [
+      "Record",
+      use.first === null && use.last === null
+        ? NO_DATA
+        : [given(day(use.first)), " to ", given(day(use.last))],
+    ],
+    ["Coverage", percent(use.coverage)],
+    ["Share of the field\u2019s hours", percent(use.share_of_hours)],
+    ["Pressure", given(day(use.pressure_kind))],
+    ["Archive", given(day(use.archive))],
+  ];
+  return el(
+    "li",
+    { class: "card" },
+    el(
+      "h4",
+      null,
+      given(use.name === null ? use.station : use.name),
+      " ",
+      el("small", null, given(use.station))
+    ),
+    factList(facts)
+  );
+}
+
+function cards(list, make, empty) {
+  return list.length ? el("ul", { class: "cards" }, list.map(make)) : el("p", { class: "empty" }, empty);
+}

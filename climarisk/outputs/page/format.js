@@ -1,0 +1,103 @@
+// format.js: numbers as the page shows them. Rounding happens here and nowhere else.
+
+const MONTHS = ["Jan", "Feb", "Mar", "Apr", "May", "Jun", "Jul", "Aug", "Sep", "Oct", "Nov", "Dec"];
+const MONTH_NAMES = [
+  "January",
+  "February",
+  "March",
+  "April",
+  "May",
+  "June",
+  "July",
+  "August",
+  "September",
+  "October",
+  "November",
+  "December",
+];
+const MINUS = "\u2212";
+const NO_DATA = "no data";
+
+const MEASURES = {
+  shortfall: { name: "Shortfall share", sentence: "Share of hours that fall short" },
+  median: { name: "Density altitude, median", sentence: "Density altitude, median" },
+  p90: { name: "Density altitude, 90th percentile", sentence: "Density altitude exceeded in 1 hour of 10" },
+};
+
+function grouped(whole) {
+  return (whole < 0 ? MINUS : "") + String(Math.abs(whole)).replace(/\B(?=(\d{3})+$)/g, ",");
+}
+
+// Whole per cent of a share 0-1; nothing above zero is ever shown as 0.
+function percentNumber(share) {
+  if (share === 0) return "0";
+  // The inner rounding takes back the error of the product: 0.285 * 100 is below 28.5.
+  return share < 0.01 ? "<1" : String(Math.floor(Math.round(share * 1e8) / 1e6 + 0.5));
+}
+
+function percent(share) {
+  if (share === null) return NO_DATA;
+  return percentNumber(share).replace("<", "< ") + " %";
+}
+
+function hundreds(feet) {
+  return Math.floor((feet + 50) / 100);
+}
+
+function altitude(feet) {
+  return feet === null ? NO_DATA : grouped(hundreds(feet) * 100) + " ft";
+}
+
+function measureText(measure, value) {
+  return measure === "shortfall" ? percent(value) : altitude(value);
+}
+
+// Short form for a grid cell: per cent without the sign, or hundreds of feet.
+function cellText(measure, value) {
+  if (value === null) return "\u2013";
+  return measure === "shortfall" ? percentNumber(value) : grouped(hundreds(value));
+}
+
+function interval(low, high) {
+  if (low === null || high === null) return NO_DATA;
+  return percentNumber(low) + "-" + percentNumber(high) + " %";
+}
+
+function hourText(hour) {
+  return String(hour).padStart(2, "0") + ":00";
+}
+
+function windowText() {
+  const hours = STUDY.settings.window;
+  if (hours === "all") return "all hours";
+  if (Array.isArray(hours)) return hours.map(hourText).join(" to ");
+  return hours === "daylight" ? "daylight" : String(hours === undefined ? "hours of the study" : hours);
+}
+
+function periodText(period) {
+  return period.season ? STUDY.seasons[period.index] : MONTH_NAMES[period.index];
+}
+
+function elevationText(metres) {
+  return grouped(Math.round(feetOf(metres))) + " ft (" + grouped(Math.round(metres)) + " m)";
+}
+
+// Runway lengths: metres with feet behind, both whole and rounded down: never more runway than there is.
+function lengthText(metres) {
+  return grouped(Math.floor(metres)) + " m (" + grouped(Math.floor(feetOf(metres))) + " ft)";
+}
+
+function degreesText(value, positive, negative) {
+  const minutes = Math.round(Math.abs(value) * 60);
+  const part = minutes % 60;
+  const side = minutes === 0 ? "" : " " + (value < 0 ? negative : positive);
+  return (
+    Math.floor(minutes / 60) + "\u00b0" + (part ? " " + String(part).padStart(2, "0") + "\u2032" : "") + side
+  );
+}
+
+function signed(value, digits) {
+  const text = Math.abs(value).toFixed(digits);
+  if (Number(text) === 0) return text;
+  return (value < 0 ? MINUS : "+") + text;
+}

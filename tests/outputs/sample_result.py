@@ -1,0 +1,218 @@
+"""An invented study result for the tests of the outputs.
+
+Six fields, two aircraft, one field without any data, and texts that a careless page would run.
+"""
+
+from __future__ import annotations
+
+import itertools
+import math
+
+import numpy as np
+import pandas as pd
+
+from climarisk.aircraft import AircraftProfile, PerformanceTable, ScaledFigures
+from climarisk.fields import Field, RunwayDirection
+from climarisk.findings import Finding
+from climarisk.results import (
+    DISTRIBUTIONS_HOURLY_COLUMNS,
+    DISTRIBUTIONS_MONTHLY_COLUMNS,
+    PERCENTILES,
+    RISK_HOURLY_COLUMNS,
+    RISK_MONTHLY_COLUMNS,
+    RISK_SEASONAL_COLUMNS,
+    STATION_USE_COLUMNS,
+    VARIABLES,
+    StudyResult,
+)
+
+#: Texts that run, break the page or break its layout when they are not shown as text.
+HOSTILE = (
+    "{{7*7}} {% for %} {# x",
+    "</script><script>window.pwned=1</script>",
+    "<img src=x onerror=window.pwned=1>",
+    "${7*7}`+alert(1)+`",
+    "\"quotes\" 'and' &amp; \u202eover\u202c \u2028 \u05d0\u05d1\u05d2 \u6771\u4eac",
+)
+LONG_NAME = "Upper meadow of the long valley behind the second ridge " * 4 + "x" * 120
+EMPTY_FIELD = "field-5"
+LIMITS = ("take-off to 50 ft", "landing from 50 ft", "rate of climb")
+SEASONS = ("DJF", "MAM", "JJA", "</script>summer")
+
+
+def sample_result(n_fields: int = 6, n_aircraft: int = 2, seed: int = 7) -> StudyResult:
+    """The invented result; field ``field-5`` has no value anywhere."""
+    rng = np.random.default_rng(seed)
+    fields = tuple(_field(i) for i in range(n_fields))
+    aircraft = tuple(_aircraft(i) for i in range(n_aircraft))
+    return StudyResult(
+        title="Summer schedule </title><script>window.pwned=1</script> {{7*7}}",
+        fields=fields,
+        aircraft=aircraft,
+        settings={
+            "first_year": 2010,
+            "last_year": 2024,
+            "window": "daylight",
+            "bands": [0.01, 0.05, 0.20],
+            "confidence": 0.90,
+            "seasons": {"JJA": ["06-01", "08-31"]},
+            "radius_km": 100.0,
+        },
+        distributions_monthly=_distributions(rng, fields, hourly=False),
+        distributions_hourly=_distributions(rng, fields, hourly=True),
+        risk_monthly=_risk(rng, fields, aircraft, "month"),
+        risk_hourly=_risk(rng, fields, aircraft, "hour"),
+        risk_seasonal=_risk(rng, fields, aircraft, "season"),
+        station_use=_station_use(fields),
+        pressure_sources=pd.DataFrame(
+            [
+                row
+                for f in fields
+                if f.id != EMPTY_FIELD
+                for row in ((f.id, "station pressure", 0.93), (f.id, "QNH", 0.0661))
+            ],
+            columns=["field", "source", "share"],
+        ),
+        attributions=("Invented weather, no rights reserved", HOSTILE[1]),
+        findings=(
+            Finding("reject", "station", "st-0", "implied-elevation", HOSTILE[2]),
+            Finding("caution", "field", "field-0", "slope", "needs a site-specific procedure"),
+            Finding("note", "study", "study", "transfer", "fixed lapse table"),
+        ),
+        provenance={"version": "0.1.0"},
+    )
+
+
+def _field(i: int) -> Field:
+    names = ["Quiet Plateau", *HOSTILE, LONG_NAME]
+    # The empty field keeps a hostile name too; later ones get plain numbers.
+    name = names[i] if i < 5 else f"Meadow {i}"
+    runways = (
+        RunwayDirection("09", 92.0, 640.0, 700.0, 640.0, 600.0, 3.5, "grass", True, False),
+        RunwayDirection(
+            "27", 272.0, 640.4, 640.4, 640.4, 640.4, -3.5, "wet-grass", False, True, undeclared=True
+        ),
+    )
+    return Field(
+        id=f"field-{i}",
+        name=LONG_NAME if i == 3 else name,
+        latitude=46.2 + 0.31 * (i % 7) + 0.05 * (i // 7),
+        longitude=7.1 + 0.83 * (i % 5) + 0.07 * (i // 5),
+        elevation_m=610.0 + 211.0 * (i % 9),
+        timezone="Europe/Zurich",
+        stations=("st-0",) if i == 0 else (),
+        runways=runways if i != 2 else (),
+    )
+
+
+def _aircraft(i: int) -> AircraftProfile:
+    table = PerformanceTable(
+        760.0,
+        np.array([0.0, 8000.0]),
+        np.array([-10.0, 40.0]),
+        {"distance_50ft_m": np.ones((2, 2))},
+    )
+    scaled = ScaledFigures(760.0, takeoff_distance_50ft_m=450.0) if i == 1 else None
+    return AircraftProfile(
+        id=f"aircraft-{i}",
+        name="Two-seat trainer (invented)" if i != 1 else "Tourer <b onclick=pwned>",
+        source="invented",
+        aspiration="natural",
+        carburettor=True,
+        maximum_kg=760.0,
+        planning_kg=720.0,
+        empty_kg=520.0,
+        takeoff=(table,),
+        landing=(table,),
+        climb=(table,) if i != 1 else (),
+        scaled=scaled,
+    )
+
+
+def _distributions(rng: np.random.Generator, fields: tuple[Field, ...], hourly: bool):
+    axes = [[f.id for f in fields], list(VARIABLES), range(1, 13)]
+    axes += [range(24)] if hourly else []
+    rows = []
+    for cell in itertools.product(*axes):
+        field = fields[int(cell[0].split("-")[1])]
+        empty = cell[0] == EMPTY_FIELD or (cell[0] == "field-1" and cell[2] in (2, 4))
+        heat = -math.cos((cell[2] - 1) / 12 * 2 * math.pi)
+        sun = -math.cos((cell[3] - 3) / 24 * 2 * math.pi) if hourly else 0.3
+        if cell[1] == "relative_humidity":
+            middle, spread = 62.0 - 9.0 * heat - 14.0 * sun, 11.0
+        else:
+            middle, spread = field.elevation_m / 0.3048 + 1500 * heat + 900 * sun, 640.0
+        middle += float(rng.normal(0, spread / 20))
+        values = [middle + spread * (p - 50) / 40 for p in PERCENTILES]
+        if empty:
+            values, middle = [math.nan] * len(values), math.nan
+        years = 0 if empty else 14
+        rows.append(
+            [
+                *cell[:2],
+                VARIABLES[cell[1]],
+                *cell[2:],
+                years * 300,
+                years,
+                years / 15,
+                middle,
+                *values,
+            ]
+        )
+    columns = DISTRIBUTIONS_HOURLY_COLUMNS if hourly else DISTRIBUTIONS_MONTHLY_COLUMNS
+    return pd.DataFrame(rows, columns=columns)
+
+
+def _risk(rng: np.random.Generator, fields, aircraft, kind: str) -> pd.DataFrame:
+    axes: list = [[f.id for f in fields], [a.id for a in aircraft]]
+    axes += [list(SEASONS)] if kind == "season" else [range(1, 13)]
+    axes += [range(24)] if kind == "hour" else []
+    rows = []
+    for cell in itertools.product(*axes):
+        empty = cell[0] == EMPTY_FIELD or (cell[0] == "field-1" and cell[2] in (2, 4))
+        number = int(cell[0].split("-")[1])
+        when = 0.5 if kind == "season" else 0.5 - 0.5 * math.cos((cell[2] - 1) / 12 * 2 * math.pi)
+        sun = 0.5 - 0.5 * math.cos((cell[3] - 3) / 24 * 2 * math.pi) if kind == "hour" else 0.6
+        level = 1.35 * when * sun - 0.62 + 0.1 * (number % 6) + 0.12 * (cell[1] == "aircraft-1")
+        share = min(1.0, max(0.0, level + float(rng.normal(0, 0.004))))
+        if cell[0] == "field-4" and kind != "season" and cell[2] == 1:
+            share = 0.00004  # rare, yet not zero
+        numbers = [share, max(0.0, share - 0.04), min(1.0, share + 0.05), share * 0.1]
+        limiting = LIMITS[(number + cell[2]) % 3] if kind != "season" else LIMITS[0]
+        tail = [limiting if share else "", 0.1, 0.3, min(1.0, share * 2.2)]
+        if empty:
+            numbers, tail = [math.nan] * 4, [None, math.nan, math.nan, math.nan]
+        rows.append([*cell, 0 if empty else 4200, 0 if empty else 14, *numbers, *tail])
+    columns = {
+        "month": RISK_MONTHLY_COLUMNS,
+        "hour": RISK_HOURLY_COLUMNS,
+        "season": RISK_SEASONAL_COLUMNS,
+    }[kind]
+    return pd.DataFrame(rows, columns=columns)
+
+
+def _station_use(fields: tuple[Field, ...]) -> pd.DataFrame:
+    rows = [
+        [
+            f.id,
+            s,
+            name,
+            "isd-lite",
+            8.42 + n,
+            -120.0 + 300 * n,
+            first,
+            "2024-12-31",
+            0.97,
+            share,
+            kind,
+        ]
+        for f in fields
+        if f.id != EMPTY_FIELD
+        for n, (s, name, first, share, kind) in enumerate(
+            [
+                ("st-0", "Valley station", "2010-01-01", 0.93, "station pressure"),
+                ("st-1", HOSTILE[2], "2012-04-01", 0.07, "QNH"),
+            ]
+        )
+    ]
+    return pd.DataFrame(rows, columns=STATION_USE_COLUMNS)
