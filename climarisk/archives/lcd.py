@@ -204,15 +204,20 @@ def _offset_s(about: About, clock: FloatArray, name: str, zone: str | None) -> F
     known = np.isfinite(clock)
     if not known.any():
         return offset
-    if zone is None and (about.latitude is None or about.longitude is None):
-        raise ArchiveError(
-            f"{name}: the times are local standard time and the file has no coordinates to tell "
-            "its time zone; give the timezone in stations.csv, or use a column mapping."
-        )
     try:
         if zone is None:
-            zone = timezone_at(about.latitude, about.longitude)
+            zone = _zone_of(about, name)
         offset[known] = standard_offset_s(zone, clock[known].astype(np.int64))
     except InputError as error:
         raise ArchiveError(f"{name}: {error}") from None
     return offset
+
+
+def _zone_of(about: About, name: str) -> str:
+    """The time zone at the file's coordinates."""
+    if about.latitude is None or about.longitude is None:
+        raise ArchiveError(
+            f"{name}: the times are local standard time and the file has no coordinates to tell "
+            "its time zone; give the timezone in stations.csv, or use a column mapping."
+        )
+    return timezone_at(about.latitude, about.longitude)
