@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 import numpy as np
 import pandas as pd
@@ -20,6 +20,7 @@ from climarisk.atmosphere import (
 )
 from climarisk.clock import LocalClock
 from climarisk.fields import Field
+from climarisk.lapse import Lapse
 from climarisk.stations import Station, distance_km
 
 #: Where an hour's pressure comes from, in order of preference (METHODS D2).
@@ -36,19 +37,17 @@ MAXIMUM_HEIGHT_DIFFERENCE_M = 1000.0
 #: Climatological QNH comes from stations within this distance of the field.
 REGION_KM = 500.0
 
-#: Temperature lapse, K/km, by day (10-17 local standard hours) in the warm half of the year,
-#: by day in the cold half, and by night: middles of the published ranges 6.5-7.5, 5 and 3-4
-#: (Minder et al. 2010, Rolland 2003, Blandford et al. 2008; the middles are a judgement).
-LAPSE_DAY_WARM, LAPSE_DAY_COLD, LAPSE_NIGHT = 7.0, 5.0, 3.5
-_DAY_HOURS = (10, 17)
 #: Decay of vapour pressure with height, 1/km, January to December, northern hemisphere:
 #: Liston and Elder (2006), after Kunkel (1989).
 VAPOUR_DECAY_PER_KM = np.array(
     [0.41, 0.42, 0.40, 0.39, 0.38, 0.36, 0.33, 0.33, 0.36, 0.37, 0.40, 0.40]
 )
 
-_WEIGHT_HEIGHT_M = 500.0
-_NEAREST_KM = 1.0
+#: A station this near the field in distance and height is its own: its air is taken as it is.
+ON_SPOT_KM, ON_SPOT_M = 3.0, 15.0
+#: Weights fall as 1 / (d + 5 km) and exp(-(dz / 500 m)^2); at most eight stations are used.
+#: Chosen by hiding real mountain stations in turn: the optimum is flat (d^-2 costs 0.02 K).
+_WEIGHT_KM, _WEIGHT_HEIGHT_M, MOST_STATIONS = 5.0, 500.0, 8
 
 
 @dataclass(frozen=True)
@@ -64,6 +63,8 @@ class StationAir:
         Index into `PRESSURE_SOURCES`; `NO_PRESSURE` where there is none.
     elevation_trusted : bool
         False: nothing may be carried from it to another elevation.
+    timing_trusted : bool
+        False: its dates look wrong, so it serves only fields pinned to it.
     """
 
     station: Station
@@ -72,6 +73,7 @@ class StationAir:
     pressure_hpa: np.ndarray
     pressure_source: np.ndarray
     elevation_trusted: bool = True
+    timing_trusted: bool = True
 
 
 @dataclass(frozen=True)
@@ -86,12 +88,15 @@ class Candidate:
         Field minus station.
     weight : float
         Grows with nearness, in distance and in height.
+    on_spot : bool
+        The field's own station.
     """
 
     air: StationAir
     distance_km: float
     height_difference_m: float
     weight: float
+    on_spot: bool
 
 
 @dataclass(frozen=True)
@@ -101,8 +106,12 @@ class FieldAir:
     Parameters
     ----------
     temperature_c, vapour_pressure_hpa, pressure_hpa : ndarray, shape (n_hours,)
-    station : ndarray of int16, shape (n_hours,)
-        Index of the candidate that gave the temperature; -1 for none.
+    share : ndarray, shape (n_candidates, n_hours)
+        Weight of each candidate in the temperature of each hour; sums to 1, or to 0 where
+        there is none.
+    carried_m : ndarray, shape (n_hours,)
+        Weighted height over which the temperature was carried; NaN where the field's own
+        station gave it.
     pressure_source : ndarray of uint8, shape (n_hours,)
         Index into `PRESSURE_SOURCES`; `NO_PRESSURE` where there is none.
     """
@@ -110,7 +119,8 @@ class FieldAir:
     temperature_c: np.ndarray
     vapour_pressure_hpa: np.ndarray
     pressure_hpa: np.ndarray
-    station: np.ndarray
+    share: np.ndarray
+    carried_m: np.ndarray
     pressure_source: np.ndarray
 
 
@@ -184,11 +194,17 @@ def _from_sea_level(
 
 
 def candidates(field: Field, stations: Sequence[StationAir], radius_km: float) -> list[Candidate]:
-    """Stations that may serve a field, best first.
+    """Stations that may serve a field, best first, at most eight.
 
     A pinned field takes its stations only.  Otherwise: within the radius and within 1000 m
-    of height.  A station whose elevation is not trusted serves only a field that states the
-    same elevation.  Order: by weight d^-2 exp(-(dz / 500 m)^2), d at least 1 km.
+    of height, with dates that fit the neighbours'.  A station whose elevation is not trusted
+    serves only a field that states the same elevation.
+
+    Parameters
+    ----------
+    field : Field
+    stations : sequence of StationAir
+    radius_km : float
     """
     chosen = []
     for air in stations:
@@ -198,27 +214,20 @@ def candidates(field: Field, stations: Sequence[StationAir], radius_km: float) -
         pinned = s.id in field.stations
         if field.stations and not pinned:
             continue
-        if not pinned and (distance > radius_km or abs(dz) > MAXIMUM_HEIGHT_DIFFERENCE_M):
+        if not pinned and (
+            distance > radius_km or abs(dz) > MAXIMUM_HEIGHT_DIFFERENCE_M or not air.timing_trusted
+        ):
             continue
         if not air.elevation_trusted and abs(dz) > 1.0:
             continue
-        chosen.append(Candidate(air, distance, dz, _weight(distance, dz)))
-    return sorted(chosen, key=lambda c: (-c.weight, c.air.station.id))
+        on_spot = distance <= ON_SPOT_KM and abs(dz) <= ON_SPOT_M
+        chosen.append(Candidate(air, distance, dz, _weight(distance, dz), on_spot))
+    chosen.sort(key=lambda c: (not c.on_spot, -c.weight, c.air.station.id))
+    return chosen[:MOST_STATIONS]
 
 
 def _weight(distance: float, height_difference_m: float) -> float:
-    return float(
-        max(distance, _NEAREST_KM) ** -2 * np.exp(-((height_difference_m / _WEIGHT_HEIGHT_M) ** 2))
-    )
-
-
-def lapse_k_per_km(latitude: float, clock: LocalClock) -> np.ndarray:
-    """Temperature lapse of each hour, K/km, from the day/night table; shape (n_hours,)."""
-    warm_half = (clock.month >= 3) & (clock.month <= 8)
-    if latitude < 0:
-        warm_half = ~warm_half
-    day = (clock.hour >= _DAY_HOURS[0]) & (clock.hour <= _DAY_HOURS[1])
-    return np.where(day, np.where(warm_half, LAPSE_DAY_WARM, LAPSE_DAY_COLD), LAPSE_NIGHT)
+    return float(np.exp(-((height_difference_m / _WEIGHT_HEIGHT_M) ** 2)) / (distance + _WEIGHT_KM))
 
 
 def vapour_decay_per_km(latitude: float, clock: LocalClock) -> np.ndarray:
@@ -231,14 +240,15 @@ def air_at_field(
     chosen: Sequence[Candidate],
     region: Sequence[StationAir],
     clock: LocalClock,
+    lapse: Lapse,
 ) -> FieldAir:
     """The air at a field, hour by hour, from its candidates.
 
-    Temperature and humidity come together from the best candidate that has both at that
-    hour (else temperature alone), pressure from the best candidate that has it, measured
-    kinds before inverted sea-level pressure.  In a calendar month for which no candidate has
-    any pressure the climatological QNH of the region's stations stands in; single missing
-    hours are not filled.
+    The field's own station is taken as it is for the hours it has.  Other hours are the
+    weighted mean of the candidates that report: temperature along the lapse, vapour pressure
+    along its decay, pressure by hypsometry, measured kinds before inverted sea-level
+    pressure.  In a calendar month for which no candidate has any pressure the climatological
+    QNH of the region's stations stands in; single missing hours are not filled.
 
     Parameters
     ----------
@@ -248,31 +258,78 @@ def air_at_field(
     region : sequence of StationAir
         Stations for the climatological QNH.
     clock : LocalClock
+    lapse : Lapse
 
     Returns
     -------
     FieldAir
     """
+    k_per_km = lapse.k_per_km.reshape(-1)[clock.month_hour]
+    decay = vapour_decay_per_km(field.latitude, clock)
     n = len(clock.hour)
-    lapse, decay = lapse_k_per_km(field.latitude, clock), vapour_decay_per_km(field.latitude, clock)
-    temperature, vapour = np.full(n, np.nan), np.full(n, np.nan)
-    station = np.full(n, -1, np.int16)
-    for need_humidity in (True, False):
-        for i, c in enumerate(chosen):
-            has = np.isfinite(c.air.temperature_c)
-            if need_humidity:
-                has &= np.isfinite(c.air.vapour_pressure_hpa)
-            take = np.isnan(temperature) & has
-            dz_km = c.height_difference_m / 1000.0
-            temperature[take] = c.air.temperature_c[take] - lapse[take] * dz_km
-            vapour[take] = c.air.vapour_pressure_hpa[take] * np.exp(-decay[take] * dz_km)
-            station[take] = i
-    moved = np.array([c.height_difference_m != 0.0 for c in chosen] + [False])[station]
+    carried_t, carried_e = np.full((len(chosen), n), np.nan), np.full((len(chosen), n), np.nan)
+    for i, c in enumerate(chosen):
+        dz_km = c.height_difference_m / 1000.0
+        carried_t[i] = c.air.temperature_c - k_per_km * dz_km
+        carried_e[i] = c.air.vapour_pressure_hpa * np.exp(-decay * dz_km)
+    temperature, share = _blend(carried_t, chosen)
+    vapour, _ = _blend(carried_e, chosen)
+    own = np.array([c.on_spot for c in chosen], bool)
+    from_own = share[own].sum(axis=0) > 0
+    carried = (share.sum(axis=0) > 0) & ~from_own
+    heights = np.array([abs(c.height_difference_m) for c in chosen])
+    carried_m = np.where(carried, heights @ share, np.nan)
     saturation = vapour_saturated_hpa(temperature, field.elevation_m)
-    vapour = np.where(moved, np.minimum(vapour, saturation), vapour)
+    vapour = np.where(from_own, vapour, np.minimum(vapour, saturation))
     pressure, source = _pressure(field, chosen, temperature, vapour)
     _fill_climatological(field, region, clock, temperature, pressure, source)
-    return FieldAir(temperature, vapour, pressure, station, source)
+    return FieldAir(temperature, vapour, pressure, share, carried_m, source)
+
+
+def warmed(air: FieldAir, warmer_k: float, holds: str, elevation_m: float) -> FieldAir:
+    """The air some kelvins warmer, pressure unchanged.
+
+    Parameters
+    ----------
+    air : FieldAir
+    warmer_k : float
+    holds : {"relative humidity", "vapour pressure"}
+        What stays unchanged; vapour pressure at most up to saturation.
+    elevation_m : float
+        Of the field.
+    """
+    if warmer_k == 0.0:
+        return air
+    temperature = air.temperature_c + warmer_k
+    saturated = vapour_saturated_hpa(temperature, elevation_m)
+    if holds == "relative humidity":
+        vapour = air.vapour_pressure_hpa * (
+            saturated / vapour_saturated_hpa(air.temperature_c, elevation_m)
+        )
+    else:
+        vapour = np.minimum(air.vapour_pressure_hpa, saturated)
+    return replace(air, temperature_c=temperature, vapour_pressure_hpa=vapour)
+
+
+def _blend(values: np.ndarray, chosen: Sequence[Candidate]) -> tuple[np.ndarray, np.ndarray]:
+    """Weighted mean over the candidates that have a value, and the weight of each.
+
+    Where the field's own station has a value it stands alone.
+
+    Parameters
+    ----------
+    values : ndarray, shape (n_candidates, n_hours)
+    chosen : sequence of Candidate
+    """
+    known = np.isfinite(values)
+    weight = known * np.array([c.weight for c in chosen])[:, None]
+    own = np.array([c.on_spot for c in chosen], bool)
+    if own.any():
+        weight[~own] *= ~known[own].any(axis=0)
+    total = weight.sum(axis=0)
+    share = weight / np.where(total > 0, total, 1.0)
+    mean = (share * np.where(known, values, 0.0)).sum(axis=0)
+    return np.where(total > 0, mean, np.nan), share
 
 
 def vapour_saturated_hpa(temperature_c: np.ndarray, elevation_m: float) -> np.ndarray:
@@ -287,15 +344,33 @@ def _pressure(
     pressure = np.full(len(temperature), np.nan)
     source = np.full(len(temperature), NO_PRESSURE, np.uint8)
     for from_sea_level in (False, True):
-        for c in chosen:
-            kind = c.air.pressure_source
-            take = np.isnan(pressure) & np.isfinite(c.air.pressure_hpa)
-            take &= (kind == _INVERTED) == from_sea_level
-            if not take.any():
-                continue
-            pressure[take] = _carried(c, field.elevation_m, temperature, vapour, take)
-            source[take] = np.where(np.isfinite(pressure[take]), kind[take], NO_PRESSURE)
+        carried = np.full((len(chosen), len(temperature)), np.nan)
+        for i, c in enumerate(chosen):
+            take = np.isfinite(c.air.pressure_hpa)
+            take &= (c.air.pressure_source == _INVERTED) == from_sea_level
+            if take.any():
+                carried[i, take] = _carried(c, field.elevation_m, temperature, vapour, take)
+        # The logarithm, since pressure falls exponentially with height.
+        mean, share = _blend(np.log(carried), chosen)
+        take = np.isnan(pressure) & np.isfinite(mean)
+        pressure[take] = np.exp(mean[take])
+        if take.any():
+            leading = share[:, take].argmax(axis=0)
+            kinds = np.array([c.air.pressure_source[take] for c in chosen])
+            source[take] = kinds[leading, np.arange(leading.size)]
+        _keep_own(chosen, carried, pressure, take)
     return pressure, source
+
+
+def _keep_own(
+    chosen: Sequence[Candidate], carried: np.ndarray, pressure: np.ndarray, take: np.ndarray
+) -> None:
+    """Put the field's own station's pressure in unrounded by logarithm and back."""
+    for i, c in enumerate(chosen):
+        if c.on_spot:
+            exact = take & np.isfinite(carried[i])
+            pressure[exact] = carried[i, exact]
+            return
 
 
 def _carried(
