@@ -4,8 +4,9 @@ from __future__ import annotations
 
 import os
 import sys
+from dataclasses import dataclass, replace
 from pathlib import Path
-from typing import TYPE_CHECKING, Annotated
+from typing import TYPE_CHECKING, Annotated, Literal
 
 import typer
 from rich.console import Console
@@ -44,6 +45,24 @@ _StoreFolder = Annotated[
     Path | None,
     typer.Option("--store", help="Folder that keeps parsed hours; default the user's cache."),
 ]
+_Warmer = Annotated[
+    list[float] | None,
+    typer.Option(
+        "--warmer",
+        metavar="K",
+        help="Also with the air K kelvins warmer, in scenarios.csv; repeatable.",
+    ),
+]
+_WarmerHolds = Annotated[
+    Literal["relative-humidity", "vapour-pressure"],
+    typer.Option("--warmer-holds", help="What stays unchanged when the air is warmer."),
+]
+_Years = Annotated[
+    list[str] | None,
+    typer.Option(
+        "--years", metavar="A-B", help="Also for these years alone, in scenarios.csv; repeatable."
+    ),
+]
 _Offline = Annotated[bool, typer.Option("--offline", help="Never touch the network.")]
 
 
@@ -53,12 +72,21 @@ def demo(out: _Out = None) -> None:
     _run(_demo_study(), out, None, offline=True)
 
 
-@app.command(epilog="Example: climarisk run strips/study.toml --out maps/strips")
+@app.command(
+    epilog="Example: climarisk run strips/study.toml --out maps/strips --warmer 2 --years 2015-2024"
+)
 def run(
-    study: _StudyPath, out: _Out = None, store: _StoreFolder = None, offline: _Offline = False
+    study: _StudyPath,
+    out: _Out = None,
+    store: _StoreFolder = None,
+    offline: _Offline = False,
+    warmer: _Warmer = None,
+    warmer_holds: _WarmerHolds = "relative-humidity",
+    years: _Years = None,
 ) -> None:
     """Run a study: read the weather, score the aircraft, write the map and the tables."""
-    _run(study, out, store, offline)
+    asked = _Asked(tuple(warmer or ()), warmer_holds.replace("-", " "), tuple(years or ()))
+    _run(study, out, store, offline, asked)
 
 
 @app.command(epilog="Example: climarisk check strips/study.toml")
@@ -102,17 +130,32 @@ def fetch(study: _StudyPath, store: _StoreFolder = None) -> None:
     _print_findings([f for item in stations for f in item.findings])
 
 
-def _run(study: Path, out: Path | None, store: Path | None, offline: bool) -> None:
+@dataclass(frozen=True)
+class _Asked:
+    """Scenarios asked for on the command line."""
+
+    warmer_k: tuple[float, ...] = ()
+    holds: str = "relative humidity"
+    years: tuple[str, ...] = ()
+
+
+def _run(
+    study: Path, out: Path | None, store: Path | None, offline: bool, asked: _Asked = _Asked()
+) -> None:
     from climarisk.outputs.tables import write_outputs
     from climarisk.pipeline import evaluate
+    from climarisk.scenarios import compare, scenarios
     from climarisk.study import read_study
     from climarisk.weather import load_weather
 
     read = read_study(study)
+    variants = scenarios(read, asked.warmer_k, asked.holds, asked.years)
     kept = _store(store) if read.source != "synthetic" else None
     with _bar() as progress:
         weather = load_weather(read, kept, progress, offline)
         result = evaluate(read, weather, progress)
+        if variants:
+            result = replace(result, scenarios=compare(result, variants, weather, progress))
         progress("writing results", 0, 1)
         folder = _output_folder(read, out)
         files = write_outputs(result, folder)

@@ -9,10 +9,7 @@ import pandas as pd
 
 from climarisk.clock import LocalClock
 from climarisk.results import PERCENTILES
-
-#: A year counts for a (month, hour) cell when at least this share of that month's days has
-#: a value at that hour (the project's rule; WMO-No. 1203 asks for a similar share).
-COMPLETE_DAYS = 0.8
+from climarisk.rules import DAYS, years_notes
 
 
 @dataclass(frozen=True)
@@ -42,7 +39,7 @@ def completeness(known: np.ndarray, clock: LocalClock) -> Completeness:
     known = known & clock.in_period
     cells = clock.year_month_hour
     days = np.bincount(cells[known], minlength=clock.n_years * 288).reshape(-1, 12, 24)
-    counts = days >= COMPLETE_DAYS * clock.days_in_month[:, :, None]
+    counts = days >= DAYS.share_of_days * clock.days_in_month[:, :, None]
     used = known.copy()
     used[known] = counts.reshape(-1)[cells[known]]
     return Completeness(counts, used)
@@ -80,8 +77,7 @@ def segment_quantiles(
     Hyndman and Fan (1996), The American Statistician 50, 361-365, definition 8: position
     ``p (n + 1/3) + 1/3`` among the sorted values, linear in between, the extremes beyond.
     """
-    order = np.lexsort((values, cells))
-    ordered = values[order]
+    ordered = _sorted_within(values, cells)
     count = np.bincount(cells, minlength=n_cells)
     start = np.concatenate(([0], np.cumsum(count)[:-1]))
     n, p = count[:, None], np.asarray(probabilities)[None, :]
@@ -98,14 +94,37 @@ def segment_quantiles(
     return result
 
 
+def _sorted_within(values: np.ndarray, cells: np.ndarray) -> np.ndarray:
+    """The values ordered by cell and, within a cell, by size.
+
+    Cell and value are packed into one integer key, since sorting integers takes a fraction of
+    the time of an indirect sort; the value keeps 40 bits of its range, 1e-8 ft of any
+    density altitude.
+    """
+    if not len(values):
+        return values
+    low, high = float(values.min()), float(values.max())
+    steps = (2.0**40 - 1.0) / (high - low) if high > low else 0.0
+    packed = np.rint((values - low) * steps).astype(np.int64)
+    packed += cells.astype(np.int64) << 40
+    packed.sort()
+    packed &= (1 << 40) - 1
+    return low + packed / steps if steps else np.full(len(values), low)
+
+
 def _statistics(values: np.ndarray, cells: np.ndarray, n_cells: int) -> pd.DataFrame:
+    """Statistics of each cell from the levels of each hour, shape (n_levels, n)."""
+    n_levels = len(values)
     count = np.bincount(cells, minlength=n_cells)
-    total = np.bincount(cells, values, minlength=n_cells)
-    mean = np.where(count > 0, total / np.maximum(count, 1), np.nan)
-    quantiles = segment_quantiles(values, cells, n_cells, np.array(PERCENTILES) / 100.0)
+    some = np.where(count > 0, count, np.nan)
+    mean = np.bincount(cells, values.mean(axis=0), minlength=n_cells) / some
     table = pd.DataFrame({"n_hours": count, "mean": mean})
+    quantiles = segment_quantiles(
+        values.reshape(-1), np.tile(cells, n_levels), n_cells, np.array(PERCENTILES) / 100.0
+    )
     for i, p in enumerate(PERCENTILES):
         table[f"p{p:02d}"] = quantiles[:, i]
+    table["transfer_error"] = np.sqrt(np.bincount(cells, values.var(axis=0), n_cells) / some)
     return table
 
 
@@ -114,22 +133,25 @@ def hourly_distribution(values: np.ndarray, clock: LocalClock) -> pd.DataFrame:
 
     Parameters
     ----------
-    values : ndarray, shape (n_hours,)
-        NaN where unknown.
+    values : ndarray, shape (n_levels, n_hours)
+        The variable at each level of the transfer error, one level without any; NaN where
+        unknown, in all levels alike.
     clock : LocalClock
 
     Returns
     -------
-    DataFrame, shape (288, 5 + number of percentiles)
-        ``month`` 1-12, ``hour`` 0-23, ``n_hours``, ``n_years``, ``coverage``, ``mean`` and
-        the percentiles; NaN in a cell for which no year counts.
+    DataFrame, shape (288, 7 + number of percentiles)
+        ``month`` 1-12, ``hour`` 0-23, ``n_hours``, ``n_years``, ``coverage``, ``mean``, the
+        percentiles and ``transfer_error`` (one standard deviation, in the variable's unit);
+        NaN in a cell for which no year counts.
     """
-    complete = completeness(np.isfinite(values), clock)
+    complete = completeness(np.isfinite(values[0]), clock)
     used = complete.used
-    table = _statistics(values[used], clock.month_hour[used], 288)
+    table = _statistics(values[:, used], clock.month_hour[used], 288)
     n_years = complete.counts.sum(axis=0).reshape(-1)
     table.insert(1, "n_years", n_years)
     table.insert(2, "coverage", n_years / clock.n_years)
+    table["years_note"] = years_notes(n_years)
     table.insert(0, "month", np.repeat(np.arange(1, 13), 24))
     table.insert(1, "hour", np.tile(np.arange(24), 12))
     return table
@@ -140,23 +162,24 @@ def monthly_distribution(values: np.ndarray, clock: LocalClock, inside: np.ndarr
 
     Parameters
     ----------
-    values : ndarray, shape (n_hours,)
+    values : ndarray, shape (n_levels, n_hours)
     clock : LocalClock
     inside : ndarray of bool, shape (n_hours,)
         The hours window.
 
     Returns
     -------
-    DataFrame, shape (12, 4 + number of percentiles)
+    DataFrame, shape (12, 6 + number of percentiles)
         As `hourly_distribution` without ``hour``; ``n_years`` are the years with a counting
         cell inside the window, ``coverage`` the share of its (year, hour) cells that count.
     """
-    complete = completeness(np.isfinite(values), clock)
+    complete = completeness(np.isfinite(values[0]), clock)
     used = complete.used & inside
-    table = _statistics(values[used], clock.month[used], 12)
+    table = _statistics(values[:, used], clock.month[used], 12)
     n_years, coverage = window_coverage(complete.counts, window_cells(inside, clock))
     table.insert(1, "n_years", n_years)
     table.insert(2, "coverage", coverage)
+    table["years_note"] = years_notes(n_years)
     table.insert(0, "month", np.arange(1, 13))
     return table
 

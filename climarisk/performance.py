@@ -134,9 +134,12 @@ def read_off(
     i1 = np.minimum(i + 1, len(table.pressure_altitude_ft) - 1)
     j1 = np.minimum(j + 1, len(table.temperature_c) - 1)
 
+    has_blanks = bool(np.isnan(grid).any())
+
     def corner(row: np.ndarray, column: np.ndarray, weight: np.ndarray) -> np.ndarray:
+        value = grid[row, column] * weight
         # A corner of weight zero does not matter, even if it is blank.
-        return np.where(weight > 0, grid[row, column] * weight, 0.0)
+        return np.where(weight > 0, value, 0.0) if has_blanks else value
 
     value = (
         corner(i, j, (1 - u) * (1 - v))

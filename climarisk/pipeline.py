@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from pathlib import Path
 
 import numpy as np
@@ -23,10 +23,17 @@ from climarisk.clock import LocalClock, hour_grid, in_window, local_clock
 from climarisk.errors import InputError
 from climarisk.fields import Field
 from climarisk.findings import Finding, sort_findings
-from climarisk.performance import TableAir, density_ratio, margins
+from climarisk.performance import Margins, TableAir, density_ratio, margins
 from climarisk.progress import Progress, quiet
 from climarisk.provenance import provenance
-from climarisk.reporting import aircraft_findings, field_findings, pressure_shares, station_use
+from climarisk.reporting import (
+    FieldError,
+    aircraft_findings,
+    estimate,
+    field_findings,
+    pressure_shares,
+    station_use,
+)
 from climarisk.results import (
     DISTRIBUTIONS_HOURLY_COLUMNS,
     DISTRIBUTIONS_MONTHLY_COLUMNS,
@@ -37,16 +44,25 @@ from climarisk.results import (
     StudyResult,
 )
 from climarisk.risk import Hours, risk_tables
+from climarisk.rules import reporting_findings
 from climarisk.store import Store
 from climarisk.study import Study, read_study
+from climarisk.timing import misdated, timing_findings
 from climarisk.transfer import (
     FieldAir,
     StationAir,
     air_at_field,
     candidates,
     on_grid,
+    vapour_saturated_hpa,
+    warmed,
 )
+from climarisk.transfer_error import TransferError, learn_error
+from climarisk.verify import as_field, errors, hide, lapse_for
 from climarisk.weather import Weather, load_weather
+
+#: Stations hidden to learn the transfer error, at most.
+MOST_HIDDEN = 30
 
 
 @dataclass(frozen=True)
@@ -60,6 +76,7 @@ class FieldTables:
     risk_seasonal: pd.DataFrame
     station_use: pd.DataFrame
     pressure_sources: pd.DataFrame
+    estimate: pd.DataFrame
     findings: tuple[Finding, ...]
 
 
@@ -112,15 +129,17 @@ def evaluate(study: Study, weather: Weather, progress: Progress = quiet) -> Stud
         No field has a usable station.
     """
     grid = hour_grid(study.first_year, study.last_year)
-    stations = [on_grid(s.station, s.hours, grid, s.elevation_trusted) for s in weather.stations]
+    stations, timing = _stations_on_grid(study, weather, grid)
+    error = _learned_error(study, stations, grid, progress)
     parts = []
     for done, field in enumerate(study.fields):
         progress("scoring fields", done, len(study.fields))
-        parts.append(field_tables(study, field, stations, grid))
+        parts.append(field_tables(study, field, stations, grid, error))
     progress("scoring fields", len(study.fields), len(study.fields))
     findings = sort_findings(
         [
             *weather.findings,
+            *timing,
             *(f for part in parts for f in part.findings),
             *aircraft_findings(study.aircraft),
         ]
@@ -140,6 +159,7 @@ def evaluate(study: Study, weather: Weather, progress: Progress = quiet) -> Stud
         risk_seasonal=_stacked([p.risk_seasonal for p in parts]),
         station_use=use,
         pressure_sources=pressure,
+        estimates=_stacked([p.estimate for p in parts]),
         attributions=tuple(dict.fromkeys(a for s in weather.stations for a in s.sources)),
         findings=findings,
         provenance=provenance(study, weather, use, pressure, findings),
@@ -160,8 +180,52 @@ def _refuse_without_station(study: Study, use: pd.DataFrame, findings: Sequence[
         )
 
 
+def _stations_on_grid(
+    study: Study, weather: Weather, grid: np.ndarray
+) -> tuple[list[StationAir], list[Finding]]:
+    """Stations on the study's hours; those whose dates look wrong or that have gaps told."""
+    airs = [on_grid(s.station, s.hours, grid, s.elevation_trusted) for s in weather.stations]
+    utc_month = (grid // 24).astype("datetime64[D]").astype("datetime64[M]").astype(int) % 12
+    wrong = misdated(
+        [a.station for a in airs],
+        [a.temperature_c for a in airs],
+        utc_month * 24 + grid % 24,
+    )
+    marked = [replace(a, timing_trusted=a.station.id not in wrong) for a in airs]
+    findings = timing_findings(wrong)
+    for air in marked:
+        clock = local_clock(as_field(air), grid, study.first_year, study.last_year)
+        findings += reporting_findings(air.station, np.isfinite(air.temperature_c), clock)
+    return marked, findings
+
+
+def _learned_error(
+    study: Study, stations: Sequence[StationAir], grid: np.ndarray, progress: Progress
+) -> TransferError:
+    """The error of carried air, learned by hiding the stations that air is carried from."""
+    serving: set[str] = set()
+    for field in study.fields:
+        chosen = candidates(field, stations, study.radius_km)
+        if not (field.stations and all(c.on_spot for c in chosen)):
+            serving |= {c.air.station.id for c in chosen if c.air.timing_trusted}
+    places = [i for i, a in enumerate(stations) if a.station.id in serving][:MOST_HIDDEN]
+    shown = []
+    for done, i in enumerate(places):
+        progress("hiding stations", done, len(places))
+        hidden = hide(i, stations, grid, study.first_year, study.last_year, study.radius_km)
+        if hidden is not None:
+            shown.append(errors(hidden))
+    if places:
+        progress("hiding stations", len(places), len(places))
+    return learn_error(shown)
+
+
 def field_tables(
-    study: Study, field: Field, stations: Sequence[StationAir], grid: np.ndarray
+    study: Study,
+    field: Field,
+    stations: Sequence[StationAir],
+    grid: np.ndarray,
+    error: TransferError,
 ) -> FieldTables:
     """Every table of one field: a pure function of the study and the stations' air.
 
@@ -172,14 +236,22 @@ def field_tables(
     stations : sequence of StationAir
     grid : ndarray of int64, shape (n_hours,)
         UTC hours since 1970.
+    error : TransferError
     """
     clock = local_clock(field, grid, study.first_year, study.last_year)
     inside = in_window(study.window, field, grid, clock)
     chosen = candidates(field, stations, study.radius_km)
-    air = air_at_field(field, chosen, stations, clock)
-    values = variables(field, air)
+    lapse = lapse_for(field, stations, clock, study.radius_km)
+    air = air_at_field(field, chosen, stations, clock, lapse)
+    air = warmed(air, study.warmer_k, study.warmer_holds, field.elevation_m)
+    sd_k = error.sd_k(air.carried_m, clock.month, clock.hour)
+    shifts = error.levels[:, None] * sd_k if (sd_k > 0).any() else np.zeros((1, len(sd_k)))
+    values = _levels_of_variables(field, air, shifts)
+    sd_ft = values["density_altitude"].std(axis=0)
     of_month, of_hour = _distributions(field, values, clock, inside)
-    risk = [_risk(study, field, profile, air, values, clock, inside) for profile in study.aircraft]
+    scene = _Scene(study, field, air, clock, inside, shifts, sd_ft, error.persistence)
+    risk = [_risk(scene, profile) for profile in study.aircraft]
+    field_error = FieldError(sd_k, sd_ft, lapse.stations, error.stations)
     return FieldTables(
         of_month,
         of_hour,
@@ -188,17 +260,36 @@ def field_tables(
         _stacked([seasonal for _, _, seasonal in risk]),
         station_use(field, chosen, air, clock, grid),
         pressure_shares(field, air, clock),
+        estimate(field, chosen, air, field_error, clock),
         tuple(field_findings(field, chosen, stations, air, clock, study)),
     )
 
 
-def variables(field: Field, air: FieldAir) -> dict[str, np.ndarray]:
+def _levels_of_variables(field: Field, air: FieldAir, shifts: np.ndarray) -> dict[str, np.ndarray]:
+    """The six variables at each level of the transfer error; one level where it moves none."""
+    central = variables(field, air)
+    if len(shifts) == 1:
+        return {name: values[None, :] for name, values in central.items()}
+    levels = [variables(field, air, shift) for shift in shifts]
+    return {
+        name: np.array([level[name] for level in levels])
+        if name in ("density_altitude", "temperature", "relative_humidity")
+        else central[name][None, :]
+        for name in central
+    }
+
+
+def variables(
+    field: Field, air: FieldAir, shift_k: np.ndarray | float = 0.0
+) -> dict[str, np.ndarray]:
     """The six variables of the distribution tables, hour by hour.
 
     Parameters
     ----------
     field : Field
     air : FieldAir
+    shift_k : ndarray, shape (n_hours,), or float
+        Added to the temperature; the vapour pressure stays, up to saturation.
 
     Returns
     -------
@@ -208,17 +299,26 @@ def variables(field: Field, air: FieldAir) -> dict[str, np.ndarray]:
     known_p = np.where(
         np.isfinite(air.pressure_hpa), air.pressure_hpa, isa_pressure_hpa(field.elevation_m)
     )
-    dew_point = dew_point_c(air.vapour_pressure_hpa, known_p)
+    temperature, vapour = shifted(field, air, shift_k)
+    dew_point = dew_point_c(vapour, known_p)
     return {
-        "density_altitude": density_altitude_ft(
-            air.pressure_hpa, air.temperature_c, air.vapour_pressure_hpa
-        ),
+        "density_altitude": density_altitude_ft(air.pressure_hpa, temperature, vapour),
         "pressure_altitude": pressure_altitude_ft(air.pressure_hpa),
-        "temperature": air.temperature_c,
+        "temperature": temperature,
         "dew_point": dew_point,
-        "relative_humidity": relative_humidity_pct(air.temperature_c, dew_point),
-        "vapour_pressure": air.vapour_pressure_hpa,
+        "relative_humidity": relative_humidity_pct(temperature, dew_point),
+        "vapour_pressure": vapour,
     }
+
+
+def shifted(
+    field: Field, air: FieldAir, shift_k: np.ndarray | float
+) -> tuple[np.ndarray, np.ndarray]:
+    """Temperature and vapour pressure with the temperature moved and the vapour kept."""
+    temperature = air.temperature_c + shift_k
+    saturated = vapour_saturated_hpa(temperature, field.elevation_m)
+    vapour = air.vapour_pressure_hpa
+    return temperature, np.where(np.equal(shift_k, 0.0), vapour, np.minimum(vapour, saturated))
 
 
 def _distributions(
@@ -238,28 +338,46 @@ def _distributions(
     )
 
 
+@dataclass(frozen=True)
+class _Scene:
+    """Everything that scoring an aircraft at a field needs beside the aircraft."""
+
+    study: Study
+    field: Field
+    air: FieldAir
+    clock: LocalClock
+    inside: np.ndarray
+    shifts: np.ndarray
+    sd_ft: np.ndarray
+    persistence: float
+
+
 def _risk(
-    study: Study,
-    field: Field,
-    profile: AircraftProfile,
-    air: FieldAir,
-    values: dict[str, np.ndarray],
-    clock: LocalClock,
-    inside: np.ndarray,
+    scene: _Scene, profile: AircraftProfile
 ) -> tuple[pd.DataFrame, pd.DataFrame, pd.DataFrame]:
-    known = np.flatnonzero(np.isfinite(values["density_altitude"]) & clock.in_period)
-    temperature, vapour = air.temperature_c[known], air.vapour_pressure_hpa[known]
-    pressure = air.pressure_hpa[known]
-    table_air = TableAir(
-        values["pressure_altitude"][known],
-        virtual_temperature_c(temperature, vapour, pressure)
-        if study.humidity_in_tables
-        else temperature,
-        temperature,
-        values["density_altitude"][known],
-        density_ratio(pressure, temperature, vapour),
+    study, field, clock = scene.study, scene.field, scene.clock
+    air = scene.air
+    complete = np.isfinite(air.temperature_c) & np.isfinite(air.vapour_pressure_hpa)
+    known = np.flatnonzero(complete & np.isfinite(air.pressure_hpa) & clock.in_period)
+    central = margins(profile, field, _table_air(scene, known, np.zeros(len(known))))
+    levels = [central]
+    if len(scene.shifts) > 1:
+        carried = np.flatnonzero(np.isfinite(air.carried_m[known]))
+        levels = [
+            _moved(central, carried, margins(profile, field, _table_air(scene, where, s[where])))
+            for where in [known[carried]]
+            for s in scene.shifts
+        ]
+    scored = Hours(
+        clock,
+        known,
+        central,
+        levels,
+        scene.persistence,
+        scene.sd_ft[known],
+        scene.inside,
+        study.confidence,
     )
-    scored = Hours(clock, known, margins(profile, field, table_air), inside, study.confidence)
     tables = risk_tables(scored, study.seasons)
     columns = (RISK_MONTHLY_COLUMNS, RISK_HOURLY_COLUMNS, RISK_SEASONAL_COLUMNS)
     monthly, hourly, seasonal = (
@@ -267,3 +385,32 @@ def _risk(
         for table, wanted in zip(tables, columns, strict=True)
     )
     return monthly, hourly, seasonal
+
+
+def _moved(central: Margins, places: np.ndarray, moved: Margins) -> Margins:
+    """The central margins with those of some hours replaced."""
+    parts = {}
+    for name, values in vars(central).items():
+        parts[name] = values.copy()
+        parts[name][places] = getattr(moved, name)
+    return Margins(**parts)
+
+
+def _table_air(scene: _Scene, known: np.ndarray, shift_k: np.ndarray) -> TableAir:
+    """The air that enters the tables at the known hours, the temperature moved."""
+    chosen = replace(
+        scene.air,
+        temperature_c=scene.air.temperature_c[known],
+        vapour_pressure_hpa=scene.air.vapour_pressure_hpa[known],
+    )
+    pressure = scene.air.pressure_hpa[known]
+    temperature, vapour = shifted(scene.field, chosen, shift_k)
+    return TableAir(
+        pressure_altitude_ft(pressure),
+        virtual_temperature_c(temperature, vapour, pressure)
+        if scene.study.humidity_in_tables
+        else temperature,
+        temperature,
+        density_altitude_ft(pressure, temperature, vapour),
+        density_ratio(pressure, temperature, vapour),
+    )

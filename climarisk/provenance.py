@@ -10,6 +10,7 @@ import pandas as pd
 
 from climarisk.findings import Finding
 from climarisk.inputs import read_bytes, sha256
+from climarisk.rules import rules
 from climarisk.study import Study
 from climarisk.weather import StationHours, Weather, relative_name
 
@@ -57,6 +58,7 @@ def provenance(
         "title": study.title,
         "settings": study.settings(),
         "method": METHOD,
+        "rules": rules(),
         "inputs": [
             {"file": relative_name(path, study), "sha256": sha256(read_bytes(path))}
             for path in study.inputs

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Sequence
+from dataclasses import dataclass
 
 import numpy as np
 import pandas as pd
@@ -12,7 +13,8 @@ from climarisk.atmosphere import P0_HPA
 from climarisk.clock import LocalClock
 from climarisk.fields import STEEP_SLOPE_PCT, Field
 from climarisk.findings import Finding
-from climarisk.results import STATION_USE_COLUMNS
+from climarisk.results import ESTIMATE_COLUMNS, STATION_USE_COLUMNS
+from climarisk.rules import MONTH, YEARS, patchy_months
 from climarisk.study import Study
 from climarisk.transfer import (
     MAXIMUM_HEIGHT_DIFFERENCE_M,
@@ -30,8 +32,24 @@ from climarisk.transfer import (
 #: Without a station this near in distance and height the field's air is of low confidence
 #: (METHODS 9, step 6).
 _CONFIDENT_KM, _CONFIDENT_M = 50.0, 500.0
-#: Months with fewer counting years than this are told.
-_FEW_YEARS = 8
+
+
+@dataclass(frozen=True)
+class FieldError:
+    """The transfer error at a field.
+
+    Parameters
+    ----------
+    sd_k, sd_ft : ndarray, shape (n_hours,)
+        Standard deviation of the temperature and of the density altitude; 0 from the field's
+        own station.
+    lapse_stations, verified_stations : int
+    """
+
+    sd_k: np.ndarray
+    sd_ft: np.ndarray
+    lapse_stations: int
+    verified_stations: int
 
 
 def station_use(
@@ -42,8 +60,8 @@ def station_use(
     grid: np.ndarray,
 ) -> pd.DataFrame:
     """One row per candidate station of a field; columns `STATION_USE_COLUMNS`."""
-    used = air.station[clock.in_period]
-    n_used = max(int((used >= 0).sum()), 1)
+    share = air.share[:, clock.in_period]
+    n_used = max(int((share.sum(axis=0) > 0).sum()), 1)
     hours = grid[clock.in_period]
     rows = []
     for i, c in enumerate(chosen):
@@ -60,7 +78,7 @@ def station_use(
                 str(span[0]) if len(span) else "",
                 str(span[-1]) if len(span) else "",
                 float(known.mean()),
-                float((used == i).sum()) / n_used,
+                float(share[i].sum()) / n_used,
                 _main_pressure(c, clock),
             )
         )
@@ -73,6 +91,31 @@ def _main_pressure(c: Candidate, clock: LocalClock) -> str:
     if not len(kinds):
         return "none"
     return PRESSURE_SOURCES[int(np.bincount(kinds).argmax())]
+
+
+def estimate(
+    field: Field, chosen: Sequence[Candidate], air: FieldAir, error: FieldError, clock: LocalClock
+) -> pd.DataFrame:
+    """One row that says how sure a field's air is; columns `ESTIMATE_COLUMNS`."""
+    known = np.isfinite(air.temperature_c) & clock.in_period
+    own = known & np.isnan(air.carried_m)
+    carried = known & ~own
+    used = (air.share[:, carried] > 0).any(axis=1) if len(chosen) else np.zeros(0, bool)
+
+    def typical(values: np.ndarray) -> float:
+        values = values[carried & np.isfinite(values)]
+        return float(np.sqrt((values**2).mean())) if len(values) else 0.0
+
+    row = (
+        field.id,
+        float(own.sum() / max(known.sum(), 1)),
+        int(used.sum()),
+        typical(error.sd_k),
+        typical(error.sd_ft),
+        error.lapse_stations,
+        error.verified_stations,
+    )
+    return pd.DataFrame([row], columns=ESTIMATE_COLUMNS)
 
 
 def pressure_shares(field: Field, air: FieldAir, clock: LocalClock) -> pd.DataFrame:
@@ -170,17 +213,27 @@ def _air_texts(
     known = np.isfinite(air.temperature_c) & np.isfinite(air.vapour_pressure_hpa)
     known &= np.isfinite(air.pressure_hpa) & clock.in_period
     years = len(np.unique(clock.year[known]))
-    if years < _FEW_YEARS:
+    if years < YEARS.percentiles:
         texts.append(
             (
                 "caution",
                 "few-years",
                 f"{years} of {clock.n_years} years have hours with temperature, humidity and "
-                f"pressure; percentiles need about {_FEW_YEARS} years to settle.",
+                f"pressure; percentiles need about {YEARS.percentiles} years to settle.",
+            )
+        )
+    patchy, some = patchy_months(known, clock)
+    if patchy:
+        texts.append(
+            (
+                "note",
+                "patchy-months",
+                f"{patchy} of {some} months with data miss {MONTH.missing_days} days or more, or "
+                f"{MONTH.consecutive_days} in a row.",
             )
         )
     for i, c in enumerate(chosen):
-        if not c.air.elevation_trusted and (air.station == i).any():
+        if not c.air.elevation_trusted and (air.share[i] > 0).any():
             texts.append(
                 (
                     "caution",

@@ -22,7 +22,15 @@ VARIABLES: dict[str, str] = {
 }
 PERCENTILES = (1, 5, 10, 25, 50, 75, 90, 95, 99)
 
-_STATISTICS = ["n_hours", "n_years", "coverage", "mean", *(f"p{p:02d}" for p in PERCENTILES)]
+_STATISTICS = [
+    "n_hours",
+    "n_years",
+    "coverage",
+    "mean",
+    *(f"p{p:02d}" for p in PERCENTILES),
+    "transfer_error",
+    "years_note",
+]
 _RISK = [
     "n_hours",
     "n_years",
@@ -34,6 +42,9 @@ _RISK = [
     "margin_p10",
     "margin_p50",
     "days_affected",
+    "shortfall_central",
+    "transfer_error_ft",
+    "interval_note",
 ]
 DISTRIBUTIONS_MONTHLY_COLUMNS = ["field", "variable", "unit", "month", *_STATISTICS]
 DISTRIBUTIONS_HOURLY_COLUMNS = ["field", "variable", "unit", "month", "hour", *_STATISTICS]
@@ -52,8 +63,20 @@ STATION_USE_COLUMNS = [
     "first",  # first and last date with an hour in the period, ISO
     "last",
     "coverage",  # hours with an air temperature / hours of the period
-    "share_of_hours",  # share of the field's hours whose air came from this station
+    "share_of_hours",  # weight of this station in the field's hours
     "pressure_kind",  # station pressure, QNH, sea-level pressure, none
+]
+
+
+#: Columns of `StudyResult.estimates`: one row per field, how sure its air is.
+ESTIMATE_COLUMNS = [
+    "field",
+    "own_station",  # share of its hours from a station on the spot
+    "stations",  # stations its other hours are estimated from
+    "transfer_error_k",  # one standard deviation of the estimated temperature
+    "transfer_error_ft",  # the same in density altitude
+    "lapse_stations",  # stations the lapse was fitted from; 0: the day/night table
+    "verified_stations",  # stations hidden to learn the error; 0: planning values
 ]
 
 
@@ -81,11 +104,15 @@ class StudyResult:
     pressure_sources : DataFrame
         Columns ``field, source, share``: which share of a field's hours has its pressure
         from what (``station pressure``, ``QNH``, ``sea-level pressure``, ``climatological``).
+    estimates : DataFrame
+        Columns `ESTIMATE_COLUMNS`.
     attributions : tuple of str
         Licence and attribution lines of the data used.
     findings : tuple of Finding
     provenance : dict
         JSON-ready: program version, hashes of the inputs, settings, stations.
+    scenarios : DataFrame or None
+        Columns `climarisk.scenarios.SCENARIO_COLUMNS`, where variants were asked for.
     """
 
     title: str
@@ -99,6 +126,8 @@ class StudyResult:
     risk_seasonal: pd.DataFrame
     station_use: pd.DataFrame
     pressure_sources: pd.DataFrame
+    estimates: pd.DataFrame
     attributions: tuple[str, ...]
     findings: tuple[Finding, ...]
     provenance: dict[str, Any]
+    scenarios: pd.DataFrame | None = None

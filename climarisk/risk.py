@@ -16,10 +16,9 @@ from climarisk.climatology import (
 )
 from climarisk.clock import LocalClock
 from climarisk.performance import CHECKS, Margins
+from climarisk.rules import YEARS, interval_notes
 from climarisk.study import Season
 
-#: Intervals need this many counting years.
-MINIMUM_YEARS = 5
 #: Resamples of whole years, and the seed that makes them repeatable.
 RESAMPLES, SEED = 2000, 20_100
 
@@ -33,8 +32,15 @@ class Hours:
     clock : LocalClock
     known : ndarray of int, shape (n_known,)
         Places on the grid of the hours with a value.
-    margins : Margins
-        Of those hours.
+    central : Margins
+        Of those hours, with the air as estimated.
+    levels : sequence of Margins
+        Of those hours at each level of the transfer error, equally likely; the central
+        margins alone where there is no error.
+    persistence : float
+        Share of the variance of the transfer error that stays with a place, 0-1.
+    error_ft : ndarray, shape (n_known,)
+        Standard deviation of the density altitude from the transfer, ft.
     inside : ndarray of bool, shape (n_hours,)
         The hours window on the grid.
     confidence : float
@@ -42,7 +48,10 @@ class Hours:
 
     clock: LocalClock
     known: np.ndarray
-    margins: Margins
+    central: Margins
+    levels: Sequence[Margins]
+    persistence: float
+    error_ft: np.ndarray
     inside: np.ndarray
     confidence: float
 
@@ -56,6 +65,35 @@ def year_weights(n_years: int) -> np.ndarray:
     weights = np.zeros((RESAMPLES, n_years))
     np.add.at(weights, (np.arange(RESAMPLES)[:, None], draws), 1.0)
     return weights
+
+
+def level_weights(n_levels: int, persistence: float) -> np.ndarray:
+    """How much each level of the transfer error counts in each resample.
+
+    The error of a place has a part that persists through the record and a part that averages
+    out over days and hours.  Each resample draws the persistent part; the weights are the
+    probabilities of the levels given it.
+
+    Parameters
+    ----------
+    n_levels : int
+        Equal shares of the error's distribution.
+    persistence : float
+        Share of the variance that persists, 0-1.
+
+    Returns
+    -------
+    ndarray, shape (`RESAMPLES`, n_levels)
+        Rows sum to 1.
+    """
+    if n_levels == 1:
+        return np.ones((RESAMPLES, 1))
+    from scipy.stats import norm
+
+    drawn = np.random.default_rng(SEED + 1).standard_normal(RESAMPLES)[:, None]
+    edges = norm.ppf(np.arange(n_levels + 1) / n_levels)[None, :]
+    passed = norm.cdf((edges - np.sqrt(persistence) * drawn) / np.sqrt(1.0 - persistence))
+    return np.diff(passed, axis=1)
 
 
 def shares_by_cell(
@@ -76,52 +114,74 @@ def shares_by_cell(
 
     Returns
     -------
-    DataFrame, shape (n_cells, 9)
+    DataFrame, shape (n_cells, 13)
         NaN (``limiting`` empty) where no hour enters.
     """
-    m, clock = hours.margins, hours.clock
-    cell, year = cells[pooled], clock.year[hours.known[pooled]]
-    short, outside = m.shortfall[pooled], m.outside_table[pooled]
+    clock, n_levels = hours.clock, len(hours.levels)
+    places = np.flatnonzero(pooled)
+    cell, where = cells[places], hours.known[places]
+    index = cell * clock.n_years + clock.year[where]
 
-    def count(mask: np.ndarray) -> np.ndarray:
-        index = cell[mask] * clock.n_years + year[mask]
-        return np.bincount(index, minlength=n_cells * clock.n_years).reshape(n_cells, -1)
+    def count(weights: np.ndarray | None = None) -> np.ndarray:
+        return np.bincount(index, weights, n_cells * clock.n_years).reshape(n_cells, -1)
 
-    total, fallen = count(np.ones(len(cell), bool)), count(short)
+    total = count()
+    fallen = np.stack([count(m.shortfall[places]) for m in hours.levels], axis=-1)
     n_hours = total.sum(axis=1)
     some = np.where(n_hours > 0, n_hours, np.nan)
-    low, high = _intervals(fallen, total, n_years, hours.confidence)
-    quantiles = segment_quantiles(m.margin[pooled], cell, n_cells, np.array([0.1, 0.5]))
+    low, high = _intervals(fallen, total, n_years, hours)
+    quantiles = segment_quantiles(
+        np.concatenate([m.margin[places] for m in hours.levels]),
+        np.tile(cell, n_levels),
+        n_cells,
+        np.array([0.1, 0.5]),
+    )
     return pd.DataFrame(
         {
             "n_hours": n_hours,
             "n_years": n_years,
-            "shortfall": fallen.sum(axis=1) / some,
+            "shortfall": fallen.sum(axis=(1, 2)) / n_levels / some,
             "ci_low": low,
             "ci_high": high,
-            "outside_table": count(outside).sum(axis=1) / some,
-            "limiting": _limiting(cell[short], m.limiting[pooled][short], n_cells),
+            "outside_table": sum(count(m.outside_table[places]).sum(axis=1) for m in hours.levels)
+            / n_levels
+            / some,
+            "limiting": _limiting(
+                cell,
+                [m.limiting[places] for m in hours.levels],
+                [m.shortfall[places] for m in hours.levels],
+                n_cells,
+            ),
             "margin_p10": quantiles[:, 0],
             "margin_p50": quantiles[:, 1],
-            "days_affected": _days_affected(cell, clock.day[hours.known[pooled]], short, n_cells),
+            "days_affected": _days_affected(
+                cell, clock.day[where], [m.shortfall[places] for m in hours.levels], n_cells
+            ),
+            "shortfall_central": count(hours.central.shortfall[places]).sum(axis=1) / some,
+            "transfer_error_ft": np.sqrt(count(hours.error_ft[places] ** 2).sum(axis=1) / some),
+            "interval_note": interval_notes(n_years),
         }
     )
 
 
 def _intervals(
-    fallen: np.ndarray, total: np.ndarray, n_years: np.ndarray, confidence: float
+    fallen: np.ndarray, total: np.ndarray, n_years: np.ndarray, hours: Hours
 ) -> tuple[np.ndarray, np.ndarray]:
-    """Interval of each cell's share from resampling whole years; NaN below 5 years."""
+    """Interval of each cell's share from resampling whole years; NaN below 5 years.
+
+    Each resample also draws the persistent part of the transfer error.
+    """
     low, high = np.full(len(total), np.nan), np.full(len(total), np.nan)
-    enough = n_years >= MINIMUM_YEARS
+    enough = n_years >= YEARS.interval
     if not enough.any():
         return low, high
-    weights = year_weights(total.shape[1])
-    drawn = weights @ total[enough].T
-    share = np.where(
-        drawn > 0, (weights @ fallen[enough].T) / np.where(drawn > 0, drawn, 1), np.nan
-    )
-    tail = (1.0 - confidence) / 2.0
+    years = year_weights(total.shape[1])
+    levels = level_weights(fallen.shape[2], hours.persistence)
+    both = (years[:, :, None] * levels[:, None, :]).reshape(RESAMPLES, -1)
+    drawn = years @ total[enough].T
+    share = both @ fallen[enough].reshape(int(enough.sum()), -1).T
+    share = np.where(drawn > 0, share / np.where(drawn > 0, drawn, 1), np.nan)
+    tail = (1.0 - hours.confidence) / 2.0
     # The slow form only for cells whose counting years some resample misses altogether.
     gaps = np.isnan(share).any(axis=0)
     bounds = np.empty((2, share.shape[1]))
@@ -134,24 +194,41 @@ def _intervals(
     return low, high
 
 
-def _limiting(cell: np.ndarray, check: np.ndarray, n_cells: int) -> np.ndarray:
+def _limiting(
+    cell: np.ndarray,
+    checks: Sequence[np.ndarray],
+    short: Sequence[np.ndarray],
+    n_cells: int,
+) -> np.ndarray:
     """Name of the most frequent limiting check of each cell; empty without a shortfall."""
-    votes = np.bincount(cell * len(CHECKS) + check, minlength=n_cells * len(CHECKS)).reshape(
-        n_cells, -1
+    size = n_cells * len(CHECKS)
+    votes = sum(
+        np.bincount(cell[s] * len(CHECKS) + c[s], minlength=size)
+        for c, s in zip(checks, short, strict=True)
     )
+    votes = np.asarray(votes).reshape(n_cells, -1)
     names = np.array(CHECKS, dtype=object)[votes.argmax(axis=1)]
     return np.where(votes.sum(axis=1) > 0, names, "")
 
 
 def _days_affected(
-    cell: np.ndarray, day: np.ndarray, short: np.ndarray, n_cells: int
+    cell: np.ndarray, day: np.ndarray, short: Sequence[np.ndarray], n_cells: int
 ) -> np.ndarray:
-    """Share of the days with a known hour that have a shortfall hour, per cell."""
+    """Share of the days with a known hour that have a shortfall hour, per cell.
+
+    The error of a day is taken as common to its hours.
+    """
     n_days = int(day.max()) + 1 if len(day) else 1
-    known = np.bincount(cell * n_days + day, minlength=n_cells * n_days) > 0
-    affected = np.bincount((cell * n_days + day)[short], minlength=n_cells * n_days) > 0
-    days = known.reshape(n_cells, -1).sum(axis=1)
-    return affected.reshape(n_cells, -1).sum(axis=1) / np.where(days > 0, days, np.nan)
+    place = cell * n_days + day
+    days = _days_with(place, n_cells, n_days)
+    affected = [_days_with(place[s], n_cells, n_days) for s in short]
+    return np.mean(affected, axis=0) / np.where(days > 0, days, np.nan)
+
+
+def _days_with(place: np.ndarray, n_cells: int, n_days: int) -> np.ndarray:
+    """How many days of each cell occur among the places."""
+    seen = np.bincount(place, minlength=n_cells * n_days).reshape(n_cells, -1) > 0
+    return seen.sum(axis=1)
 
 
 def risk_tables(

@@ -123,6 +123,10 @@ class Study:
         Of the synthetic weather.
     inputs : tuple of Path
         Every file read for the study, archives apart.
+    warmer_k : float
+        Kelvins added to the air at every field.
+    warmer_holds : {"relative humidity", "vapour pressure"}
+        What stays unchanged when the air is warmer.
     """
 
     path: Path
@@ -141,6 +145,8 @@ class Study:
     humidity_in_tables: bool
     seed: int = 0
     inputs: tuple[Path, ...] = field(default=())
+    warmer_k: float = 0.0
+    warmer_holds: str = "relative humidity"
 
     @property
     def name(self) -> str:

@@ -16,7 +16,14 @@ from climarisk.results import StudyResult
 
 #: Decimals written to the CSV files.  Feet, kelvins, per cent and hectopascals are finer than
 #: any source; shares keep ten, so that they can be held against a count.
-_DECIMALS = {"mean": 3, **{f"p{p:02d}": 3 for p in (1, 5, 10, 25, 50, 75, 90, 95, 99)}}
+_DECIMALS = {
+    "mean": 3,
+    "transfer_error": 3,
+    "transfer_error_ft": 1,
+    **{f"density_altitude_{p}_ft": 3 for p in ("p50", "p90")},
+    **{f"density_altitude_{p}_change_ft": 3 for p in ("p50", "p90")},
+    **{f"p{p:02d}": 3 for p in (1, 5, 10, 25, 50, 75, 90, 95, 99)},
+}
 _SHARE_DECIMALS = 10
 _SHARES = (
     "coverage",
@@ -27,6 +34,8 @@ _SHARES = (
     "margin_p10",
     "margin_p50",
     "days_affected",
+    "shortfall_central",
+    "shortfall_change",
 )
 #: Written into the GeoPackage in place of the clock, so that the same input gives the same bytes.
 _FIXED_DATE = "2000-01-01T00:00:00.000Z"
@@ -83,6 +92,8 @@ def _write_all(result: StudyResult, folder: Path) -> list[str]:
         "risk_seasonal.csv": csv_text(result.risk_seasonal),
         "study.json": json.dumps(result.provenance, indent=1, ensure_ascii=False) + "\n",
     }
+    if result.scenarios is not None:
+        texts["scenarios.csv"] = csv_text(result.scenarios)
     for name, text in texts.items():
         (folder / name).write_text(text, encoding="utf-8", newline="\n")
     _write_layers(result, folder)
