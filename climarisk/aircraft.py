@@ -10,7 +10,7 @@ import numpy as np
 from annotated_types import Ge, Gt, Le, MinLen
 from pydantic import Field as Key
 
-from climarisk.inputs import Identifier, Strict, Text, load_toml, validate
+from climarisk.inputs import Identifier, Name, Strict, Text, load_toml, validate
 from climarisk.units import METRES_PER_FOOT
 
 #: Quantities of each operation's table and whether they must rise (+1) or fall (-1) with
@@ -111,7 +111,9 @@ class AircraftProfile:
 
 
 _Positive = Annotated[float, Gt(0)]
-_Axis = Annotated[list[float], MinLen(1)]
+_Temperatures = Annotated[list[Annotated[float, Ge(-80), Le(70)]], MinLen(1)]
+_AltitudesFt = Annotated[list[Annotated[float, Ge(-5_000), Le(60_000)]], MinLen(1)]
+_AltitudesM = Annotated[list[Annotated[float, Ge(-1_500), Le(18_000)]], MinLen(1)]
 # A blank cell of the handbook is nan, so these numbers alone may be.
 _Cell = Annotated[float, Key(allow_inf_nan=True)]
 _Grid = Annotated[list[list[_Cell]], MinLen(1)]
@@ -130,9 +132,9 @@ class _Mass(Strict):
 
 class _Distances(Strict):
     mass_kg: _Positive
-    pressure_altitude_ft: _Axis | None = None
-    pressure_altitude_m: _Axis | None = None
-    temperature_c: _Axis
+    pressure_altitude_ft: _AltitudesFt | None = None
+    pressure_altitude_m: _AltitudesM | None = None
+    temperature_c: _Temperatures
     ground_roll_m: _Grid | None = None
     ground_roll_ft: _Grid | None = None
     distance_50ft_m: _Grid | None = None
@@ -142,9 +144,9 @@ class _Distances(Strict):
 class _Climb(Strict):
     mass_kg: _Positive
     speed_kt: _Positive | None = None
-    pressure_altitude_ft: _Axis | None = None
-    pressure_altitude_m: _Axis | None = None
-    temperature_c: _Axis
+    pressure_altitude_ft: _AltitudesFt | None = None
+    pressure_altitude_m: _AltitudesM | None = None
+    temperature_c: _Temperatures
     rate_ft_min: _Grid
 
 
@@ -172,7 +174,7 @@ class _Scaled(Strict):
 
 class _Profile(Strict):
     id: Identifier
-    name: Text
+    name: Name
     source: Text
     engine: _Engine
     mass: _Mass
@@ -250,7 +252,8 @@ def _table(
     before = len(problems)
     altitude = _in_unit(block, "pressure_altitude_ft", where, problems)
     if altitude is None:
-        problems.append(f"{where}: pressure_altitude_ft is missing; add it.")
+        if len(problems) == before:
+            problems.append(f"{where}: pressure_altitude_ft is missing; add it.")
         return None
     axes = {
         "pressure_altitude_ft": np.array(altitude[0], float) * altitude[1],
@@ -262,14 +265,23 @@ def _table(
     values = {}
     for name, direction in OPERATIONS[operation].items():
         is_rate = name == "rate_ft_min"
+        known = len(problems)
         given = (block[name], 1.0) if is_rate else _in_unit(block, name, where, problems)
         if given is not None:
             grid = _grid(given[0], axes, f"{where}: {name}", problems)
             if grid is not None:
                 values[name] = grid * given[1]
                 problems += _monotony(grid, axes, direction, f"{where}: {name}")
-        elif (operation, name) not in _OPTIONAL_QUANTITIES:
+        elif (operation, name) not in _OPTIONAL_QUANTITIES and len(problems) == known:
             problems.append(f"{where}: {name} is missing; add it.")
+    if "ground_roll_m" in values and "distance_50ft_m" in values:
+        longer = np.argwhere(values["ground_roll_m"] > values["distance_50ft_m"])
+        if len(longer):
+            row, column = (int(i) + 1 for i in longer[0])
+            problems.append(
+                f"{where}: the ground roll is longer than the distance to or from 50 ft in row "
+                f"{row}, column {column}; check the figures against the handbook."
+            )
     if len(problems) > before:
         return None
     return PerformanceTable(block["mass_kg"], **axes, values=values, speed_kt=block.get("speed_kt"))
@@ -302,7 +314,9 @@ def _monotony(
     problems = []
     word = "fall" if direction > 0 else "rise"
     for axis, (name, _) in enumerate(axes.items()):
-        wrong = np.argwhere(np.diff(grid, axis=axis) * direction < 0)
+        # Against the largest so far, so that a blank cell hides nothing.
+        so_far = np.fmax.accumulate(grid * direction, axis=axis)
+        wrong = np.argwhere(np.diff(so_far, axis=axis) > np.diff(grid * direction, axis=axis) + 0)
         if len(wrong):
             row, column = (int(i) + 1 for i in wrong[0])
             problems.append(

@@ -7,21 +7,24 @@ from pathlib import Path
 from typing import Annotated, Any, Literal, get_args
 
 import numpy as np
+import pandas as pd
 from annotated_types import Ge, Gt, Le
 
 from climarisk.errors import InputError
 from climarisk.inputs import (
     Identifier,
-    Strict,
+    Row,
     Text,
     metres,
     nearest,
     one_of_units,
+    read_bytes,
     read_table,
     repeated,
     validate,
 )
 from climarisk.localtime import standard_offset_s, timezone_at
+from climarisk.units import METRES_PER_FOOT
 
 Surface = Literal["paved", "gravel", "grass", "wet-grass", "soft", "snow"]
 SURFACES: tuple[str, ...] = get_args(Surface)
@@ -29,7 +32,9 @@ DISTANCES = ("tora", "toda", "asda", "lda")
 #: Slopes steeper than this need a site-specific procedure (AMC2 CAT.POL.A.305).
 STEEP_SLOPE_PCT = 2.0
 
-_Length = Annotated[float, Gt(0), Le(10_000)] | None
+_LONGEST_M = 10_000.0
+_Metres = Annotated[float, Gt(0), Le(_LONGEST_M)] | None
+_Feet = Annotated[float, Gt(0), Le(_LONGEST_M / METRES_PER_FOOT)] | None
 
 
 @dataclass(frozen=True)
@@ -95,7 +100,7 @@ class Field:
     runways: tuple[RunwayDirection, ...] = ()
 
 
-class _FieldRow(Strict):
+class _FieldRow(Row):
     id: Identifier
     name: Text
     latitude: Annotated[float, Ge(-90), Le(90)]
@@ -106,20 +111,20 @@ class _FieldRow(Strict):
     stations: str | None = None
 
 
-class _RunwayRow(Strict):
+class _RunwayRow(Row):
     field: str
     runway: Text
     heading_deg: Annotated[float, Ge(0), Le(360)]
-    tora_m: _Length = None
-    toda_m: _Length = None
-    asda_m: _Length = None
-    lda_m: _Length = None
-    length_m: _Length = None
-    tora_ft: _Length = None
-    toda_ft: _Length = None
-    asda_ft: _Length = None
-    lda_ft: _Length = None
-    length_ft: _Length = None
+    tora_m: _Metres = None
+    toda_m: _Metres = None
+    asda_m: _Metres = None
+    lda_m: _Metres = None
+    length_m: _Metres = None
+    tora_ft: _Feet = None
+    toda_ft: _Feet = None
+    asda_ft: _Feet = None
+    lda_ft: _Feet = None
+    length_ft: _Feet = None
     slope_pct: Annotated[float, Ge(-40), Le(40)] = 0.0
     surface: Surface
     takeoff: Literal["yes", "no"]
@@ -134,7 +139,9 @@ def read_fields(path: Path) -> tuple[list[Field], list[str]]:
     InputError
         The file is absent or cannot be read at all.
     """
+    what = "line"
     if path.suffix.lower() in (".geojson", ".json", ".gpkg"):
+        what = "feature"
         rows, problems = _rows_from_layer(path)
     else:
         rows, problems = read_table(
@@ -150,7 +157,7 @@ def read_fields(path: Path) -> tuple[list[Field], list[str]]:
         return [], problems
     fields = []
     for number, row in rows:
-        where = f"{path}, line {number}"
+        where = f"{path}, {what} {number}"
         field = _field(row, where, problems)
         if field is not None:
             fields.append(field)
@@ -185,16 +192,36 @@ def _field(row: dict[str, Any], where: str, problems: list[str]) -> Field | None
     )
 
 
-def _rows_from_layer(path: Path) -> tuple[list[tuple[int, dict[str, Any]]], list[str]]:
-    """Rows of a point layer, with latitude and longitude from its geometry (WGS 84)."""
+def _layer(path: Path) -> Any:
+    """The vector layer of a GeoJSON or GeoPackage file that really is one."""
     import geopandas
+    import pyogrio
 
-    if not path.is_file():
-        raise InputError(f"{path}: there is no such file; check the name and the folder.")
+    start = read_bytes(path)[:16].lstrip(b"\xef\xbb\xbf \t\r\n")
+    wanted = b"SQLite format 3" if path.suffix.lower() == ".gpkg" else b"{"
+    if not start.startswith(wanted):
+        raise InputError(f"{path}: the file is not what its ending says; give GeoJSON or GeoPackage.")
     try:
-        layer = geopandas.read_file(path)
+        names = [str(name) for name, _ in pyogrio.list_layers(path)]
+        if len(names) > 1 and "fields" not in names:
+            raise InputError(f"{path}: there are the layers {names}; name the right one 'fields'.")
+        return geopandas.read_file(path, layer="fields" if "fields" in names else names[0])
+    except InputError:
+        raise
     except Exception as error:  # the drivers raise many kinds
         raise InputError(f"{path}: this is not a readable vector layer ({error}).") from None
+
+
+def _plain(value: Any) -> Any:
+    """An attribute as a CSV cell would give it; None if it is empty."""
+    if isinstance(value, str | int | float):
+        return None if value == "" or value != value else value
+    return None if value is None or value is pd.NA else repr(value)
+
+
+def _rows_from_layer(path: Path) -> tuple[list[tuple[int, dict[str, Any]]], list[str]]:
+    """Rows of a point layer, with latitude and longitude from its geometry (WGS 84)."""
+    layer = _layer(path)
     if layer.empty or layer.geometry is None or not (layer.geom_type == "Point").all():
         return [], [f"{path}: the layer must hold points, one for each field."]
     if layer.crs is None:
@@ -212,7 +239,7 @@ def _rows_from_layer(path: Path) -> tuple[list[tuple[int, dict[str, Any]]], list
     for number, (record, point) in enumerate(
         zip(table.to_dict("records"), points, strict=True), start=1
     ):
-        row = {k: (None if v is None or v != v or v == "" else v) for k, v in record.items()}
+        row = {k: _plain(v) for k, v in record.items()}
         for key in ("id", "name"):
             if isinstance(row.get(key), int):
                 row[key] = str(row[key])
@@ -220,8 +247,17 @@ def _rows_from_layer(path: Path) -> tuple[list[tuple[int, dict[str, Any]]], list
     return rows, problems
 
 
-def read_runways(path: Path, fields: list[Field]) -> tuple[list[Field], list[str]]:
+def read_runways(
+    path: Path, fields: list[Field], complete: bool = True
+) -> tuple[list[Field], list[str]]:
     """The fields with the runway directions of a CSV file, and the problems found.
+
+    Parameters
+    ----------
+    path : Path
+    fields : list of Field
+    complete : bool
+        False: some fields could not be read, so a row of an unknown field may be theirs.
 
     Raises
     ------
@@ -236,6 +272,7 @@ def read_runways(path: Path, fields: list[Field]) -> tuple[list[Field], list[str
     )
     by_field: dict[str, list[RunwayDirection]] = {f.id: [] for f in fields}
     damaged: set[str | None] = set()
+    strangers = False
     for number, row in rows:
         where = f"{path}, line {number}"
         if row["field"] not in by_field:
@@ -249,7 +286,7 @@ def read_runways(path: Path, fields: list[Field]) -> tuple[list[Field], list[str
             damaged.add(row["field"])
         else:
             by_field[str(row["field"])].append(direction)
-    if rows:
+    if rows and not strangers:
         for field in fields:
             if field.id not in damaged:
                 problems += _runway_problems(field.id, by_field[field.id], path)

@@ -25,7 +25,13 @@ MAX_INPUT_BYTES = 50_000_000
 
 
 class Strict(BaseModel):
-    """Base of the input models: unknown keys are errors, values are not coerced by guess."""
+    """Base of the TOML models: unknown keys are errors, values are never coerced."""
+
+    model_config = ConfigDict(extra="forbid", frozen=True, allow_inf_nan=False, strict=True)
+
+
+class Row(BaseModel):
+    """Base of the CSV rows: unknown columns are errors, numbers are read from text."""
 
     model_config = ConfigDict(extra="forbid", frozen=True, allow_inf_nan=False)
 
@@ -38,10 +44,15 @@ def _printable(text: str) -> str:
     return text.strip()
 
 
-def _identifier(text: str) -> str:
+def _name(text: str) -> str:
     text = _printable(text)
     if not text:
-        raise ValueError("is empty; give an identifier without spaces")
+        raise ValueError("is empty; give it a name")
+    return text
+
+
+def _identifier(text: str) -> str:
+    text = _name(text)
     if any(c.isspace() for c in text) or len(text) > 80:
         raise ValueError("must have no spaces and at most 80 characters")
     return text
@@ -49,6 +60,8 @@ def _identifier(text: str) -> str:
 
 #: One line of free text.
 Text = Annotated[str, AfterValidator(_printable)]
+#: One line of text that is not empty.
+Name = Annotated[str, AfterValidator(_name)]
 #: An identifier: one word.
 Identifier = Annotated[str, AfterValidator(_identifier)]
 
@@ -64,6 +77,8 @@ def read_bytes(path: Path) -> bytes:
         The file is absent, unreadable or larger than `MAX_INPUT_BYTES`.
     """
     try:
+        if path.exists() and not path.is_file():
+            raise InputError(f"{path}: this is no regular file; give the name of a text file.")
         size = path.stat().st_size
         if size > MAX_INPUT_BYTES:
             raise InputError(
@@ -75,6 +90,8 @@ def read_bytes(path: Path) -> bytes:
         raise InputError(f"{path}: there is no such file; check the name and the folder.") from None
     except OSError as error:
         raise InputError(f"{path}: the file cannot be read ({error.strerror or error}).") from None
+    except ValueError as error:  # a NUL in the name
+        raise InputError(f"{str(path)!r}: this cannot be a file name ({error}).") from None
 
 
 def sha256(data: bytes) -> str:
@@ -110,7 +127,7 @@ def load_toml(path: Path) -> dict[str, Any]:
     """
     try:
         return tomllib.loads(decode(read_bytes(path), path))
-    except tomllib.TOMLDecodeError as error:
+    except ValueError as error:  # TOMLDecodeError among them
         raise InputError(f"{path}: this is not valid TOML: {error}.") from None
     except RecursionError:
         raise InputError(f"{path}: the TOML is nested too deeply; see the README.") from None
@@ -245,6 +262,8 @@ def _header_problems(
     header: list[str], path: Path, required: Sequence[str], optional: Sequence[str]
 ) -> list[str]:
     known = [*required, *optional]
+    if len(header) == 1 and header[0].count(";") >= 2:
+        return [f"{path}: the columns are separated by ';'; separate them by commas."]
     problems = [
         f"{path}: the column {c!r} is not known; {nearest(c, known)}"
         for c in header
@@ -258,6 +277,30 @@ def _header_problems(
         for c in sorted({c for c in header if header.count(c) > 1})
     ]
     return problems
+
+
+def matching(folder: Path, pattern: str) -> list[Path]:
+    """Files in or beside a folder that fit a pattern, sorted; a literal name goes first.
+
+    Raises
+    ------
+    ValueError
+        The text cannot be a pattern.
+    """
+    try:
+        literal = folder / pattern
+        if pattern and literal.is_file():
+            return [literal]
+        base, rest = (Path(literal.anchor), literal.parts[1:]) if literal.is_absolute() else (
+            Path(), literal.parts
+        )
+        fixed = next((i for i, part in enumerate(rest) if any(c in part for c in "*?[")), len(rest))
+        if fixed == len(rest):
+            return []
+        found = base.joinpath(*rest[:fixed]).glob(str(Path(*rest[fixed:])))
+        return sorted(p for p in found if p.is_file())
+    except (OSError, ValueError, IndexError, NotImplementedError) as error:
+        raise ValueError(f"{pattern[:60]!r} is no usable file pattern ({error})") from None
 
 
 def repeated(values: Iterable[str]) -> list[str]:

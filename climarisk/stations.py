@@ -16,7 +16,8 @@ from climarisk.errors import ClimariskError
 from climarisk.findings import Finding
 from climarisk.inputs import (
     Identifier,
-    Strict,
+    matching,
+    Row,
     Text,
     metres,
     nearest,
@@ -88,14 +89,14 @@ class RawStation:
     findings: tuple[Finding, ...] = ()
 
 
-class _Row(Strict):
+class _Row(Row):
     id: Identifier
     name: Text
     latitude: Annotated[float, Ge(-90), Le(90)]
     longitude: Annotated[float, Ge(-180), Le(180)]
     elevation_m: Annotated[float, Ge(-430), Le(6000)] | None = None
     elevation_ft: Annotated[float, Ge(-1411), Le(19685)] | None = None
-    archive: str | None = None
+    archive: Text | None = None
     files: str | None = None
     timezone: str | None = None
     elevation_verified: Literal["yes", "no"] = "no"
@@ -186,11 +187,14 @@ def _archive(row: _Row, path: Path, where: str, problems: list[str]) -> dict[str
             f"{where}: the archive {name!r} is not known; {nearest(name, FORMATS)} "
             "Give a format name, or the path of a column-mapping TOML."
         )
-    files = _glob(path.parent, row.files or "")
-    if not files:
-        problems.append(
-            f"{where}: no file fits {row.files!r}, taken from the folder {path.parent}."
-        )
+    try:
+        files = tuple(matching(path.parent, row.files or ""))
+    except ValueError as error:
+        problems.append(f"{where}: files: {error}; see the README.")
+        files = ()
+    else:
+        if not files:
+            problems.append(_no_file(where, row.files, path))
     return {
         "archive": name,
         "files": files,
@@ -199,20 +203,8 @@ def _archive(row: _Row, path: Path, where: str, problems: list[str]) -> dict[str
     }
 
 
-def _glob(folder: Path, pattern: str) -> tuple[Path, ...]:
-    """Files that fit a pattern relative to a folder; the pattern may climb with ``..``."""
-    if not pattern:
-        return ()
-    parts = Path(pattern).parts
-    base = Path(parts[0]) if Path(pattern).is_absolute() else folder
-    rest = list(parts[1:] if Path(pattern).is_absolute() else parts)
-    while rest and not any(c in rest[0] for c in "*?["):
-        base = base / rest.pop(0)
-    if not rest:
-        return (base,) if base.is_file() else ()
-    if not base.is_dir():
-        return ()
-    return tuple(sorted(p for p in base.glob(str(Path(*rest))) if p.is_file()))
+def _no_file(where: str, pattern: str | None, path: Path) -> str:
+    return f"{where}: no file fits {pattern!r}, taken from the folder {path.parent}."
 
 
 def distance_km(

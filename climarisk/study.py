@@ -7,17 +7,16 @@ from dataclasses import dataclass, field
 from pathlib import Path
 from typing import Annotated, Any, Literal
 
-from annotated_types import Ge, Gt, Le, Lt, MinLen
+from annotated_types import Ge, Gt, Le, Len, Lt, MinLen
 from pydantic import field_validator, model_validator
 
 from climarisk.aircraft import AircraftProfile, read_aircraft
 from climarisk.errors import InputError
 from climarisk.fields import Field, read_fields, read_runways
-from climarisk.inputs import Strict, Text, load_toml, nearest, repeated, validate
+from climarisk.inputs import Name, Strict, load_toml, matching, nearest, repeated, validate
 from climarisk.stations import Station, read_stations
 
 _Year = Annotated[int, Ge(1800), Le(2200)]
-_Hour = Annotated[int, Ge(0), Le(23)]
 _Share = Annotated[float, Gt(0), Lt(1)]
 
 #: Meteorological seasons, used where a study names none: month numbers.
@@ -44,13 +43,24 @@ class _Period(Strict):
 
 class _Weather(Strict):
     source: Literal["files", "meteostat", "synthetic"] = "files"
-    stations: str | None = None
+    stations: Name | None = None
     radius_km: Annotated[float, Gt(0), Le(1000)] = 100.0
     seed: Annotated[int, Ge(0)] = 0
 
 
 class _Hours(Strict):
-    window: Literal["daylight", "all"] | tuple[_Hour, _Hour] = "daylight"
+    window: Any = "daylight"
+
+    @field_validator("window")
+    @classmethod
+    def _known(cls, window: Any) -> str | tuple[int, int]:
+        if window in ("daylight", "all"):
+            return str(window)
+        if isinstance(window, list) and len(window) == 2:
+            first, last = window
+            if all(type(h) is int and 0 <= h <= 23 for h in (first, last)):
+                return first, last
+        raise ValueError('allowed are "daylight", "all" or two hours 0-23 such as [6, 20]')
 
 
 class _Risk(Strict):
@@ -67,14 +77,14 @@ class _Risk(Strict):
 
 
 class _StudyFile(Strict):
-    title: Text
-    fields: str
-    runways: str
-    aircraft: Annotated[list[str], MinLen(1)]
+    title: Name
+    fields: Name
+    runways: Name
+    aircraft: Annotated[list[Name], MinLen(1)]
     period: _Period
     weather: _Weather = _Weather()
     hours: _Hours = _Hours()
-    seasons: dict[Text, tuple[str, str]] = {}
+    seasons: dict[Name, Annotated[list[str], Len(2, 2)]] = {}
     risk: _Risk = _Risk()
 
 
@@ -185,17 +195,22 @@ def read_study(path: Path | str) -> Study:
     if path.is_dir():
         path = path / "study.toml"
     problems: list[str] = []
-    checked = validate(_StudyFile, load_toml(path), str(path), problems)
-    if checked is None:
+    content = load_toml(path)
+    problems += _same_season_names(content, path)
+    checked = validate(_StudyFile, content, str(path), problems)
+    if checked is None or problems:
         raise InputError(problems)
     folder = path.parent
     seasons = _seasons(checked.seasons, path, problems)
+    before = len(problems)
     fields = _collect(read_fields, problems, folder / checked.fields)
-    fields_read = bool(fields)
-    fields = _collect(read_runways, problems, folder / checked.runways, fields) if fields else []
+    whole = len(problems) == before
+    if fields:
+        fields = _collect(read_runways, problems, folder / checked.runways, fields, whole)
     aircraft, aircraft_paths = _aircraft(checked.aircraft, path, problems)
+    before = len(problems)
     stations = _stations(checked.weather, path, problems)
-    if fields_read and stations:
+    if fields and stations and len(problems) == before:
         problems += _pin_problems(fields, stations, folder / checked.fields)
     if problems:
         raise InputError(problems)
@@ -242,7 +257,11 @@ def _aircraft(
         if Path(pattern).is_absolute():
             problems.append(f"{path}: aircraft: {pattern!r} must be relative to the study folder.")
             continue
-        found = sorted(p for p in path.parent.glob(pattern) if p.is_file())
+        try:
+            found = matching(path.parent, pattern)
+        except ValueError as error:
+            problems.append(f"{path}: aircraft: {error}.")
+            continue
         if not found:
             problems.append(f"{path}: aircraft: no file fits {pattern!r}.")
         paths += [p for p in found if p not in paths]
@@ -274,7 +293,7 @@ def _pin_problems(fields: list[Field], stations: list[Station], path: Path) -> l
     ]
 
 
-def _seasons(named: dict[str, tuple[str, str]], path: Path, problems: list[str]) -> list[Season]:
+def _seasons(named: dict[str, list[str]], path: Path, problems: list[str]) -> list[Season]:
     if not named:
         year = _days_of_year()
         return [
@@ -288,6 +307,17 @@ def _seasons(named: dict[str, tuple[str, str]], path: Path, problems: list[str])
         except ValueError as error:
             problems.append(f"{path}: [seasons] {name!r}: {error}")
     return seasons
+
+
+def _same_season_names(content: dict[str, Any], path: Path) -> list[str]:
+    """Problems with season names that differ in the spaces around them only."""
+    names = content.get("seasons", {})
+    if not isinstance(names, dict):
+        return []
+    return [
+        f"{path}: [seasons] the name {twice!r} comes twice; rename one."
+        for twice in repeated(str(name).strip() for name in names)
+    ]
 
 
 def _month_day(text: str) -> tuple[int, int]:
