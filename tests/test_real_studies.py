@@ -1,0 +1,275 @@
+"""The shared studies as they stand, against a second computation from the raw files."""
+
+import json
+
+import independent
+import numpy as np
+import pandas as pd
+import pytest
+from study_maker import StudyFolder
+
+from climarisk.outputs.tables import write_outputs
+from climarisk.pipeline import run_study
+from climarisk.results import VARIABLES
+from climarisk.store import Store
+
+STUDIES = ("pernambuco", "lakeside", "high_plains")
+CONTRACT = {
+    "map.html",
+    "distributions_monthly.csv",
+    "distributions_hourly.csv",
+    "risk_monthly.csv",
+    "risk_hourly.csv",
+    "risk_seasonal.csv",
+    "fields.gpkg",
+    "fields.geojson",
+    "study.json",
+}
+PERCENTILES = [f"p{q:02d}" for q in independent.PERCENTS]
+
+
+@pytest.fixture(scope="module")
+def store(tmp_path_factory):
+    return Store(tmp_path_factory.mktemp("hours"))
+
+
+@pytest.fixture(scope="module")
+def results(shared, store):
+    """The three studies run as they stand; a warning is an error."""
+    return {name: run_study(shared / "studies" / name, store=store) for name in STUDIES}
+
+
+@pytest.fixture(scope="module", params=list(independent.CASES))
+def pair(request, shared, results):
+    """A field's result and its second computation: (field, result, (hours, years, ...))."""
+    study = independent.CASES[request.param][0]
+    return request.param, results[study], independent.case(request.param, shared)
+
+
+def own_rows(table, **ids):
+    for column, value in ids.items():
+        table = table[table[column] == value]
+    return table.set_index(["month", "hour"]).sort_index()
+
+
+def second_rows(figures, columns):
+    table = pd.DataFrame.from_dict(figures, orient="index", columns=columns).astype(float)
+    table.index = pd.MultiIndex.from_tuples(table.index, names=["month", "hour"])
+    return table.sort_index()
+
+
+def distributions(pair, variable):
+    """Return the program's rows and the second computation's, month x hour."""
+    field, result, (hours, years, _, _) = pair
+    second = second_rows(
+        independent.distributions(hours, variable, years),
+        ["n_hours", "n_years", "coverage", "mean", *PERCENTILES],
+    )
+    return own_rows(result.distributions_hourly, field=field, variable=variable), second
+
+
+def test_density_altitude_agrees_with_the_second_computation(pair):
+    own, second = distributions(pair, "density_altitude")
+    assert len(own) == len(second) == 288
+    for column in ("n_hours", "n_years", "coverage"):
+        np.testing.assert_array_equal(own[column], second[column])
+    assert (second["n_hours"] > 0).any()
+    # What the project promises: 8 ft in the mean, 25 ft in the percentiles.
+    np.testing.assert_allclose(own["mean"], second["mean"], rtol=0, atol=8)
+    np.testing.assert_allclose(own[PERCENTILES], second[PERCENTILES], rtol=0, atol=25)
+    # What both reach, since they use the same formulas.
+    np.testing.assert_allclose(own["mean"], second["mean"], rtol=0, atol=0.5)
+    np.testing.assert_allclose(own[PERCENTILES], second[PERCENTILES], rtol=0, atol=0.5)
+
+
+@pytest.mark.parametrize("variable", ["temperature", "relative_humidity"])
+def test_other_variables_agree_with_the_second_computation(pair, variable):
+    own, second = distributions(pair, variable)
+    np.testing.assert_array_equal(own["n_hours"], second["n_hours"])
+    # Tenths are the resolution of the archives.
+    columns = ["mean", *PERCENTILES]
+    np.testing.assert_allclose(own[columns], second[columns], rtol=0, atol=0.01)
+
+
+def test_shortfall_shares_equal_the_second_computation(pair):
+    field, result, (hours, _, runways, fleet) = pair
+    assert {a["id"] for a in fleet} == {a.id for a in result.aircraft}
+    for aircraft in fleet:
+        columns = ["n_hours", "n_years", "shortfall", "outside_table"]
+        second = second_rows(independent.shortfall_cells(hours, aircraft, runways), columns)
+        own = own_rows(result.risk_hourly, field=field, aircraft=aircraft["id"])
+        for column in columns:
+            np.testing.assert_array_equal(own[column], second[column])
+
+
+@pytest.mark.parametrize("study", STUDIES)
+def test_no_field_is_without_figures(results, study):
+    result = results[study]
+    for field in result.fields:
+        table = result.distributions_hourly
+        table = table[table["field"] == field.id]
+        for variable in VARIABLES:
+            assert table[table["variable"] == variable]["mean"].notna().any()
+        for aircraft in result.aircraft:
+            risk = result.risk_hourly
+            risk = risk[(risk["field"] == field.id) & (risk["aircraft"] == aircraft.id)]
+            assert risk["shortfall"].notna().any()
+
+
+@pytest.mark.parametrize("study", STUDIES)
+def test_second_run_reads_the_store_and_gives_the_same(shared, store, results, study):
+    again = run_study(shared / "studies" / study, store=store)
+    for name in ("distributions_hourly", "distributions_monthly", "risk_hourly", "risk_seasonal"):
+        pd.testing.assert_frame_equal(
+            getattr(again, name), getattr(results[study], name), check_exact=True
+        )
+    assert again.provenance == results[study].provenance
+    assert not store.damaged
+
+
+def rejects(result, subject="station"):
+    """Return {(id, check)} of the rejections of a result's study.json."""
+    return {
+        (f["id"], f["check"])
+        for f in result.provenance["findings"]
+        if f["severity"] == "reject" and f["subject"] == subject
+    }
+
+
+def test_high_plains_tells_the_constant_pressure_and_the_wrong_elevation(results, tmp_path):
+    files = write_outputs(results["high_plains"], tmp_path / "out")
+    assert {p.name for p in files} == CONTRACT
+    written = json.loads((tmp_path / "out" / "study.json").read_text())
+    told = {
+        (f["id"], f["check"]): f["message"]
+        for f in written["findings"]
+        if f["subject"] == "station" and f["severity"] != "note"
+    }
+    assert set(told) == {("724677", "constant-pressure"), ("726810", "elevation")}
+    assert "constant all through the record" in told["724677", "constant-pressure"]
+    assert "701 m stated" in told["726810", "elevation"]
+    assert rejects(results["high_plains"]) == set(told)
+    trusted = {s["id"]: s["elevation_trusted"] for s in written["stations"]}
+    assert [i for i, yes in trusted.items() if not yes] == ["726810"]
+
+
+def test_high_plains_says_which_pressure_is_climatological(results):
+    sources = results["high_plains"].pressure_sources
+    climatological = sources[sources["source"] == "climatological"]
+    assert set(climatological["field"]) == {"HGUC", "HBOI"}
+    assert (climatological["share"] == 1.0).all()
+    assert (sources.groupby("field")["share"].sum() - 1).abs().max() < 1e-12
+
+
+@pytest.mark.parametrize("study", ["pernambuco", "lakeside"])
+def test_healthy_studies_accuse_no_station_and_no_field(results, study):
+    assert rejects(results[study]) == set()
+    assert rejects(results[study], "field") == set()
+    trusted = [s["elevation_trusted"] for s in results[study].provenance["stations"]]
+    assert all(trusted)
+
+
+def test_transferred_field_lies_between_its_stations(results):
+    # The strip at 1010 m is above both stations it may use: cooler and higher than either, by
+    # 3 to 8 K/km of published lapse over 160 to 180 m.
+    hourly = results["pernambuco"].distributions_hourly
+    means = hourly.groupby(["field", "variable"])["mean"].mean()
+    for lower in ("PCAR", "PGAR"):
+        assert -2.0 < means["PHIG", "temperature"] - means[lower, "temperature"] < 0.0
+        rise_ft = means["PHIG", "pressure_altitude"] - means[lower, "pressure_altitude"]
+        assert 158 / 0.3048 - 40 < rise_ft < 183 / 0.3048 + 40
+
+
+# ---- delimited text through the column mappings ----------------------------------------------
+
+STUDY = """\
+title = "Mapped archives"
+fields = "fields.csv"
+runways = "runways.csv"
+aircraft = ["aircraft.toml"]
+[period]
+first_year = {first}
+last_year = {last}
+[weather]
+stations = "stations.csv"
+radius_km = 60
+"""
+
+
+def mapped_study(folder, shared, mapping, stations, fields, years):
+    """Write a small study over mapped archive files and the mapping of the tests."""
+    study = StudyFolder(folder)
+    study.write("study.toml", STUDY.format(first=years[0], last=years[1]))
+    head = "id,name,latitude,longitude,elevation_m"
+    study.write("stations.csv", "\n".join([head + ",archive,files", *stations]) + "\n")
+    study.write("fields.csv", "\n".join([head, *fields]) + "\n")
+    rows = [f"{f.split(',')[0]},09,90,900,paved,yes,yes" for f in fields]
+    head = "field,runway,heading_deg,length_m,surface,takeoff,landing"
+    study.write("runways.csv", "\n".join([head, *rows]) + "\n")
+    study.write("mapping.toml", mapping.read_bytes())
+    trainer = shared / "studies" / "high_plains" / "aircraft" / "two_seat_trainer.toml"
+    return run_study(study.write("aircraft.toml", trainer.read_bytes()).file)
+
+
+@pytest.fixture(scope="module")
+def mappings(request):
+    return request.path.parent / "archives" / "mappings"
+
+
+@pytest.fixture(scope="module")
+def alpine(tmp_path_factory, shared, mappings):
+    table = pd.read_csv(shared / "stations" / "alpine" / "stations.csv")
+    stations = [
+        f"{row.file[5:9]},{row.file},{row.lat},{row.lon},{row.elev},mapping.toml,"
+        f"{shared / 'stations' / 'alpine' / row.file}"
+        for row in table.itertuples()
+    ]
+    fields = ["VAL,Valley,46.6276,10.7748,718", "HUT,Hut,46.77,10.79,3220"]
+    return mapped_study(
+        tmp_path_factory.mktemp("alpine"),
+        shared,
+        mappings / "alpine.toml",
+        stations,
+        fields,
+        (2010, 2011),
+    )
+
+
+def test_alpine_tells_the_stuck_humidities_and_the_empty_station(alpine):
+    stuck = {f.id: f.message for f in alpine.findings if f.check == "stuck"}
+    assert {"0011", "0016"} <= set(stuck)
+    for identifier in ("0011", "0016"):
+        assert "relative humidity" in stuck[identifier]
+        assert "10 %" in stuck[identifier]
+    assert rejects(alpine) >= {("0011", "stuck"), ("0016", "stuck")}
+    empty = [f for f in alpine.findings if f.id == "0003" and f.severity != "note"]
+    assert empty and "0003" not in set(alpine.station_use.query("share_of_hours > 0")["station"])
+
+
+def test_alpine_has_figures_without_any_pressure(alpine):
+    assert set(alpine.pressure_sources["source"]) == {"climatological"}
+    table = alpine.distributions_hourly
+    valley = table[(table["field"] == "VAL") & (table["variable"] == "density_altitude")]
+    july_afternoon = valley[(valley["month"] == 7) & (valley["hour"] == 15)].iloc[0]
+    # 718 m is 2356 ft; warmer than standard on a July afternoon, so some 1000 to 3000 ft more.
+    assert 3300 < july_afternoon["p50"] < 5400
+    assert july_afternoon["n_years"] == 1
+
+
+def test_california_runs_through_its_mapping(tmp_path, shared, mappings):
+    folder = shared / "stations" / "california"
+    stations = [
+        f"viejas,Viejas,32.8,-116.7,715,mapping.toml,{folder / 'viejas.csv'}",
+        f"lucky,Lucky Five,32.9,-116.5,1445,mapping.toml,{folder / 'luckyfive.csv'}",
+    ]
+    fields = ["LOW,Low,32.8,-116.7,715", "HIGH,High,32.9,-116.5,1445"]
+    result = mapped_study(
+        tmp_path, shared, mappings / "california.toml", stations, fields, (2012, 2018)
+    )
+    table = result.distributions_monthly
+    table = table[table["variable"] == "temperature"].set_index(["field", "month"])
+    assert table["mean"].notna().all()
+    # 730 m higher by day at 5-9 K/km.
+    difference = table.loc[("LOW", 7), "mean"] - table.loc[("HIGH", 7), "mean"]
+    assert 0 < difference < 0.73 * 9
+    assert not [f for f in result.findings if f.severity == "reject" and f.subject == "field"]
