@@ -315,8 +315,9 @@ def _monotony(
     word = "fall" if direction > 0 else "rise"
     for axis, (name, _) in enumerate(axes.items()):
         # Against the largest so far, so that a blank cell hides nothing.
-        so_far = np.fmax.accumulate(grid * direction, axis=axis)
-        wrong = np.argwhere(np.diff(so_far, axis=axis) > np.diff(grid * direction, axis=axis) + 0)
+        rising = np.moveaxis(grid * direction, axis, 0)
+        below = rising[1:] < np.fmax.accumulate(rising, axis=0)[:-1]
+        wrong = np.argwhere(np.moveaxis(below, 0, axis))
         if len(wrong):
             row, column = (int(i) + 1 for i in wrong[0])
             problems.append(

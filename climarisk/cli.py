@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import io
 import os
 import sys
 from dataclasses import dataclass, replace
@@ -150,6 +151,8 @@ def _run(
 
     read = read_study(study)
     variants = scenarios(read, asked.warmer_k, asked.holds, asked.years)
+    folder = _output_folder(read, out)
+    _refuse_overwriting(read, folder)
     kept = _store(store) if read.source != "synthetic" else None
     with _bar() as progress:
         weather = load_weather(read, kept, progress, offline)
@@ -157,7 +160,6 @@ def _run(
         if variants:
             result = replace(result, scenarios=compare(result, variants, weather, progress))
         progress("writing results", 0, 1)
-        folder = _output_folder(read, out)
         files = write_outputs(result, folder)
         progress("writing results", 1, 1)
     if kept is not None and kept.damaged:
@@ -179,6 +181,21 @@ def _demo_study() -> Path:
 
 def _output_folder(study: Study, out: Path | None) -> Path:
     return out if out is not None else Path("maps") / study.name
+
+
+def _refuse_overwriting(study: Study, folder: Path) -> None:
+    """Refuse an output folder in which a run would replace a file of the study."""
+    from climarisk.errors import InputError
+    from climarisk.outputs.tables import OUTPUT_FILES
+
+    read = {path.resolve() for path in study.inputs}
+    read |= {path.resolve() for station in study.stations for path in station.files}
+    for name in OUTPUT_FILES:
+        if (folder / name).resolve() in read:
+            raise InputError(
+                f"{folder / name}: the run would replace this file, which the study reads; "
+                "choose another folder with --out."
+            )
 
 
 def _store(folder: Path | None) -> Store:
@@ -256,6 +273,9 @@ def _coverage_line(result: StudyResult) -> str:
 
 def main() -> None:
     """Run the command line; the exit code belongs to the exception."""
+    for stream in (sys.stdout, sys.stderr):
+        if isinstance(stream, io.TextIOWrapper):
+            stream.reconfigure(errors="replace")  # a terminal that lacks a letter is no failure
     try:
         app()
     except ClimariskError as error:
@@ -272,6 +292,3 @@ def main() -> None:
             )
         )
         sys.exit(ClimariskError.exit_code)
-    except KeyboardInterrupt:
-        _notes.print("interrupted; nothing was half-written.")
-        sys.exit(130)

@@ -170,13 +170,17 @@ def monthly_distribution(values: np.ndarray, clock: LocalClock, inside: np.ndarr
     Returns
     -------
     DataFrame, shape (12, 6 + number of percentiles)
-        As `hourly_distribution` without ``hour``; ``n_years`` are the years with a counting
-        cell inside the window, ``coverage`` the share of its (year, hour) cells that count.
+        As `hourly_distribution` without ``hour``; ``n_years`` are the years with an hour
+        that enters, ``coverage`` the share of its (year, hour) cells that count.
     """
     complete = completeness(np.isfinite(values[0]), clock)
     used = complete.used & inside
     table = _statistics(values[:, used], clock.month[used], 12)
-    n_years, coverage = window_coverage(complete.counts, window_cells(inside, clock))
+    years = np.bincount(
+        clock.month[used] * clock.n_years + clock.year[used], minlength=12 * clock.n_years
+    )
+    n_years = (years.reshape(12, -1) > 0).sum(axis=1)
+    coverage = window_coverage(complete.counts, window_cells(inside, clock))
     table.insert(1, "n_years", n_years)
     table.insert(2, "coverage", coverage)
     table["years_note"] = years_notes(n_years)
@@ -184,19 +188,12 @@ def monthly_distribution(values: np.ndarray, clock: LocalClock, inside: np.ndarr
     return table
 
 
-def window_coverage(counts: np.ndarray, window: np.ndarray) -> tuple[np.ndarray, np.ndarray]:
-    """Years that count and share of counting cells of each month within a window.
+def window_coverage(counts: np.ndarray, window: np.ndarray) -> np.ndarray:
+    """Share of the (year, hour) cells of each month within a window that count, shape (12,).
 
     Parameters
     ----------
     counts, window : ndarray of bool, shape (n_years, 12, 24)
-
-    Returns
-    -------
-    n_years : ndarray of int, shape (12,)
-    coverage : ndarray, shape (12,)
     """
-    counting = counts & window
-    n_years = counting.any(axis=2).sum(axis=0)
     cells = window.sum(axis=(0, 2))
-    return n_years, counting.sum(axis=(0, 2)) / np.maximum(cells, 1)
+    return (counts & window).sum(axis=(0, 2)) / np.maximum(cells, 1)

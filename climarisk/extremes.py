@@ -7,8 +7,9 @@ from dataclasses import dataclass
 import numpy as np
 import pandas as pd
 
-from climarisk.climatology import COMPLETE_DAYS, segment_quantiles
+from climarisk.climatology import segment_quantiles
 from climarisk.clock import LocalClock
+from climarisk.rules import DAYS
 
 #: A fit needs this many annual maxima (common practice, no source).
 MINIMUM_MAXIMA = 20
@@ -96,7 +97,7 @@ def annual_maxima(values: np.ndarray, clock: LocalClock) -> tuple[np.ndarray, np
     first = np.datetime64(f"{clock.first_year}-01-01", "D")
     year = (first + present).astype("datetime64[Y]").astype(int) + 1970 - clock.first_year
     days = np.bincount(year, minlength=clock.n_years)
-    counts = days >= COMPLETE_DAYS * clock.days_in_month[:, hottest].sum(axis=1)
+    counts = days >= DAYS.share_of_days * clock.days_in_month[:, hottest].sum(axis=1)
     highest = np.full(clock.n_years, -np.inf)
     np.maximum.at(highest, clock.year[known], values[known])
     return clock.first_year + np.flatnonzero(counts), highest[counts]

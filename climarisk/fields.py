@@ -200,7 +200,10 @@ def _layer(path: Path) -> Any:
     start = read_bytes(path)[:16].lstrip(b"\xef\xbb\xbf \t\r\n")
     wanted = b"SQLite format 3" if path.suffix.lower() == ".gpkg" else b"{"
     if not start.startswith(wanted):
-        raise InputError(f"{path}: the file is not what its ending says; give GeoJSON or GeoPackage.")
+        raise InputError(
+            f"{path}: this is not a readable vector layer (it does not begin as one does); give "
+            "GeoJSON or GeoPackage."
+        )
     try:
         names = [str(name) for name, _ in pyogrio.list_layers(path)]
         if len(names) > 1 and "fields" not in names:
@@ -216,7 +219,8 @@ def _plain(value: Any) -> Any:
     """An attribute as a CSV cell would give it; None if it is empty."""
     if isinstance(value, str | int | float):
         return None if value == "" or value != value else value
-    return None if value is None or value is pd.NA else repr(value)
+    # A list or an array is no cell; as a list it fails the check of its row with a sentence.
+    return None if value is None or value is pd.NA else [repr(value)]
 
 
 def _rows_from_layer(path: Path) -> tuple[list[tuple[int, dict[str, Any]]], list[str]]:
@@ -276,10 +280,12 @@ def read_runways(
     for number, row in rows:
         where = f"{path}, line {number}"
         if row["field"] not in by_field:
-            hint = nearest(str(row["field"]), by_field)
-            problems.append(
-                f"{where}: the field {row['field']!r} is not in the fields file; {hint}"
-            )
+            strangers = True
+            if complete:
+                hint = nearest(str(row["field"]), by_field)
+                problems.append(
+                    f"{where}: the field {row['field']!r} is not in the fields file; {hint}"
+                )
             continue
         direction = _direction(row, where, problems)
         if direction is None:

@@ -78,7 +78,7 @@ def read_bytes(path: Path) -> bytes:
     """
     try:
         if path.exists() and not path.is_file():
-            raise InputError(f"{path}: this is no regular file; give the name of a text file.")
+            raise InputError(f"{path}: the file cannot be read (it is no regular file).")
         size = path.stat().st_size
         if size > MAX_INPUT_BYTES:
             raise InputError(
@@ -288,16 +288,15 @@ def matching(folder: Path, pattern: str) -> list[Path]:
         The text cannot be a pattern.
     """
     try:
-        literal = folder / pattern
-        if pattern and literal.is_file():
-            return [literal]
-        base, rest = (Path(literal.anchor), literal.parts[1:]) if literal.is_absolute() else (
-            Path(), literal.parts
-        )
-        fixed = next((i for i, part in enumerate(rest) if any(c in part for c in "*?[")), len(rest))
-        if fixed == len(rest):
+        asked = Path(pattern)
+        if pattern and (folder / asked).is_file():
+            return [folder / asked]
+        base = Path(asked.anchor) if asked.is_absolute() else folder
+        parts = asked.parts[1:] if asked.is_absolute() else asked.parts
+        fixed = next((i for i, part in enumerate(parts) if any(c in part for c in "*?[")), None)
+        if fixed is None:
             return []
-        found = base.joinpath(*rest[:fixed]).glob(str(Path(*rest[fixed:])))
+        found = base.joinpath(*parts[:fixed]).glob(str(Path(*parts[fixed:])))
         return sorted(p for p in found if p.is_file())
     except (OSError, ValueError, IndexError, NotImplementedError) as error:
         raise ValueError(f"{pattern[:60]!r} is no usable file pattern ({error})") from None

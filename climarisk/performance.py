@@ -147,7 +147,8 @@ def read_off(
         + corner(i1, j, u * (1 - v))
         + corner(i1, j1, u * v)
     )
-    return np.where(beyond_u | beyond_v, np.nan, value)
+    unknown = np.isnan(u) | np.isnan(v)
+    return np.where(beyond_u | beyond_v | unknown, np.nan, value)
 
 
 def _place(axis: np.ndarray, x: np.ndarray) -> tuple[np.ndarray, np.ndarray, np.ndarray]:

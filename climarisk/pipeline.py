@@ -21,6 +21,7 @@ from climarisk.atmosphere import (
 from climarisk.climatology import hourly_distribution, monthly_distribution
 from climarisk.clock import LocalClock, hour_grid, in_window, local_clock
 from climarisk.errors import InputError
+from climarisk.extremes import extreme_rows
 from climarisk.fields import Field
 from climarisk.findings import Finding, sort_findings
 from climarisk.performance import Margins, TableAir, density_ratio, margins
@@ -30,6 +31,7 @@ from climarisk.reporting import (
     FieldError,
     aircraft_findings,
     estimate,
+    evidence_findings,
     field_findings,
     pressure_shares,
     station_use,
@@ -58,6 +60,7 @@ from climarisk.transfer import (
     warmed,
 )
 from climarisk.transfer_error import TransferError, learn_error
+from climarisk.trend import TrendInput, trend_rows
 from climarisk.verify import as_field, errors, hide, lapse_for
 from climarisk.weather import Weather, load_weather
 
@@ -77,6 +80,8 @@ class FieldTables:
     station_use: pd.DataFrame
     pressure_sources: pd.DataFrame
     estimate: pd.DataFrame
+    trends: pd.DataFrame
+    extremes: pd.DataFrame
     findings: tuple[Finding, ...]
 
 
@@ -160,6 +165,8 @@ def evaluate(study: Study, weather: Weather, progress: Progress = quiet) -> Stud
         station_use=use,
         pressure_sources=pressure,
         estimates=_stacked([p.estimate for p in parts]),
+        trends=_stacked([p.trends for p in parts]),
+        extremes=_stacked([p.extremes for p in parts]),
         attributions=tuple(dict.fromkeys(a for s in weather.stations for a in s.sources)),
         findings=findings,
         provenance=provenance(study, weather, use, pressure, findings),
@@ -252,16 +259,23 @@ def field_tables(
     scene = _Scene(study, field, air, clock, inside, shifts, sd_ft, error.persistence)
     risk = [_risk(scene, profile) for profile in study.aircraft]
     field_error = FieldError(sd_k, sd_ft, lapse.stations, error.stations)
+    central = variables(field, air)["density_altitude"]
+    trends = trend_rows(_trend_input(scene, central, risk))
+    extremes, no_extremes = extreme_rows(field.id, central, clock, study.confidence)
+    findings = field_findings(field, chosen, stations, air, clock, study)
+    findings += evidence_findings(field, trends, no_extremes, study.confidence)
     return FieldTables(
         of_month,
         of_hour,
-        _stacked([monthly for monthly, _, _ in risk]),
-        _stacked([hourly for _, hourly, _ in risk]),
-        _stacked([seasonal for _, _, seasonal in risk]),
+        _stacked([scored.monthly for scored in risk]),
+        _stacked([scored.hourly for scored in risk]),
+        _stacked([scored.seasonal for scored in risk]),
         station_use(field, chosen, air, clock, grid),
         pressure_shares(field, air, clock),
         estimate(field, chosen, air, field_error, clock),
-        tuple(field_findings(field, chosen, stations, air, clock, study)),
+        trends,
+        extremes,
+        tuple(findings),
     )
 
 
@@ -352,9 +366,32 @@ class _Scene:
     persistence: float
 
 
-def _risk(
-    scene: _Scene, profile: AircraftProfile
-) -> tuple[pd.DataFrame, pd.DataFrame, pd.DataFrame]:
+@dataclass(frozen=True)
+class _Scored:
+    """One aircraft at one field: its tables, and its hours for the trends."""
+
+    aircraft: str
+    monthly: pd.DataFrame
+    hourly: pd.DataFrame
+    seasonal: pd.DataFrame
+    known: np.ndarray
+    shortfall: np.ndarray
+
+
+def _trend_input(scene: _Scene, central: np.ndarray, risk: list[_Scored]) -> TrendInput:
+    return TrendInput(
+        field=scene.field.id,
+        density_altitude_ft=central,
+        clock=scene.clock,
+        inside=scene.inside,
+        known=risk[0].known,
+        shortfall={scored.aircraft: scored.shortfall for scored in risk},
+        seasons=scene.study.seasons,
+        confidence=scene.study.confidence,
+    )
+
+
+def _risk(scene: _Scene, profile: AircraftProfile) -> _Scored:
     study, field, clock = scene.study, scene.field, scene.clock
     air = scene.air
     complete = np.isfinite(air.temperature_c) & np.isfinite(air.vapour_pressure_hpa)
@@ -384,7 +421,7 @@ def _risk(
         table.assign(field=field.id, aircraft=profile.id)[wanted]
         for table, wanted in zip(tables, columns, strict=True)
     )
-    return monthly, hourly, seasonal
+    return _Scored(profile.id, monthly, hourly, seasonal, known, central.shortfall)
 
 
 def _moved(central: Margins, places: np.ndarray, moved: Margins) -> Margins:

@@ -78,6 +78,8 @@ STUCK_HOURS: dict[str, int] = {
 }
 #: Relative humidity stays at saturation for days in fog, so it is stuck only below this.
 _SATURATED_PCT = 95.0
+#: At saturation a sensor is stuck only after so many hours: fog of ten days is unheard of.
+_SATURATED_HOURS = 240
 #: A humidity sensor stuck for more than this share of its hours is not used at all.
 _STUCK_SHARE = 0.2
 #: Hours of a month that must share one pressure before it is taken for a default value.
@@ -87,6 +89,10 @@ _SUPERSATURATION_K = 0.5
 #: Deviation of the pressure-implied elevation, m: caution above the first, reject above
 #: the second.
 ELEVATION_CAUTION_M, ELEVATION_REJECT_M = 50.0, 100.0
+#: Mean sea-level pressure under the circumpolar troughs and cold highs strays further from
+#: 1013.25 hPa than anywhere else, by up to some 30 hPa (from memory): a station without a
+#: neighbour is given this allowance, m, growing from the first latitude to the second.
+_LONE_ALLOWANCE_M, _LONE_LATITUDES = 250.0, (50.0, 60.0)
 #: Stations this near share a mean sea-level pressure within a few hPa.
 _NEIGHBOUR_KM = 500.0
 
@@ -185,7 +191,7 @@ def _reject_default_pressure(
         default = counts.index[(counts >= _DEFAULT_MONTH_HOURS) & (spread == 0)]
         if not len(default):
             continue
-        wrong = np.isin(month, default) & values.notna().to_numpy()
+        wrong = _with_runs(values.to_numpy(), np.isin(month, default))
         whole = len(default) == int((counts >= _DEFAULT_MONTH_HOURS).sum())
         if whole:
             wrong = values.notna().to_numpy()
@@ -196,6 +202,21 @@ def _reject_default_pressure(
             "and no measurement"
         )
         _reject(station, hours, column, wrong, "constant-pressure", reason, findings)
+
+
+def _with_runs(values: np.ndarray, marked: np.ndarray) -> np.ndarray:
+    """The marked values, and those equal to them that follow or precede without a break.
+
+    A default month of local time reaches a few hours into the neighbouring month of UTC.
+    """
+    known = np.flatnonzero(np.isfinite(values))
+    wrong = np.zeros(len(values), bool)
+    if not len(known):
+        return wrong
+    run = np.cumsum(np.concatenate(([True], np.diff(values[known]) != 0)))
+    hit = np.bincount(run, marked[known], minlength=run[-1] + 1) > 0
+    wrong[known] = hit[run]
+    return wrong
 
 
 def _reject_spikes(station: Station, hours: pd.DataFrame, findings: list[Finding]) -> None:
@@ -239,10 +260,11 @@ def _reject_stuck(station: Station, hours: pd.DataFrame, findings: list[Finding]
     instants = hours.index.as_unit("s").asi8
     for column, limit in STUCK_HOURS.items():
         values = hours[column].to_numpy()
-        wrong = _runs(values, instants) > limit
+        runs = _runs(values, instants)
+        wrong = runs > limit
         reason = f"the same value for more than {limit} hours on end"
         if column == "relative_humidity_pct":
-            wrong &= values < _SATURATED_PCT
+            wrong &= (values < _SATURATED_PCT) | (runs > _SATURATED_HOURS)
             if wrong.sum() > _STUCK_SHARE * np.isfinite(values).sum():
                 stuck = float(pd.Series(values[wrong]).mode().iloc[0])
                 wrong = np.isfinite(values)
@@ -311,7 +333,9 @@ def check_elevations(
     while trusted:
         checks |= {i: _implied(by_id[i], means, by_id, trusted - {i}) for i in trusted}
         off = {i: abs(checks[i].implied_m - by_id[i].elevation_m) for i in trusted}
-        suspects = [i for i in sorted(off) if off[i] > ELEVATION_REJECT_M]
+        suspects = [
+            i for i in sorted(off) if off[i] > ELEVATION_REJECT_M + _allowance(by_id[i], checks[i])
+        ]
         if not suspects:
             break
         # Of two that contradict each other the one further from the standard is at fault.
@@ -369,9 +393,17 @@ def _implied(
     return ElevationCheck(float(implied), len(near))
 
 
+def _allowance(station: Station, check: ElevationCheck) -> float:
+    """Metres by which a station without a neighbour may be further off, by latitude."""
+    if check.neighbours:
+        return 0.0
+    return float(np.interp(abs(station.latitude), _LONE_LATITUDES, (0.0, _LONE_ALLOWANCE_M)))
+
+
 def _elevation_finding(station: Station, check: ElevationCheck) -> Finding | None:
     off = check.implied_m - station.elevation_m
-    if abs(off) <= ELEVATION_CAUTION_M:
+    allowance = _allowance(station, check)
+    if abs(off) <= ELEVATION_CAUTION_M + allowance:
         return None
     against = (
         f"the mean sea-level pressure of {check.neighbours} neighbouring stations"
@@ -382,7 +414,7 @@ def _elevation_finding(station: Station, check: ElevationCheck) -> Finding | Non
         f"its pressure fits an elevation of {check.implied_m:.0f} m against {against}, "
         f"{abs(off):.0f} m {'above' if off > 0 else 'below'} the {station.elevation_m:g} m stated"
     )
-    if abs(off) <= ELEVATION_REJECT_M:
+    if abs(off) <= ELEVATION_REJECT_M + allowance:
         return Finding("caution", "station", station.id, "elevation", f"{fact}; check it.")
     if station.elevation_verified:
         return Finding(

@@ -28,6 +28,7 @@ from climarisk.transfer import (
     StationAir,
     measured_around,
 )
+from climarisk.trend import STATION_MOVE
 
 #: Without a station this near in distance and height the field's air is of low confidence
 #: (METHODS 9, step 6).
@@ -278,6 +279,28 @@ def _pressure_texts(
             f"{SEA_LEVEL_LIMIT_M:.0f} m and stations of doubtful elevation are not used."
         )
     return texts
+
+
+def evidence_findings(
+    field: Field, trends: pd.DataFrame, no_extremes: str | None, confidence: float
+) -> list[Finding]:
+    """What there is to say of a field's trends and extremes."""
+    findings = []
+    broken = trends[(trends["break_p_value"] < 1.0 - confidence) & (trends["aircraft"] == "")]
+    for row in broken.itertuples():
+        findings.append(
+            Finding(
+                "caution",
+                "field",
+                field.id,
+                "break",
+                f"the {row.season} density altitude steps in {int(row.break_year)}: a trend there "
+                f"{STATION_MOVE}.",
+            )
+        )
+    if no_extremes:
+        findings.append(Finding("note", "field", field.id, "extremes", no_extremes))
+    return findings
 
 
 def aircraft_findings(aircraft: Sequence[AircraftProfile]) -> list[Finding]:

@@ -106,6 +106,8 @@ class StudyResult:
         from what (``station pressure``, ``QNH``, ``sea-level pressure``, ``climatological``).
     estimates : DataFrame
         Columns `ESTIMATE_COLUMNS`.
+    trends, extremes : DataFrame
+        Columns `climarisk.trend.TREND_COLUMNS`, `climarisk.extremes.EXTREME_COLUMNS`.
     attributions : tuple of str
         Licence and attribution lines of the data used.
     findings : tuple of Finding
@@ -127,6 +129,8 @@ class StudyResult:
     station_use: pd.DataFrame
     pressure_sources: pd.DataFrame
     estimates: pd.DataFrame
+    trends: pd.DataFrame
+    extremes: pd.DataFrame
     attributions: tuple[str, ...]
     findings: tuple[Finding, ...]
     provenance: dict[str, Any]

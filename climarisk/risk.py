@@ -8,12 +8,7 @@ from dataclasses import dataclass
 import numpy as np
 import pandas as pd
 
-from climarisk.climatology import (
-    completeness,
-    segment_quantiles,
-    window_cells,
-    window_coverage,
-)
+from climarisk.climatology import completeness, segment_quantiles
 from climarisk.clock import LocalClock
 from climarisk.performance import CHECKS, Margins
 from climarisk.rules import YEARS, interval_notes
@@ -97,7 +92,7 @@ def level_weights(n_levels: int, persistence: float) -> np.ndarray:
 
 
 def shares_by_cell(
-    hours: Hours, pooled: np.ndarray, cells: np.ndarray, n_cells: int, n_years: np.ndarray
+    hours: Hours, pooled: np.ndarray, cells: np.ndarray, n_cells: int
 ) -> pd.DataFrame:
     """Shortfall share, its interval, the limiting check and the margins of each cell.
 
@@ -109,8 +104,6 @@ def shares_by_cell(
     cells : ndarray of int, shape (n_known,)
         Their cell, 0 to `n_cells` - 1.
     n_cells : int
-    n_years : ndarray of int, shape (n_cells,)
-        Counting years, for the interval.
 
     Returns
     -------
@@ -127,7 +120,7 @@ def shares_by_cell(
 
     total = count()
     fallen = np.stack([count(m.shortfall[places]) for m in hours.levels], axis=-1)
-    n_hours = total.sum(axis=1)
+    n_hours, n_years = total.sum(axis=1), (total > 0).sum(axis=1)
     some = np.where(n_hours > 0, n_hours, np.nan)
     low, high = _intervals(fallen, total, n_years, hours)
     quantiles = segment_quantiles(
@@ -181,17 +174,41 @@ def _intervals(
     drawn = years @ total[enough].T
     share = both @ fallen[enough].reshape(int(enough.sum()), -1).T
     share = np.where(drawn > 0, share / np.where(drawn > 0, drawn, 1), np.nan)
-    tail = (1.0 - hours.confidence) / 2.0
     # The slow form only for cells whose counting years some resample misses altogether.
     gaps = np.isnan(share).any(axis=0)
     bounds = np.empty((2, share.shape[1]))
-    for columns, quantile in ((~gaps, np.quantile), (gaps, np.nanquantile)):
-        if columns.any():
-            bounds[:, columns] = quantile(
-                share[:, columns], [tail, 1.0 - tail], axis=0, method="median_unbiased"
-            )
+    for count in np.unique(n_years[enough]):
+        tail = expanded_tail(int(count), hours.confidence)
+        for chosen, quantile in ((~gaps, np.quantile), (gaps, np.nanquantile)):
+            columns = chosen & (n_years[enough] == count)
+            if columns.any():
+                bounds[:, columns] = quantile(
+                    share[:, columns], [tail, 1.0 - tail], axis=0, method="median_unbiased"
+                )
     low[enough], high[enough] = bounds
     return low, high
+
+
+def expanded_tail(n_years: int, confidence: float) -> float:
+    """Share of the resamples to cut at either end for an interval of the stated confidence.
+
+    Parameters
+    ----------
+    n_years : int
+        Resampled years, 2 or more.
+    confidence : float
+
+    Notes
+    -----
+    Resampled means vary by ``sqrt((n - 1) / n)`` too little and know nothing of the doubt about
+    their own spread; the tail of the normal distribution beyond ``sqrt(n / (n - 1))`` times the
+    t quantile with n - 1 degrees of freedom makes up for both (expanded percentile interval,
+    Hesterberg 2015, The American Statistician 69, 371-386).
+    """
+    from scipy.special import ndtr, stdtrit
+
+    tail = (1.0 - confidence) / 2.0
+    return float(ndtr(np.sqrt(n_years / (n_years - 1)) * stdtrit(n_years - 1, tail)))
 
 
 def _limiting(
@@ -252,13 +269,10 @@ def risk_tables(
     on_grid[known] = True
     complete = completeness(on_grid, clock)
     used, inside = complete.used[known], hours.inside[known]
-    hourly = shares_by_cell(
-        hours, used, clock.month_hour[known], 288, complete.counts.sum(axis=0).reshape(-1)
-    )
+    hourly = shares_by_cell(hours, used, clock.month_hour[known], 288)
     hourly.insert(0, "month", np.repeat(np.arange(1, 13), 24))
     hourly.insert(1, "hour", np.tile(np.arange(24), 12))
-    n_years, _ = window_coverage(complete.counts, window_cells(hours.inside, clock))
-    monthly = shares_by_cell(hours, used & inside, clock.month[known], 12, n_years)
+    monthly = shares_by_cell(hours, used & inside, clock.month[known], 12)
     monthly.insert(0, "month", np.arange(1, 13))
     return monthly, hourly, _seasonal(hours, used & inside, seasons)
 
@@ -272,8 +286,7 @@ def _seasonal(hours: Hours, pooled: np.ndarray, seasons: Sequence[Season]) -> pd
         for m, d in season.days:
             member[m, d] = True
         chosen = pooled & member[month, day]
-        years = np.array([len(np.unique(clock.year[known[chosen]]))])
-        table = shares_by_cell(hours, chosen, np.zeros(len(known), int), 1, years)
+        table = shares_by_cell(hours, chosen, np.zeros(len(known), int), 1)
         table.insert(0, "season", season.name)
         tables.append(table)
     return pd.concat(tables, ignore_index=True)

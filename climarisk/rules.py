@@ -93,21 +93,22 @@ def rules() -> dict[str, dict[str, Any]]:
 
 
 def years_notes(n_years: np.ndarray) -> np.ndarray:
-    """What to know of the percentiles of cells with so many counting years."""
+    """What to know of the percentiles of cells with so many counting years; empty without any."""
     few = f"percentiles need {YEARS.percentiles} years"
     tail = f"p01, p05, p95 and p99 need {YEARS.extreme_percentiles} years"
     notes = np.where(n_years < YEARS.extreme_percentiles, tail, "")
     notes = np.where(n_years < YEARS.percentiles, few, notes)
-    return np.where(n_years == 0, "no data", notes).astype(object)
+    return np.where(n_years == 0, "", notes).astype(object)
 
 
 def interval_notes(n_years: np.ndarray) -> np.ndarray:
-    """What to know of the interval of cells with so many counting years."""
+    """What to know of the interval of cells with so many counting years; empty without any."""
     few = np.where(
         n_years < YEARS.settled_interval, f"fewer than {YEARS.settled_interval} years", ""
     )
     none = f"no interval below {YEARS.interval} years"
-    return np.where(n_years < YEARS.interval, none, few).astype(object)
+    notes = np.where(n_years < YEARS.interval, none, few)
+    return np.where(n_years == 0, "", notes).astype(object)
 
 
 def patchy_months(known: np.ndarray, clock: LocalClock) -> tuple[int, int]:

@@ -16,9 +16,9 @@ from climarisk.errors import ClimariskError
 from climarisk.findings import Finding
 from climarisk.inputs import (
     Identifier,
-    matching,
     Row,
     Text,
+    matching,
     metres,
     nearest,
     one_of_units,

@@ -75,6 +75,7 @@ class Store:
             table = pq.read_table(path, page_checksum_verification=True)
             meta = json.loads(table.schema.metadata[_META])
             hours = table.to_pandas().set_index("time")
+            hours.index = hours.index.as_unit("s")
             if list(hours.columns) != list(COLUMNS) or meta.pop("rows") != len(hours):
                 raise ValueError("the entry has other columns or rows than it says")
             notes = tuple(tuple(note) for note in meta.pop("notes"))

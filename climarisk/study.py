@@ -88,6 +88,10 @@ class _StudyFile(Strict):
     risk: _Risk = _Risk()
 
 
+#: No air is carried further in height, even where a field is pinned to a station.
+_MOST_PINNED_M = 2000.0
+
+
 @dataclass(frozen=True)
 class Season:
     """A named part of the year.
@@ -283,14 +287,22 @@ def _stations(weather: _Weather, path: Path, problems: list[str]) -> list[Statio
 
 
 def _pin_problems(fields: list[Field], stations: list[Station], path: Path) -> list[str]:
-    known = [s.id for s in stations]
-    return [
-        f"{path}: the field {f.id!r} is pinned to the station {s!r}, which is not in the "
-        f"stations file; {nearest(s, known)}"
-        for f in fields
-        for s in f.stations
-        if s not in known
-    ]
+    known = {s.id: s.elevation_m for s in stations}
+    problems = []
+    for f in fields:
+        for s in f.stations:
+            if s not in known:
+                problems.append(
+                    f"{path}: the field {f.id!r} is pinned to the station {s!r}, which is not in "
+                    f"the stations file; {nearest(s, known)}"
+                )
+            elif abs(f.elevation_m - known[s]) > _MOST_PINNED_M:
+                problems.append(
+                    f"{path}: the field {f.id!r} at {f.elevation_m:g} m is pinned to the station "
+                    f"{s!r} at {known[s]:g} m; at most {_MOST_PINNED_M:g} m between them make "
+                    "sense. Check both elevations."
+                )
+    return problems
 
 
 def _seasons(named: dict[str, list[str]], path: Path, problems: list[str]) -> list[Season]:

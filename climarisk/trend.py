@@ -13,13 +13,13 @@ import numpy as np
 import pandas as pd
 
 from climarisk.climatology import (
-    COMPLETE_DAYS,
     Completeness,
     completeness,
     segment_quantiles,
     window_cells,
 )
 from climarisk.clock import LocalClock
+from climarisk.rules import DAYS
 from climarisk.study import Season
 
 #: A trend or a break needs this many years with a value.
@@ -358,7 +358,7 @@ def season_years(
     counting = complete.counts & window
     active = counting.any(axis=(1, 2))
     offered = window[active].sum(axis=0)
-    takes_part = (offered > 0) & (counting.sum(axis=0) >= COMPLETE_DAYS * offered)
+    takes_part = (offered > 0) & (counting.sum(axis=0) >= DAYS.share_of_days * offered)
 
     hours = np.flatnonzero(in_season)
     year = clock.year[hours] + late[month[hours], day[hours]]
@@ -369,7 +369,7 @@ def season_years(
     used = complete.used[hours]
     expected = np.bincount(year, minlength=clock.n_years)
     got = np.bincount(year[used], minlength=clock.n_years)
-    counts = (expected > 0) & (got >= COMPLETE_DAYS * expected)
+    counts = (expected > 0) & (got >= DAYS.share_of_days * expected)
     used &= counts[year]
     place = np.full(len(clock.hour), -1)
     place[hours[used]] = year[used] - first

@@ -145,7 +145,7 @@ def _from_files(study: Study, store: Store | None, progress: Progress) -> list[R
                 hashes.append((relative_name(path, study), sha256(data)))
                 files.append(_parsed(data, hashes[-1][1], path, station, store))
             except ArchiveError as error:
-                problems.append(f"{path.parent}: {error}")
+                problems.append(f"{path.parent / str(error)}")
         raw.append(RawStation(station, tuple(files), tuple(hashes)))
     progress("reading archives", total, total)
     if problems:
@@ -155,7 +155,8 @@ def _from_files(study: Study, store: Store | None, progress: Progress) -> list[R
 
 def relative_name(path: Path, study: Study) -> str:
     """A path as the study would write it: relative to its folder, with ``/``."""
-    return Path(os.path.relpath(path, study.path.parent)).as_posix()
+    name = Path(os.path.relpath(path, study.path.parent)).as_posix()
+    return name.encode("utf-8", "backslashreplace").decode("utf-8")
 
 
 def _archive_bytes(path: Path) -> bytes:
@@ -163,13 +164,13 @@ def _archive_bytes(path: Path) -> bytes:
         size = path.stat().st_size
         if size > _MAX_ARCHIVE_BYTES:
             raise ArchiveError(
-                f"{path}: the file has {size:,} bytes; at most {_MAX_ARCHIVE_BYTES:,} are read. "
-                "Split it by year."
+                f"{path.name}: the file has {size:,} bytes; at most {_MAX_ARCHIVE_BYTES:,} are "
+                "read. Split it by year."
             )
         return path.read_bytes()
     except OSError as error:
         raise ArchiveError(
-            f"{path}: the archive file cannot be read ({error.strerror or error})."
+            f"{path.name}: the archive file cannot be read ({error.strerror or error})."
         ) from None
 
 

@@ -175,21 +175,16 @@ def test_two_blocks_and_two_faults_are_both_told(tmp_path):
     assert len(problems) == 2
 
 
-@pytest.mark.xfail(strict=True, reason="a fall across a blank cell is not seen")
 def test_a_fall_across_a_blank_cell_is_told(tmp_path):
     assert "must not fall" in only_problem(tmp_path, ("[160, 190, 235]", "[160, nan, 150]"))
 
 
-@pytest.mark.xfail(
-    strict=True, reason="a ground roll longer than the distance to 50 ft is accepted"
-)
 def test_a_ground_roll_longer_than_the_distance_to_50_ft_is_told(tmp_path):
     # By definition the distance to 50 ft contains the ground roll.
     _, problems = changed(tmp_path, ("[390, 475, 580]", "[390, 1086, 1090]"))
     assert len(problems) == 1
 
 
-@pytest.mark.xfail(strict=True, reason="a second sentence says the quantity given twice is missing")
 @pytest.mark.parametrize(
     ("name", "twin"),
     [
@@ -268,7 +263,6 @@ def test_a_value_out_of_bounds_is_one_sentence(tmp_path, old, new, sentence):
     assert sentence in only_problem(tmp_path, (old, new))
 
 
-@pytest.mark.xfail(strict=True, reason="TOML values of another type are coerced without a word")
 @pytest.mark.parametrize(
     ("old", "new"),
     [
@@ -276,7 +270,7 @@ def test_a_value_out_of_bounds_is_one_sentence(tmp_path, old, new, sentence):
         ("carburettor = true", "carburettor = 1"),
         ("planning_kg = 740", 'planning_kg = "740"'),
         ("empty_kg = 520", "empty_kg = true"),
-        ("[-10, 15, 40]", "[false, true, 40]"),
+        ("[-10, 15, 40]", "[-10, true, 40]"),
         ("[160, 190, 235]", '["160", 190, 235]'),
         ("[160, 190, 235]", "[true, 190, 235]"),
     ],

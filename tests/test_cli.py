@@ -21,6 +21,8 @@ FILES = {
     "risk_monthly.csv",
     "risk_hourly.csv",
     "risk_seasonal.csv",
+    "trends.csv",
+    "extremes.csv",
     "fields.gpkg",
     "fields.geojson",
     "study.json",
@@ -58,7 +60,7 @@ def test_run_writes_the_contract_and_says_where(study_folder, command, tmp_path,
     assert done.code == 0
     assert tree(tmp_path / "results") == FILES
     assert "Map: results/map.html" in done.out
-    assert "8 files in results" in done.out
+    assert "10 files in results" in done.out
     assert "caution: aircraft tourer" in done.err, "findings go to stderr"
     assert "caution" not in done.out
     assert "%|" not in done.err, "no progress bar where stderr is no terminal"
@@ -387,7 +389,6 @@ def test_markup_in_a_path_is_shown_as_text(command):
     assert "[bold]no[/bold] [/].toml: there is no such file" in done.err
 
 
-@pytest.mark.xfail(strict=True, reason="a title that the stream cannot encode ends in exit 1")
 @pytest.mark.parametrize("encoding", ["ascii", "cp1252"])
 def test_a_title_beyond_the_encoding_of_the_stream_does_not_fail_the_run(
     study_folder, tmp_path, encoding
@@ -401,9 +402,6 @@ def test_a_title_beyond_the_encoding_of_the_stream_does_not_fail_the_run(
 # ---------------------------------------------------------------- the user's own files
 
 
-@pytest.mark.xfail(
-    strict=True, reason="--out on the study's own folder overwrites fields.geojson, an input"
-)
 def test_a_run_never_overwrites_a_file_of_the_study(study_folder, command):
     import geopandas
     import pandas as pd

@@ -88,7 +88,7 @@ def test_blank_lines_are_skipped_and_line_numbers_stay_those_of_the_file(tmp_pat
         ("id\nA\n", "the column 'name' is missing"),
         ("id,name,name\nA,b,c\n", "the column 'name' comes twice"),
         ("id,name,\nA,b,\n", "the column '' is not known"),
-        ("id;name;note\nA;b;c\n", "the column 'id;name;note' is not known"),
+        ("id;name;note\nA;b;c\n", "the columns are separated by ';'"),
     ],
 )
 def test_a_spoilt_table_gives_no_rows_for_it_and_names_the_file(tmp_path, content, sentence):
@@ -129,7 +129,6 @@ def test_an_absent_file_a_folder_and_a_giant_are_refused(tmp_path):
         read_bytes(giant)
 
 
-@pytest.mark.xfail(strict=True, raises=ValueError, reason="a NUL in a path escapes as ValueError")
 def test_a_nul_in_a_path_is_refused_as_input(tmp_path):
     with pytest.raises(InputError):
         read_bytes(tmp_path / "a\0b")
@@ -165,11 +164,6 @@ def test_bad_toml_is_one_sentence_with_the_place(tmp_path, content, sentence):
     assert len(caught.value.problems) == 1
 
 
-@pytest.mark.xfail(
-    strict=True,
-    raises=ValueError,
-    reason="tomllib raises plain ValueError for integers beyond 4300 digits",
-)
 def test_a_number_of_5000_digits_is_refused_as_input(tmp_path):
     with pytest.raises(InputError):
         toml(tmp_path, "a = " + "9" * 5000)

@@ -335,7 +335,6 @@ def test_read_off_a_table_of_one_row_serves_up_to_it():
     assert np.isnan(read([[100.0, 120.0]], 1000.1, 10.0, pa=(1000.0,)))
 
 
-@pytest.mark.xfail(strict=True, reason="read_off gives a distance of 0 m for unknown air")
 def test_read_off_unknown_air_gives_no_distance():
     assert np.isnan(read([[1, 2], [3, 4]], np.nan, 10.0))
     assert np.isnan(read([[1, 2], [3, 4]], 100.0, np.nan))

@@ -241,9 +241,6 @@ def test_saturated_fog_of_days_is_not_a_stuck_humidity():
     )
 
 
-@pytest.mark.xfail(
-    strict=True, reason="a humidity that never leaves saturation is never called stuck"
-)
 def test_humidity_of_100_percent_for_two_months_is_a_broken_sensor():
     # Fog of days is weather; 100 % through sixty warm afternoons with 10 K of daily range is not.
     humidity = daily_wave(24 * 200, mean=60.0, amplitude=20.0)
@@ -320,10 +317,6 @@ def test_constant_pressure_of_a_local_month_is_rejected_to_the_last_hour():
     assert checked.loc[local_month != 3, "station_pressure_hpa"].notna().all()
 
 
-@pytest.mark.xfail(
-    strict=True,
-    reason="the last hours of a local month fall into the next month of UTC and pass as measured",
-)
 def test_constant_pressure_of_a_typical_year_month_is_rejected_to_the_last_hour():
     # Typical year at UTC-7: March is of 2001, with a default pressure; April is of 1998.
     march = flat(24 * 31, "2001-03-01 07:00", station_pressure_hpa=843.0)
@@ -454,11 +447,6 @@ def test_standard_atmosphere_fits_its_own_elevation_at_any_height_among_neighbou
         assert checks[one.id].implied_m == pytest.approx(one.elevation_m, abs=2.2)
 
 
-@pytest.mark.xfail(
-    strict=True,
-    reason="two stations wrong alike outvote the right one, although no mean sea-level pressure "
-    "is 18 hPa off the standard there",
-)
 def test_two_stations_wrong_alike_do_not_outvote_the_right_one():
     pairs = [
         at(400.0, "R"),
@@ -486,10 +474,6 @@ def test_neighbours_carry_a_mean_pressure_that_is_not_the_standard_one():
     assert checked_elevations(*pairs)[1] == {}
 
 
-@pytest.mark.xfail(
-    strict=True,
-    reason="a lone station is held against 1013.25 hPa wherever it stands and whatever the season",
-)
 @pytest.mark.parametrize(
     ("name", "latitude", "mean_sea_level_hpa"),
     [

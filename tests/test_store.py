@@ -70,7 +70,6 @@ def test_an_entry_comes_back_equal(store_folder):
     assert store.damaged == []
 
 
-@pytest.mark.xfail(strict=True, reason="parsed hours are indexed in seconds, stored ones in ms")
 def test_an_entry_keeps_the_resolution_of_its_index(store_folder):
     Store(store_folder).put(KEY, entry())
     assert Store(store_folder).get(KEY).hours.index.unit == entry().hours.index.unit == "s"

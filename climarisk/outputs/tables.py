@@ -20,6 +20,8 @@ _DECIMALS = {
     "mean": 3,
     "transfer_error": 3,
     "transfer_error_ft": 1,
+    "slope_per_decade": 4,
+    "density_altitude_ft": 1,
     **{f"density_altitude_{p}_ft": 3 for p in ("p50", "p90")},
     **{f"density_altitude_{p}_change_ft": 3 for p in ("p50", "p90")},
     **{f"p{p:02d}": 3 for p in (1, 5, 10, 25, 50, 75, 90, 95, 99)},
@@ -39,6 +41,23 @@ _SHARES = (
 )
 #: Written into the GeoPackage in place of the clock, so that the same input gives the same bytes.
 _FIXED_DATE = "2000-01-01T00:00:00.000Z"
+
+
+#: Every file that a run may write.
+OUTPUT_FILES = (
+    "map.html",
+    "distributions_monthly.csv",
+    "distributions_hourly.csv",
+    "risk_monthly.csv",
+    "risk_hourly.csv",
+    "risk_seasonal.csv",
+    "trends.csv",
+    "extremes.csv",
+    "scenarios.csv",
+    "study.json",
+    "fields.gpkg",
+    "fields.geojson",
+)
 
 
 def write_outputs(result: StudyResult, folder: Path) -> list[Path]:
@@ -69,17 +88,40 @@ def write_outputs(result: StudyResult, folder: Path) -> list[Path]:
         staging = Path(tempfile.mkdtemp(prefix=".climarisk-", dir=folder.parent))
         names = _write_all(result, staging)
         folder.mkdir(exist_ok=True)
-        for name in names:
-            (staging / name).replace(folder / name)
+        _move_in(staging, folder, names)
     except OSError as error:
         raise OutputError(
-            f"{folder}: the results cannot be written ({error.strerror or error}); nothing "
-            "was half-written. Free some space or choose another folder with --out."
+            f"{folder}: the results cannot be written ({error.strerror or error}); what was "
+            "there stands as it was. Free some space, close the files, or choose another folder "
+            "with --out."
         ) from None
     finally:
         if staging is not None:
             shutil.rmtree(staging, ignore_errors=True)
     return [folder / name for name in names]
+
+
+def _move_in(staging: Path, folder: Path, names: list[str]) -> None:
+    """Move the files into the folder; where one cannot be, put the old ones back."""
+    old = staging / "old"
+    old.mkdir()
+    for name in names:
+        if (folder / name).is_dir():
+            raise IsADirectoryError(f"{name} is a folder there")
+        if (folder / name).exists():
+            shutil.copy2(folder / name, old / name)
+    moved: list[str] = []
+    try:
+        for name in names:
+            (staging / name).replace(folder / name)
+            moved.append(name)
+    except BaseException:
+        for name in moved:
+            if (old / name).exists():
+                shutil.copy2(old / name, folder / name)
+            else:
+                (folder / name).unlink(missing_ok=True)
+        raise
 
 
 def _write_all(result: StudyResult, folder: Path) -> list[str]:
@@ -92,6 +134,8 @@ def _write_all(result: StudyResult, folder: Path) -> list[str]:
         "risk_seasonal.csv": csv_text(result.risk_seasonal),
         "study.json": json.dumps(result.provenance, indent=1, ensure_ascii=False) + "\n",
     }
+    texts["trends.csv"] = csv_text(result.trends)
+    texts["extremes.csv"] = csv_text(result.extremes)
     if result.scenarios is not None:
         texts["scenarios.csv"] = csv_text(result.scenarios)
     for name, text in texts.items():
@@ -164,6 +208,8 @@ def _write_layers(result: StudyResult, folder: Path) -> None:
     pyogrio.set_gdal_config_options({"OGR_CURRENT_DATE": _FIXED_DATE})
     try:
         layer.to_file(folder / "fields.gpkg", layer="fields", driver="GPKG")
+    except (pyogrio.errors.DataSourceError, pyogrio.errors.DataLayerError) as error:
+        raise OSError(f"fields.gpkg: {error}") from None
     finally:
         pyogrio.set_gdal_config_options({"OGR_CURRENT_DATE": None})
     features = [
