@@ -64,6 +64,7 @@ def segment_quantiles(
     cells : ndarray of int, shape (n,)
         Cell of each value, 0 to `n_cells` - 1.
     n_cells : int
+        At most 32767.
     probabilities : ndarray, shape (n_p,)
         0-1.
 
@@ -77,8 +78,8 @@ def segment_quantiles(
     Hyndman and Fan (1996), The American Statistician 50, 361-365, definition 8: position
     ``p (n + 1/3) + 1/3`` among the sorted values, linear in between, the extremes beyond.
     """
-    ordered = _sorted_within(values, cells)
     count = np.bincount(cells, minlength=n_cells)
+    ordered = _sorted_within(values, cells, count)
     start = np.concatenate(([0], np.cumsum(count)[:-1]))
     n, p = count[:, None], np.asarray(probabilities)[None, :]
     position = np.clip(p * (n + 1 / 3) + 1 / 3, 1, np.maximum(n, 1))
@@ -94,22 +95,18 @@ def segment_quantiles(
     return result
 
 
-def _sorted_within(values: np.ndarray, cells: np.ndarray) -> np.ndarray:
+def _sorted_within(values: np.ndarray, cells: np.ndarray, count: np.ndarray) -> np.ndarray:
     """The values ordered by cell and, within a cell, by size.
 
-    Cell and value are packed into one integer key, since sorting integers takes a fraction of
-    the time of an indirect sort; the value keeps 40 bits of its range, 1e-8 ft of any
-    density altitude.
+    Ordering the small cell numbers first (a radix sort) and then each cell's values in place
+    takes a fraction of the time of one indirect sort by both.
     """
-    if not len(values):
-        return values
-    low, high = float(values.min()), float(values.max())
-    steps = (2.0**40 - 1.0) / (high - low) if high > low else 0.0
-    packed = np.rint((values - low) * steps).astype(np.int64)
-    packed += cells.astype(np.int64) << 40
-    packed.sort()
-    packed &= (1 << 40) - 1
-    return low + packed / steps if steps else np.full(len(values), low)
+    ordered = values[np.argsort(cells.astype(np.int16), kind="stable")]
+    start = 0
+    for n in count:
+        ordered[start : start + n].sort()
+        start += n
+    return ordered
 
 
 def _statistics(values: np.ndarray, cells: np.ndarray, n_cells: int) -> pd.DataFrame:
@@ -133,7 +130,7 @@ def hourly_distribution(values: np.ndarray, clock: LocalClock) -> pd.DataFrame:
 
     Parameters
     ----------
-    values : ndarray, shape (n_levels, n_hours)
+    values : ndarray, shape (n_levels, n_hours) or (n_hours,)
         The variable at each level of the transfer error, one level without any; NaN where
         unknown, in all levels alike.
     clock : LocalClock
@@ -145,6 +142,7 @@ def hourly_distribution(values: np.ndarray, clock: LocalClock) -> pd.DataFrame:
         percentiles and ``transfer_error`` (one standard deviation, in the variable's unit);
         NaN in a cell for which no year counts.
     """
+    values = np.atleast_2d(values)
     complete = completeness(np.isfinite(values[0]), clock)
     used = complete.used
     table = _statistics(values[:, used], clock.month_hour[used], 288)
@@ -162,7 +160,7 @@ def monthly_distribution(values: np.ndarray, clock: LocalClock, inside: np.ndarr
 
     Parameters
     ----------
-    values : ndarray, shape (n_levels, n_hours)
+    values : ndarray, shape (n_levels, n_hours) or (n_hours,)
     clock : LocalClock
     inside : ndarray of bool, shape (n_hours,)
         The hours window.
@@ -173,6 +171,7 @@ def monthly_distribution(values: np.ndarray, clock: LocalClock, inside: np.ndarr
         As `hourly_distribution` without ``hour``; ``n_years`` are the years with an hour
         that enters, ``coverage`` the share of its (year, hour) cells that count.
     """
+    values = np.atleast_2d(values)
     complete = completeness(np.isfinite(values[0]), clock)
     used = complete.used & inside
     table = _statistics(values[:, used], clock.month[used], 12)

@@ -16,6 +16,7 @@ from climarisk.atmosphere import (
     isa_pressure_hpa,
     pressure_altitude_ft,
     relative_humidity_pct,
+    vapour_pressure_hpa,
     virtual_temperature_c,
 )
 from climarisk.climatology import hourly_distribution, monthly_distribution
@@ -56,7 +57,6 @@ from climarisk.transfer import (
     air_at_field,
     candidates,
     on_grid,
-    vapour_saturated_hpa,
     warmed,
 )
 from climarisk.transfer_error import TransferError, learn_error
@@ -310,11 +310,8 @@ def variables(
     dict of str to ndarray, shape (n_hours,)
         Keys and units of `climarisk.results.VARIABLES`; NaN where an ingredient is missing.
     """
-    known_p = np.where(
-        np.isfinite(air.pressure_hpa), air.pressure_hpa, isa_pressure_hpa(field.elevation_m)
-    )
     temperature, vapour = shifted(field, air, shift_k)
-    dew_point = dew_point_c(vapour, known_p)
+    dew_point = dew_point_c(vapour, _known_pressure(field, air))
     return {
         "density_altitude": density_altitude_ft(air.pressure_hpa, temperature, vapour),
         "pressure_altitude": pressure_altitude_ft(air.pressure_hpa),
@@ -325,12 +322,18 @@ def variables(
     }
 
 
+def _known_pressure(field: Field, air: FieldAir) -> np.ndarray:
+    """The pressure at the field; the standard one where it is unknown, for humidity alone."""
+    standard = isa_pressure_hpa(field.elevation_m)
+    return np.where(np.isfinite(air.pressure_hpa), air.pressure_hpa, standard)
+
+
 def shifted(
     field: Field, air: FieldAir, shift_k: np.ndarray | float
 ) -> tuple[np.ndarray, np.ndarray]:
     """Temperature and vapour pressure with the temperature moved and the vapour kept."""
     temperature = air.temperature_c + shift_k
-    saturated = vapour_saturated_hpa(temperature, field.elevation_m)
+    saturated = vapour_pressure_hpa(temperature, _known_pressure(field, air))
     vapour = air.vapour_pressure_hpa
     return temperature, np.where(np.equal(shift_k, 0.0), vapour, np.minimum(vapour, saturated))
 
@@ -397,7 +400,7 @@ def _risk(scene: _Scene, profile: AircraftProfile) -> _Scored:
     complete = np.isfinite(air.temperature_c) & np.isfinite(air.vapour_pressure_hpa)
     known = np.flatnonzero(complete & np.isfinite(air.pressure_hpa) & clock.in_period)
     central = margins(profile, field, _table_air(scene, known, np.zeros(len(known))))
-    levels = [central]
+    levels: list[Margins] = []
     if len(scene.shifts) > 1:
         carried = np.flatnonzero(np.isfinite(air.carried_m[known]))
         levels = [
@@ -409,11 +412,11 @@ def _risk(scene: _Scene, profile: AircraftProfile) -> _Scored:
         clock,
         known,
         central,
+        scene.inside,
+        study.confidence,
         levels,
         scene.persistence,
         scene.sd_ft[known],
-        scene.inside,
-        study.confidence,
     )
     tables = risk_tables(scored, study.seasons)
     columns = (RISK_MONTHLY_COLUMNS, RISK_HOURLY_COLUMNS, RISK_SEASONAL_COLUMNS)
@@ -439,8 +442,9 @@ def _table_air(scene: _Scene, known: np.ndarray, shift_k: np.ndarray) -> TableAi
         scene.air,
         temperature_c=scene.air.temperature_c[known],
         vapour_pressure_hpa=scene.air.vapour_pressure_hpa[known],
+        pressure_hpa=scene.air.pressure_hpa[known],
     )
-    pressure = scene.air.pressure_hpa[known]
+    pressure = chosen.pressure_hpa
     temperature, vapour = shifted(scene.field, chosen, shift_k)
     return TableAir(
         pressure_altitude_ft(pressure),

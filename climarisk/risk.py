@@ -29,26 +29,26 @@ class Hours:
         Places on the grid of the hours with a value.
     central : Margins
         Of those hours, with the air as estimated.
-    levels : sequence of Margins
-        Of those hours at each level of the transfer error, equally likely; the central
-        margins alone where there is no error.
-    persistence : float
-        Share of the variance of the transfer error that stays with a place, 0-1.
-    error_ft : ndarray, shape (n_known,)
-        Standard deviation of the density altitude from the transfer, ft.
     inside : ndarray of bool, shape (n_hours,)
         The hours window on the grid.
     confidence : float
+    levels : sequence of Margins
+        Of those hours at each level of the transfer error, equally likely; empty where there
+        is no error.
+    persistence : float
+        Share of the variance of the transfer error that stays with a place, 0-1.
+    error_ft : ndarray, shape (n_known,), or float
+        Standard deviation of the density altitude from the transfer, ft.
     """
 
     clock: LocalClock
     known: np.ndarray
     central: Margins
-    levels: Sequence[Margins]
-    persistence: float
-    error_ft: np.ndarray
     inside: np.ndarray
     confidence: float
+    levels: Sequence[Margins] = ()
+    persistence: float = 0.0
+    error_ft: np.ndarray | float = 0.0
 
 
 def year_weights(n_years: int) -> np.ndarray:
@@ -110,7 +110,8 @@ def shares_by_cell(
     DataFrame, shape (n_cells, 13)
         NaN (``limiting`` empty) where no hour enters.
     """
-    clock, n_levels = hours.clock, len(hours.levels)
+    clock, levels = hours.clock, hours.levels or (hours.central,)
+    error_ft = np.broadcast_to(hours.error_ft, len(hours.known))
     places = np.flatnonzero(pooled)
     cell, where = cells[places], hours.known[places]
     index = cell * clock.n_years + clock.year[where]
@@ -119,13 +120,13 @@ def shares_by_cell(
         return np.bincount(index, weights, n_cells * clock.n_years).reshape(n_cells, -1)
 
     total = count()
-    fallen = np.stack([count(m.shortfall[places]) for m in hours.levels], axis=-1)
+    fallen = np.stack([count(m.shortfall[places]) for m in levels], axis=-1)
     n_hours, n_years = total.sum(axis=1), (total > 0).sum(axis=1)
     some = np.where(n_hours > 0, n_hours, np.nan)
-    low, high = _intervals(fallen, total, n_years, hours)
+    low, high = _intervals(fallen, total, n_years, hours.confidence, hours.persistence)
     quantiles = segment_quantiles(
-        np.concatenate([m.margin[places] for m in hours.levels]),
-        np.tile(cell, n_levels),
+        np.concatenate([m.margin[places] for m in levels]),
+        np.tile(cell, len(levels)),
         n_cells,
         np.array([0.1, 0.5]),
     )
@@ -133,32 +134,36 @@ def shares_by_cell(
         {
             "n_hours": n_hours,
             "n_years": n_years,
-            "shortfall": fallen.sum(axis=(1, 2)) / n_levels / some,
+            "shortfall": fallen.sum(axis=(1, 2)) / len(levels) / some,
             "ci_low": low,
             "ci_high": high,
-            "outside_table": sum(count(m.outside_table[places]).sum(axis=1) for m in hours.levels)
-            / n_levels
+            "outside_table": sum(count(m.outside_table[places]).sum(axis=1) for m in levels)
+            / len(levels)
             / some,
             "limiting": _limiting(
                 cell,
-                [m.limiting[places] for m in hours.levels],
-                [m.shortfall[places] for m in hours.levels],
+                [m.limiting[places] for m in levels],
+                [m.shortfall[places] for m in levels],
                 n_cells,
             ),
             "margin_p10": quantiles[:, 0],
             "margin_p50": quantiles[:, 1],
             "days_affected": _days_affected(
-                cell, clock.day[where], [m.shortfall[places] for m in hours.levels], n_cells
+                cell, clock.day[where], [m.shortfall[places] for m in levels], n_cells
             ),
             "shortfall_central": count(hours.central.shortfall[places]).sum(axis=1) / some,
-            "transfer_error_ft": np.sqrt(count(hours.error_ft[places] ** 2).sum(axis=1) / some),
+            "transfer_error_ft": np.sqrt(count(error_ft[places] ** 2).sum(axis=1) / some),
             "interval_note": interval_notes(n_years),
         }
     )
 
 
 def _intervals(
-    fallen: np.ndarray, total: np.ndarray, n_years: np.ndarray, hours: Hours
+    fallen: np.ndarray,
+    total: np.ndarray,
+    n_years: np.ndarray,
+    confidence: float,
+    persistence: float = 0.0,
 ) -> tuple[np.ndarray, np.ndarray]:
     """Interval of each cell's share from resampling whole years; NaN below 5 years.
 
@@ -168,8 +173,9 @@ def _intervals(
     enough = n_years >= YEARS.interval
     if not enough.any():
         return low, high
+    fallen = fallen.reshape(*total.shape, -1)
     years = year_weights(total.shape[1])
-    levels = level_weights(fallen.shape[2], hours.persistence)
+    levels = level_weights(fallen.shape[2], persistence)
     both = (years[:, :, None] * levels[:, None, :]).reshape(RESAMPLES, -1)
     drawn = years @ total[enough].T
     share = both @ fallen[enough].reshape(int(enough.sum()), -1).T
@@ -178,7 +184,7 @@ def _intervals(
     gaps = np.isnan(share).any(axis=0)
     bounds = np.empty((2, share.shape[1]))
     for count in np.unique(n_years[enough]):
-        tail = expanded_tail(int(count), hours.confidence)
+        tail = expanded_tail(int(count), confidence)
         for chosen, quantile in ((~gaps, np.quantile), (gaps, np.nanquantile)):
             columns = chosen & (n_years[enough] == count)
             if columns.any():

@@ -290,7 +290,7 @@ def test_interval_of_a_month_whose_window_holds_no_known_hour_is_empty():
     margin = np.where(noon & (clock.day_of_month > 1), 0.1, np.nan)
     hours = hours_of(clock, margin)
     one = risk.Hours(
-        clock, hours.known, hours.margins, noon & (clock.day_of_month == 1), confidence=0.9
+        clock, hours.known, hours.central, noon & (clock.day_of_month == 1), confidence=0.9
     )
     monthly, _, _ = risk.risk_tables(one, [ALL_YEAR])
     assert monthly["n_hours"][0] == 0
