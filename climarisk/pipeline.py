@@ -57,6 +57,7 @@ from climarisk.transfer import (
     air_at_field,
     candidates,
     on_grid,
+    utc_month,
     warmed,
 )
 from climarisk.transfer_error import TransferError, learn_error
@@ -152,6 +153,8 @@ def evaluate(study: Study, weather: Weather, progress: Progress = quiet) -> Stud
     use = _stacked([p.station_use for p in parts])
     pressure = _stacked([p.pressure_sources for p in parts])
     _refuse_without_station(study, use, findings)
+    estimates = _stacked([p.estimate for p in parts])
+    frames = {"stations": use, "pressure_sources": pressure, "estimate": estimates}
     return StudyResult(
         title=study.title,
         fields=study.fields,
@@ -164,12 +167,12 @@ def evaluate(study: Study, weather: Weather, progress: Progress = quiet) -> Stud
         risk_seasonal=_stacked([p.risk_seasonal for p in parts]),
         station_use=use,
         pressure_sources=pressure,
-        estimates=_stacked([p.estimate for p in parts]),
+        estimates=estimates,
         trends=_stacked([p.trends for p in parts]),
         extremes=_stacked([p.extremes for p in parts]),
         attributions=tuple(dict.fromkeys(a for s in weather.stations for a in s.sources)),
         findings=findings,
-        provenance=provenance(study, weather, use, pressure, findings),
+        provenance=provenance(study, weather, stations, frames, findings),
     )
 
 
@@ -191,12 +194,13 @@ def _stations_on_grid(
     study: Study, weather: Weather, grid: np.ndarray
 ) -> tuple[list[StationAir], list[Finding]]:
     """Stations on the study's hours; those whose dates look wrong or that have gaps told."""
-    airs = [on_grid(s.station, s.hours, grid, s.elevation_trusted) for s in weather.stations]
-    utc_month = (grid // 24).astype("datetime64[D]").astype("datetime64[M]").astype(int) % 12
+    airs = [
+        on_grid(s.station, s.hours, grid, s.elevation_trusted, s.derived) for s in weather.stations
+    ]
     wrong = misdated(
         [a.station for a in airs],
         [a.temperature_c for a in airs],
-        utc_month * 24 + grid % 24,
+        utc_month(grid) * 24 + grid % 24,
     )
     marked = [replace(a, timing_trusted=a.station.id not in wrong) for a in airs]
     findings = timing_findings(wrong)

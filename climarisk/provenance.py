@@ -2,16 +2,18 @@
 
 from __future__ import annotations
 
-from collections.abc import Sequence
+from collections.abc import Mapping, Sequence
 from importlib.metadata import PackageNotFoundError, version
 from typing import Any
 
+import numpy as np
 import pandas as pd
 
 from climarisk.findings import Finding
 from climarisk.inputs import read_bytes, sha256
 from climarisk.rules import rules
 from climarisk.study import Study
+from climarisk.transfer import StationAir
 from climarisk.weather import StationHours, Weather, relative_name
 
 #: Statement of the method in the provenance and the page.
@@ -36,8 +38,8 @@ def program_version() -> str:
 def provenance(
     study: Study,
     weather: Weather,
-    use: pd.DataFrame,
-    pressure: pd.DataFrame,
+    airs: Sequence[StationAir],
+    frames: Mapping[str, pd.DataFrame],
     findings: Sequence[Finding],
 ) -> dict[str, Any]:
     """The content of ``study.json``: JSON-ready, with no clock and no absolute path.
@@ -46,10 +48,10 @@ def provenance(
     ----------
     study : Study
     weather : Weather
-    use : DataFrame
-        Stations used at each field; columns `climarisk.results.STATION_USE_COLUMNS`.
-    pressure : DataFrame
-        Columns ``field, source, share``.
+    airs : sequence of StationAir
+        The stations on the study's hours.
+    frames : mapping of str to DataFrame
+        ``stations`` used at each field, ``pressure_sources`` and ``estimate``, as in the result.
     findings : sequence of Finding
     """
     return {
@@ -71,25 +73,44 @@ def provenance(
                 "longitude": field.longitude,
                 "elevation_m": round(field.elevation_m, 2),
                 "timezone": field.timezone,
-                "stations": _used(use, field.id),
+                "stations": _of_field(frames["stations"], field.id),
                 "pressure_sources": {
-                    row.source: round(row.share, 6)
-                    for row in pressure[pressure["field"] == field.id].itertuples()
+                    row["source"]: row["share"]
+                    for row in _of_field(frames["pressure_sources"], field.id)
                 },
+                "estimate": _of_field(frames["estimate"], field.id)[0],
             }
             for field in study.fields
         ],
-        "stations": [_station(s, study) for s in weather.stations],
+        "stations": [
+            {**_station(s, study), "sea_level_calibration": _calibration(air)}
+            for s, air in zip(weather.stations, airs, strict=True)
+        ],
         "findings": [f.as_dict() for f in findings],
     }
 
 
-def _used(use: pd.DataFrame, field: str) -> list[dict[str, Any]]:
-    rows = use[use["field"] == field].drop(columns="field")
+def _of_field(frame: pd.DataFrame, field: str) -> list[dict[str, Any]]:
+    rows = frame[frame["field"] == field].drop(columns="field")
     return [
-        {k: round(v, 4) if isinstance(v, float) else v for k, v in row.items()}
+        {k: round(v, 6) if isinstance(v, float) else v for k, v in row.items()}
         for row in rows.to_dict("records")
     ]
+
+
+def _calibration(air: StationAir) -> dict[str, Any] | None:
+    """The fitted inverse of a station's sea-level pressure and what it leaves, if there is one."""
+    if air.calibration is None:
+        return None
+    residual = air.calibration.residual_sd_hpa(
+        air.pressure_hpa[np.isfinite(air.pressure_hpa)].mean()
+    )
+    return {
+        "overlap_hours": int(air.calibration.n_hours[-1]),
+        "residual_sd_hpa": [
+            round(float(sd), 3) if np.isfinite(sd) else None for sd in np.atleast_1d(residual)
+        ],
+    }
 
 
 def _station(item: StationHours, study: Study) -> dict[str, Any]:

@@ -13,16 +13,19 @@ from climarisk.atmosphere import P0_HPA
 from climarisk.clock import LocalClock
 from climarisk.fields import STEEP_SLOPE_PCT, Field
 from climarisk.findings import Finding
+from climarisk.pressure import (
+    NO_PRESSURE,
+    SEA_LEVEL_LIMIT_M,
+    SEA_LEVEL_PLAIN_M,
+    SOURCES,
+    pressure_error_ft,
+)
 from climarisk.results import ESTIMATE_COLUMNS, STATION_USE_COLUMNS
 from climarisk.rules import MONTH, YEARS, patchy_months
 from climarisk.study import Study
 from climarisk.transfer import (
     MAXIMUM_HEIGHT_DIFFERENCE_M,
-    NO_PRESSURE,
-    PRESSURE_SOURCES,
     REGION_KM,
-    SEA_LEVEL_CAUTION_M,
-    SEA_LEVEL_LIMIT_M,
     Candidate,
     FieldAir,
     StationAir,
@@ -91,7 +94,7 @@ def _main_pressure(c: Candidate, clock: LocalClock) -> str:
     kinds = kinds[kinds != NO_PRESSURE]
     if not len(kinds):
         return "none"
-    return PRESSURE_SOURCES[int(np.bincount(kinds).argmax())]
+    return SOURCES[int(np.bincount(kinds).argmax())]
 
 
 def estimate(
@@ -103,16 +106,20 @@ def estimate(
     carried = known & ~own
     used = (air.share[:, carried] > 0).any(axis=1) if len(chosen) else np.zeros(0, bool)
 
-    def typical(values: np.ndarray) -> float:
-        values = values[carried & np.isfinite(values)]
-        return float(np.sqrt((values**2).mean())) if len(values) else 0.0
-
+    complete = known & np.isfinite(air.pressure_hpa) & np.isfinite(air.vapour_pressure_hpa)
+    pressure_ft = pressure_error_ft(
+        air.pressure_error_hpa[complete],
+        air.pressure_hpa[complete],
+        air.temperature_c[complete],
+        air.vapour_pressure_hpa[complete],
+    )
     row = (
         field.id,
         float(own.sum() / max(known.sum(), 1)),
         int(used.sum()),
-        typical(error.sd_k),
-        typical(error.sd_ft),
+        _typical(error.sd_k[carried]),
+        _typical(error.sd_ft[carried]),
+        _typical(np.asarray(pressure_ft)),
         error.lapse_stations,
         error.verified_stations,
     )
@@ -123,8 +130,8 @@ def pressure_shares(field: Field, air: FieldAir, clock: LocalClock) -> pd.DataFr
     """Share of the field's hours with a pressure from each source; ``field, source, share``."""
     sources = air.pressure_source[clock.in_period]
     sources = sources[sources != NO_PRESSURE]
-    share = np.bincount(sources, minlength=len(PRESSURE_SOURCES)) / max(len(sources), 1)
-    rows = [(field.id, s, float(x)) for s, x in zip(PRESSURE_SOURCES, share, strict=True) if x > 0]
+    share = np.bincount(sources, minlength=len(SOURCES)) / max(len(sources), 1)
+    rows = [(field.id, s, float(x)) for s, x in zip(SOURCES, share, strict=True) if x > 0]
     return pd.DataFrame(rows, columns=["field", "source", "share"])
 
 
@@ -251,34 +258,39 @@ def _pressure_texts(
     field: Field, chosen: Sequence[Candidate], stations: Sequence[StationAir], air: FieldAir
 ) -> list[str]:
     texts = []
-    inverted = PRESSURE_SOURCES.index("sea-level pressure")
-    climatological = PRESSURE_SOURCES.index("climatological")
+    inverted = SOURCES.index("sea-level pressure")
     if (air.pressure_source == inverted).any():
-        high = [
-            c.air.station
+        texts += [
+            f"the pressure of {c.air.station.id} ({c.air.station.elevation_m:.0f} m) is sea-level "
+            f"pressure inverted with an assumed temperature, good to "
+            f"{_typical(c.air.pressure_error_hpa):.1f} hPa; above {SEA_LEVEL_PLAIN_M:.0f} m that "
+            "is a caution."
             for c in chosen
-            if c.air.station.elevation_m > SEA_LEVEL_CAUTION_M
+            if c.air.station.elevation_m > SEA_LEVEL_PLAIN_M
             and (c.air.pressure_source == inverted).any()
         ]
-        texts += [
-            f"the pressure of {s.id} ({s.elevation_m:.0f} m) is sea-level pressure inverted with "
-            f"an assumed temperature; above {SEA_LEVEL_CAUTION_M:.0f} m the error grows to "
-            "hundreds of feet in the extremes."
-            for s in high
-        ]
-    if (air.pressure_source == climatological).any():
+    stand_in = (air.pressure_source > inverted) & (air.pressure_source != NO_PRESSURE)
+    if stand_in.any():
         measured = [s.station.id for s, _ in measured_around(field, stations)]
         what = (
-            f"the mean QNH of the month at {', '.join(measured)}"
+            f"the QNH of {', '.join(measured)}: the mean of the month, with the day's anomaly "
+            "where they report"
             if measured
             else f"the standard {P0_HPA} hPa, no station within {REGION_KM:.0f} km having any"
         )
         texts.append(
-            f"the pressure of some or all months is climatological, {what}: single days can "
-            f"be off by some 150 ft. Default values, sea-level pressure above "
+            f"some or all months have no pressure of the field's stations; in its place stands "
+            f"{what}, good to {_typical(air.pressure_error_hpa[stand_in]):.1f} hPa (about 33 ft "
+            f"each). Default values, uncalibrated sea-level pressure above "
             f"{SEA_LEVEL_LIMIT_M:.0f} m and stations of doubtful elevation are not used."
         )
     return texts
+
+
+def _typical(values: np.ndarray) -> float:
+    """Root mean square of the known values; 0 without any."""
+    known = values[np.isfinite(values)]
+    return float(np.sqrt((known**2).mean())) if len(known) else 0.0
 
 
 def evidence_findings(

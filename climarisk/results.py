@@ -75,6 +75,7 @@ ESTIMATE_COLUMNS = [
     "stations",  # stations its other hours are estimated from
     "transfer_error_k",  # one standard deviation of the estimated temperature
     "transfer_error_ft",  # the same in density altitude
+    "pressure_error_ft",  # one standard deviation of the pressure, in density altitude
     "lapse_stations",  # stations the lapse was fitted from; 0: the day/night table
     "verified_stations",  # stations hidden to learn the error; 0: planning values
 ]
@@ -103,7 +104,7 @@ class StudyResult:
         Columns `STATION_USE_COLUMNS`.
     pressure_sources : DataFrame
         Columns ``field, source, share``: which share of a field's hours has its pressure
-        from what (``station pressure``, ``QNH``, ``sea-level pressure``, ``climatological``).
+        from what (see `climarisk.pressure.SOURCES`).
     estimates : DataFrame
         Columns `ESTIMATE_COLUMNS`.
     trends, extremes : DataFrame

@@ -9,29 +9,33 @@ import numpy as np
 import pandas as pd
 
 from climarisk.atmosphere import (
-    P0_HPA,
+    G0,
+    R_DRY,
     hypsometric_pressure_hpa,
     isa_pressure_hpa,
-    qnh_from_station_pressure_hpa,
-    station_pressure_from_qnh_hpa,
-    station_pressure_from_sea_level_hpa,
     vapour_pressure_hpa,
     virtual_temperature_k,
 )
 from climarisk.clock import LocalClock
 from climarisk.fields import Field
 from climarisk.lapse import Lapse
+from climarisk.pressure import (
+    NO_PRESSURE,
+    SOURCES,
+    RegionalQnh,
+    StationPressure,
+    climatological_pressure,
+    climatological_qnh,
+    qnh_at_height_hpa,
+    station_pressure,
+)
+from climarisk.reduction import Calibration
 from climarisk.stations import Station, distance_km
+from climarisk.transfer_error import planning_sd_k
+from climarisk.units import KELVIN_AT_0C
 
-#: Where an hour's pressure comes from, in order of preference (METHODS D2).
-PRESSURE_SOURCES = ("station pressure", "QNH", "sea-level pressure", "climatological")
-NO_PRESSURE = 255
-_INVERTED = PRESSURE_SOURCES.index("sea-level pressure")
-
-#: Sea-level pressure is inverted with a caution above the first elevation, m, and not used
-#: above the second: the temperature that the reduction used is not known, and each kelvin
-#: costs 6 ft of density altitude at 500 m and 19 ft at 1500 m.
-SEA_LEVEL_CAUTION_M, SEA_LEVEL_LIMIT_M = 500.0, 1500.0
+#: Kinds of pressure below this index into `SOURCES` rest on the station's own barometer.
+_INVERTED = SOURCES.index("sea-level pressure")
 #: A station more than this above or below the field is not used for it.
 MAXIMUM_HEIGHT_DIFFERENCE_M = 1000.0
 #: Climatological QNH comes from stations within this distance of the field.
@@ -48,6 +52,15 @@ ON_SPOT_KM, ON_SPOT_M = 3.0, 15.0
 #: Weights fall as 1 / (d + 5 km) and exp(-(dz / 500 m)^2); at most eight stations are used.
 #: Chosen by hiding real mountain stations in turn: the optimum is flat (d^-2 costs 0.02 K).
 _WEIGHT_KM, _WEIGHT_HEIGHT_M, MOST_STATIONS = 5.0, 500.0, 8
+#: A station at any height counts a little for the QNH of the region.
+_LEAST_WEIGHT = 1e-6
+_COLUMNS = (
+    "temperature_c",
+    "dew_point_c",
+    "station_pressure_hpa",
+    "qnh_hpa",
+    "sea_level_pressure_hpa",
+)
 
 
 @dataclass(frozen=True)
@@ -60,7 +73,11 @@ class StationAir:
     temperature_c, vapour_pressure_hpa, pressure_hpa : ndarray, shape (n_hours,)
         NaN where unknown; ``pressure_hpa`` is the pressure at the station.
     pressure_source : ndarray of uint8, shape (n_hours,)
-        Index into `PRESSURE_SOURCES`; `NO_PRESSURE` where there is none.
+        Index into `climarisk.pressure.SOURCES`; `NO_PRESSURE` where there is none.
+    pressure_error_hpa : ndarray, shape (n_hours,)
+        One standard deviation of ``pressure_hpa``.
+    calibration : Calibration or None
+        The inverse fitted to the station's sea-level pressure, if there is one.
     elevation_trusted : bool
         False: nothing may be carried from it to another elevation.
     timing_trusted : bool
@@ -72,6 +89,8 @@ class StationAir:
     vapour_pressure_hpa: np.ndarray
     pressure_hpa: np.ndarray
     pressure_source: np.ndarray
+    pressure_error_hpa: np.ndarray
+    calibration: Calibration | None = None
     elevation_trusted: bool = True
     timing_trusted: bool = True
 
@@ -113,7 +132,9 @@ class FieldAir:
         Weighted height over which the temperature was carried; NaN where the field's own
         station gave it.
     pressure_source : ndarray of uint8, shape (n_hours,)
-        Index into `PRESSURE_SOURCES`; `NO_PRESSURE` where there is none.
+        Index into `climarisk.pressure.SOURCES`; `NO_PRESSURE` where there is none.
+    pressure_error_hpa : ndarray, shape (n_hours,)
+        One standard deviation of ``pressure_hpa``.
     """
 
     temperature_c: np.ndarray
@@ -122,10 +143,15 @@ class FieldAir:
     share: np.ndarray
     carried_m: np.ndarray
     pressure_source: np.ndarray
+    pressure_error_hpa: np.ndarray
 
 
 def on_grid(
-    station: Station, hours: pd.DataFrame, grid: np.ndarray, elevation_trusted: bool = True
+    station: Station,
+    hours: pd.DataFrame,
+    grid: np.ndarray,
+    elevation_trusted: bool = True,
+    derived: np.ndarray | None = None,
 ) -> StationAir:
     """A station's checked hours on the grid, with its pressure from the best kind it has.
 
@@ -138,59 +164,43 @@ def on_grid(
         Consecutive UTC hours since 1970.
     elevation_trusted : bool
         False: the station's pressure is not used.
+    derived : ndarray of bool, shape (n_rows,), optional
+        Rows of `hours` whose station pressure was made from sea-level pressure.
     """
     index = hours.index.as_unit("s").asi8 // 3600 - grid[0]
     inside = (index >= 0) & (index < len(grid))
 
-    def column(name: str) -> np.ndarray:
-        values = np.full(len(grid), np.nan)
-        values[index[inside]] = hours[name].to_numpy()[inside]
-        return values
+    def column(values: np.ndarray, empty: float = np.nan) -> np.ndarray:
+        spread = np.full(len(grid), empty)
+        spread[index[inside]] = values[inside]
+        return spread
 
-    temperature, dew_point = column("temperature_c"), column("dew_point_c")
-    pressure = np.full(len(grid), np.nan)
-    source = np.full(len(grid), NO_PRESSURE, np.uint8)
+    columns = {name: column(hours[name].to_numpy()) for name in _COLUMNS}
+    made = None if derived is None else column(derived.astype(float), 0.0) > 0
+    nothing = np.full(len(grid), np.nan)
+    pressure = StationPressure(nothing, np.full(len(grid), NO_PRESSURE, np.uint8), nothing)
     if elevation_trusted:
-        z = station.elevation_m
-        kinds = [
-            column("station_pressure_hpa"),
-            station_pressure_from_qnh_hpa(column("qnh_hpa"), z),
-        ]
-        if z <= SEA_LEVEL_LIMIT_M:
-            kinds.append(
-                _from_sea_level(column("sea_level_pressure_hpa"), z, temperature, dew_point)
-            )
-        for kind, values in enumerate(kinds):
-            take = np.isnan(pressure) & np.isfinite(values)
-            pressure[take], source[take] = values[take], kind
-    known = np.where(np.isfinite(pressure), pressure, isa_pressure_hpa(station.elevation_m))
+        pressure = station_pressure(station, columns, utc_month(grid), derived=made)
+    known = np.where(
+        np.isfinite(pressure.pressure_hpa),
+        pressure.pressure_hpa,
+        isa_pressure_hpa(station.elevation_m),
+    )
     return StationAir(
         station,
-        temperature,
-        vapour_pressure_hpa(dew_point, known),
-        pressure,
-        source,
+        columns["temperature_c"],
+        vapour_pressure_hpa(columns["dew_point_c"], known),
+        pressure.pressure_hpa,
+        pressure.source,
+        pressure.error_hpa,
+        pressure.calibration,
         elevation_trusted,
     )
 
 
-def _from_sea_level(
-    sea_level_hpa: np.ndarray,
-    elevation_m: float,
-    temperature_c: np.ndarray,
-    dew_point_c: np.ndarray,
-) -> np.ndarray:
-    """Station pressure from sea-level pressure with the mean temperature of now and 12 h ago.
-
-    Where the temperature 12 h ago is missing the present one stands in; where the dew point
-    is missing there is no value.
-    """
-    earlier = np.full(len(temperature_c), np.nan)
-    earlier[12:] = temperature_c[:-12]
-    mean = np.where(np.isfinite(earlier), (temperature_c + earlier) / 2, temperature_c)
-    return station_pressure_from_sea_level_hpa(
-        sea_level_hpa, elevation_m, mean, vapour_pressure_hpa(dew_point_c)
-    )
+def utc_month(grid: np.ndarray) -> np.ndarray:
+    """Calendar month of each hour of the grid, 0-11, by UTC."""
+    return (grid // 24).astype("datetime64[D]").astype("datetime64[M]").astype(int) % 12
 
 
 def candidates(field: Field, stations: Sequence[StationAir], radius_km: float) -> list[Candidate]:
@@ -281,9 +291,17 @@ def air_at_field(
     carried_m = np.where(carried, heights @ share, np.nan)
     saturation = vapour_saturated_hpa(temperature, field.elevation_m)
     vapour = np.where(from_own, vapour, np.minimum(vapour, saturation))
-    pressure, source = _pressure(field, chosen, temperature, vapour)
-    _fill_climatological(field, region, clock, temperature, pressure, source)
-    return FieldAir(temperature, vapour, pressure, share, carried_m, source)
+    pressure = _pressure(field, chosen, temperature, vapour)
+    _fill_climatological(field, region, clock, temperature, pressure)
+    return FieldAir(
+        temperature,
+        vapour,
+        pressure.pressure_hpa,
+        share,
+        carried_m,
+        pressure.source,
+        pressure.error_hpa,
+    )
 
 
 def warmed(air: FieldAir, warmer_k: float, holds: str, elevation_m: float) -> FieldAir:
@@ -339,12 +357,13 @@ def vapour_saturated_hpa(temperature_c: np.ndarray, elevation_m: float) -> np.nd
 
 def _pressure(
     field: Field, chosen: Sequence[Candidate], temperature: np.ndarray, vapour: np.ndarray
-) -> tuple[np.ndarray, np.ndarray]:
-    """Pressure at the field from its candidates by hypsometry, and the source of each hour."""
-    pressure = np.full(len(temperature), np.nan)
-    source = np.full(len(temperature), NO_PRESSURE, np.uint8)
+) -> StationPressure:
+    """Pressure at the field from its candidates by hypsometry, with source and error."""
+    n = len(temperature)
+    pressure, error = np.full(n, np.nan), np.full(n, np.nan)
+    source = np.full(n, NO_PRESSURE, np.uint8)
     for from_sea_level in (False, True):
-        carried = np.full((len(chosen), len(temperature)), np.nan)
+        carried = np.full((len(chosen), n), np.nan)
         for i, c in enumerate(chosen):
             take = np.isfinite(c.air.pressure_hpa)
             take &= (c.air.pressure_source == _INVERTED) == from_sea_level
@@ -353,13 +372,27 @@ def _pressure(
         # The logarithm, since pressure falls exponentially with height.
         mean, share = _blend(np.log(carried), chosen)
         take = np.isnan(pressure) & np.isfinite(mean)
+        if not take.any():
+            continue
         pressure[take] = np.exp(mean[take])
-        if take.any():
-            leading = share[:, take].argmax(axis=0)
-            kinds = np.array([c.air.pressure_source[take] for c in chosen])
-            source[take] = kinds[leading, np.arange(leading.size)]
+        leading = share[:, take].argmax(axis=0)
+        kinds = np.array([c.air.pressure_source[take] for c in chosen])
+        source[take] = kinds[leading, np.arange(leading.size)]
+        squares = [_carried_error_hpa(c, carried[i]) ** 2 for i, c in enumerate(chosen)]
+        error[take] = np.sqrt((share * np.nan_to_num(np.array(squares))).sum(axis=0)[take])
         _keep_own(chosen, carried, pressure, take)
-    return pressure, source
+    return StationPressure(pressure, source, error)
+
+
+def _carried_error_hpa(c: Candidate, carried_hpa: np.ndarray) -> np.ndarray:
+    """Error of a candidate's carried pressure: its own, and that of the column's temperature.
+
+    One end of the column is measured, the other carried: half the planning error of its mean.
+    """
+    column_k = planning_sd_k(np.abs(c.height_difference_m)) / 2 if c.height_difference_m else 0.0
+    kelvin = c.air.temperature_c + KELVIN_AT_0C
+    per_kelvin = G0 * np.abs(c.height_difference_m) * carried_hpa / (R_DRY * kelvin**2)
+    return np.hypot(c.air.pressure_error_hpa, np.nan_to_num(per_kelvin) * column_k)
 
 
 def _keep_own(
@@ -395,22 +428,22 @@ def _fill_climatological(
     region: Sequence[StationAir],
     clock: LocalClock,
     temperature: np.ndarray,
-    pressure: np.ndarray,
-    source: np.ndarray,
+    pressure: StationPressure,
 ) -> None:
     """Fill, in place, the calendar months that have no pressure at all."""
-    known = np.isfinite(pressure) & clock.in_period
+    known = np.isfinite(pressure.pressure_hpa) & clock.in_period
     has_pressure = np.bincount(clock.month[known], minlength=12) > 0
     empty = ~has_pressure[clock.month] & np.isfinite(temperature) & clock.in_period
     if not empty.any():
         return
-    qnh = climatological_qnh_hpa(field, region, clock)[clock.month[empty]]
-    pressure[empty] = station_pressure_from_qnh_hpa(qnh, field.elevation_m)
-    source[empty] = PRESSURE_SOURCES.index("climatological")
+    stand_in = climatological_pressure(field.elevation_m, regional_qnh(field, region, clock))
+    pressure.pressure_hpa[empty] = stand_in.pressure_hpa[empty]
+    pressure.source[empty] = stand_in.source[empty]
+    pressure.error_hpa[empty] = stand_in.error_hpa[empty]
 
 
 def measured_around(field: Field, region: Sequence[StationAir]) -> list[tuple[StationAir, float]]:
-    """Stations within 500 km that have a measured station pressure or QNH, and how far, km."""
+    """Stations within 500 km that have a pressure of their own, and how far they are, km."""
     found = []
     for air in region:
         s = air.station
@@ -420,24 +453,34 @@ def measured_around(field: Field, region: Sequence[StationAir]) -> list[tuple[St
     return found
 
 
-def climatological_qnh_hpa(
-    field: Field, region: Sequence[StationAir], clock: LocalClock
-) -> np.ndarray:
-    """Monthly mean QNH around a field, hPa, shape (12,).
+def regional_qnh(field: Field, region: Sequence[StationAir], clock: LocalClock) -> RegionalQnh:
+    """QNH at a field without a pressure: the region's monthly means and the day's anomalies.
 
-    The weighted mean (weights as for the candidates) of the monthly means of the stations
-    within 500 km that have a measured pressure; 1013.25 hPa for a month without any.
+    Each station's pressure is carried to the field's height first, with the mean of its
+    temperatures now and 12 h ago.
+
+    Parameters
+    ----------
+    field : Field
+    region : sequence of StationAir
+    clock : LocalClock
     """
-    total, weights = np.zeros(12), np.zeros(12)
+    rows, weights = [], []
     for air, distance in measured_around(field, region):
         s = air.station
-        measured = (air.pressure_source < _INVERTED) & clock.in_period
-        if not measured.any():
-            continue
-        qnh = qnh_from_station_pressure_hpa(air.pressure_hpa[measured], s.elevation_m)
-        count = np.bincount(clock.month[measured], minlength=12)
-        mean = np.bincount(clock.month[measured], qnh, minlength=12) / np.maximum(count, 1)
-        weight = _weight(distance, field.elevation_m - s.elevation_m) * (count > 0)
-        total += weight * mean
-        weights += weight
-    return np.where(weights > 0, total / np.where(weights > 0, weights, 1.0), P0_HPA)
+        own = np.where(
+            (air.pressure_source < _INVERTED) & clock.in_period, air.pressure_hpa, np.nan
+        )
+        earlier = np.concatenate((np.full(12, np.nan), air.temperature_c[:-12]))
+        column_c = np.where(
+            np.isfinite(earlier), (air.temperature_c + earlier) / 2, air.temperature_c
+        )
+        rows.append(
+            qnh_at_height_hpa(
+                own, s.elevation_m, field.elevation_m, column_c, air.vapour_pressure_hpa
+            )
+        )
+        weights.append(max(_weight(distance, field.elevation_m - s.elevation_m), _LEAST_WEIGHT))
+    return climatological_qnh(
+        np.array(rows).reshape(-1, len(clock.month)), np.array(weights), clock.month
+    )

@@ -6,6 +6,7 @@ import os
 from dataclasses import dataclass
 from pathlib import Path
 
+import numpy as np
 import pandas as pd
 
 from climarisk.archives import FORMATS, parse_archive
@@ -15,6 +16,7 @@ from climarisk.findings import Finding, Severity
 from climarisk.inputs import sha256
 from climarisk.localtime import standard_offset_s, timezone_at
 from climarisk.observations import ArchiveFile, join_files
+from climarisk.pressure_kind import derived_hours, kind_findings
 from climarisk.progress import Progress
 from climarisk.quality import ElevationCheck, check_elevations, control
 from climarisk.stations import RawStation, Station, distance_km
@@ -39,6 +41,8 @@ class StationHours:
     elevation_trusted : bool
         False: its pressure and elevation are not used.
     elevation : ElevationCheck or None
+    derived : ndarray of bool, shape (n_rows,)
+        Hours whose station pressure was made from sea-level pressure.
     hashes : tuple of (str, str)
     sources : tuple of str
         Publisher, licence, attribution.
@@ -48,6 +52,7 @@ class StationHours:
     hours: pd.DataFrame
     elevation_trusted: bool
     elevation: ElevationCheck | None
+    derived: np.ndarray
     hashes: tuple[tuple[str, str], ...]
     sources: tuple[str, ...]
 
@@ -97,6 +102,15 @@ def load_weather(
     checks, found = check_elevations([item.station for item in raw], tables)
     findings += found
     rejected = {f.id for f in found if f.severity == "reject"}
+    trusted = [
+        (item.station, table)
+        for item, table in zip(raw, tables, strict=True)
+        if item.station.id not in rejected
+    ]
+    for station, table in trusted:
+        findings += kind_findings(
+            station, table, [pair for pair in trusted if pair[0] is not station]
+        )
     return Weather(
         tuple(
             StationHours(
@@ -104,6 +118,7 @@ def load_weather(
                 table,
                 item.station.id not in rejected,
                 checks.get(item.station.id),
+                derived_hours(item.station, table),
                 item.hashes,
                 tuple(dict.fromkeys(f.source for f in item.files)),
             )
@@ -201,7 +216,7 @@ def _synthetic(study: Study, progress: Progress) -> list[RawStation]:
     invented = []
     for s in study.stations:
         zone = s.timezone or timezone_at(s.latitude, s.longitude)
-        offset_h = float(standard_offset_s(zone, pd.Series([0.0]).to_numpy())[0]) / 3600.0
+        offset_h = float(standard_offset_s(zone, np.zeros(1))[0]) / 3600.0
         invented.append(
             SyntheticStation(s.id, s.name, s.latitude, s.longitude, s.elevation_m, offset_h)
         )

@@ -58,17 +58,26 @@ def study_of(folder: Path, stations: list[tuple], fields: str = "") -> Study:
     return read_study(folder / "study.toml")
 
 
-def weather_of(study: Study, temperatures_c: list[np.ndarray], vapour_hpa=None) -> Weather:
+def weather_of(study: Study, temperatures_c: list[np.ndarray]) -> Weather:
     """Weather that is exactly what is given, without quality control."""
     stations = []
     for station, temperature in zip(study.stations, temperatures_c, strict=True):
         pressure = isa_pressure_hpa(station.elevation_m)
         decayed = np.exp(-VAPOUR_DECAY_PER_KM[MONTH] * station.elevation_m / 1000.0)
-        vapour = (5.0 if vapour_hpa is None else vapour_hpa) * decayed
         table = pd.DataFrame(np.nan, index=TIMES, columns=list(COLUMNS))
         table["temperature_c"] = temperature
-        table["dew_point_c"] = dew_point_c(vapour, pressure)
-        stations.append(StationHours(station, table, True, None, (), ("invented",)))
+        table["dew_point_c"] = dew_point_c(5.0 * decayed, pressure)
+        stations.append(
+            StationHours(
+                station=station,
+                hours=table,
+                elevation_trusted=True,
+                elevation=None,
+                derived=np.zeros(len(table), bool),
+                hashes=(),
+                sources=("invented",),
+            )
+        )
     return Weather(tuple(stations), ())
 
 
@@ -204,6 +213,36 @@ def test_verify_of_known_noise_finds_its_size_and_covers_as_stated(tmp_path):
         # Blending smooths, so the central 90th percentile comes out too low.
         assert found["cell_p90_bias_k_central"] < -0.1
         assert found["cell_p90_bias_k"] > found["cell_p90_bias_k_central"]
+
+
+def test_the_interval_of_a_station_comes_from_the_others_alone(tmp_path):
+    # Two quiet neighbours and a restless station 60 km off.  The neighbours' errors are below
+    # 1 K, its own is 4 K: an interval that knew of them would hold most of its hours.
+    places = [("A", 46.5, 11.0, 600), ("B", 46.52, 11.05, 600), ("C", 46.5, 11.8, 600)]
+    study = study_of(tmp_path, places)
+    draw = np.random.default_rng(2)
+    base = daily_weather()
+    restless = base + draw.normal(0.0, 4.0, len(GRID))
+    quiet_air = [base + draw.normal(0.0, 0.2, len(GRID)) for _ in "AB"]
+    report = verify_study(study, weather_of(study, [*quiet_air, restless]))
+    assert row(report.scores, station="C")["coverage_80"] < 0.4
+    assert row(report.scores, station="A")["coverage_80"] > 0.95
+
+
+def test_the_reference_is_the_nearest_station_that_reports_unadjusted(tmp_path):
+    # The nearest in distance is 500 m lower, so it weighs less; it is silent before July.
+    places = [("X", 46.5, 11.0, 900), ("NEAR", 46.51, 11.05, 400), ("NEXT", 46.5, 11.2, 800)]
+    study = study_of(tmp_path, places)
+    base = daily_weather()
+    near = np.where(MONTH >= 6, base - 1.0, np.nan)
+    report = verify_study(study, weather_of(study, [base - 6.0, near, base - 4.5]))
+    first = row(report.scores, "month", "03", station="X")
+    second = row(report.scores, "month", "09", station="X")
+    assert first["mae_nearest_k"] == pytest.approx(1.5)
+    assert second["mae_nearest_k"] == pytest.approx(5.0)
+    # At 6.5 K/km NEXT alone gives base - 4.5 - 0.65.
+    assert first["mae_fixed_k"] == pytest.approx(0.85)
+    assert row(report.scores, "height", "100-300 m", station="X")["n_hours"] > 0
 
 
 def test_a_misdated_station_is_singled_out_and_left_out_of_the_mean(tmp_path):
