@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Callable, Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, field
 
 import numpy as np
 
@@ -11,6 +11,9 @@ from climarisk.aircraft import AircraftProfile, PerformanceTable
 from climarisk.atmosphere import RHO0, moist_density
 from climarisk.fields import Field, RunwayDirection
 from climarisk.units import FEET_PER_NAUTICAL_MILE
+
+#: Cell of each value on an axis, the share of the way through it, and whether it lies beyond.
+_Place = tuple[np.ndarray, np.ndarray, np.ndarray]
 
 #: Checks in their fixed order; the limits come last.
 CHECKS = (
@@ -77,6 +80,17 @@ class TableAir:
     temperature_c: np.ndarray
     density_altitude_ft: np.ndarray
     density_ratio: np.ndarray
+    _places: dict[bytes, tuple[_Place, _Place]] = field(default_factory=dict, repr=False)
+
+    def on_axes(self, table: PerformanceTable) -> tuple[_Place, _Place]:
+        """Where the hours lie on a table's axes; most tables of a profile share theirs."""
+        key = table.pressure_altitude_ft.tobytes() + b"|" + table.temperature_c.tobytes()
+        if key not in self._places:
+            self._places[key] = (
+                _place(table.pressure_altitude_ft, self.pressure_altitude_ft),
+                _place(table.temperature_c, self.table_temperature_c),
+            )
+        return self._places[key]
 
 
 @dataclass(frozen=True)
@@ -128,18 +142,24 @@ def read_off(
     -------
     ndarray, shape (n,)
     """
-    grid = table.values[quantity]
-    i, u, beyond_u = _place(table.pressure_altitude_ft, pressure_altitude_ft)
-    j, v, beyond_v = _place(table.temperature_c, temperature_c)
-    i1 = np.minimum(i + 1, len(table.pressure_altitude_ft) - 1)
-    j1 = np.minimum(j + 1, len(table.temperature_c) - 1)
+    return _bilinear(
+        table.values[quantity],
+        _place(table.pressure_altitude_ft, pressure_altitude_ft),
+        _place(table.temperature_c, temperature_c),
+    )
 
-    has_blanks = bool(np.isnan(grid).any())
+
+def _bilinear(grid: np.ndarray, row: _Place, column: _Place) -> np.ndarray:
+    """A grid between its corners; NaN beyond it, at a blank corner, and at an unknown place."""
+    i, u, beyond_u = row
+    j, v, beyond_v = column
+    i1, j1 = np.minimum(i + 1, grid.shape[0] - 1), np.minimum(j + 1, grid.shape[1] - 1)
+    flat, width, has_blanks = grid.ravel(), grid.shape[1], bool(np.isnan(grid).any())
 
     def corner(row: np.ndarray, column: np.ndarray, weight: np.ndarray) -> np.ndarray:
-        value = grid[row, column] * weight
+        value = flat.take(row * width + column) * weight
         # A corner of weight zero does not matter, even if it is blank.
-        return np.where(weight > 0, value, 0.0) if has_blanks else value
+        return np.where(weight == 0, 0.0, value) if has_blanks else value
 
     value = (
         corner(i, j, (1 - u) * (1 - v))
@@ -147,11 +167,10 @@ def read_off(
         + corner(i1, j, u * (1 - v))
         + corner(i1, j1, u * v)
     )
-    unknown = np.isnan(u) | np.isnan(v)
-    return np.where(beyond_u | beyond_v | unknown, np.nan, value)
+    return np.where(beyond_u | beyond_v, np.nan, value)
 
 
-def _place(axis: np.ndarray, x: np.ndarray) -> tuple[np.ndarray, np.ndarray, np.ndarray]:
+def _place(axis: np.ndarray, x: np.ndarray) -> _Place:
     """Cell of each value on an axis, the share of the way through it, and what lies beyond."""
     beyond = x > axis[-1]
     inside = np.clip(x, axis[0], axis[-1])
@@ -213,7 +232,7 @@ def required(profile: AircraftProfile, operation: str, quantity: str, air: Table
         return at_mass(
             tables,
             profile.planning_kg,
-            lambda t: read_off(t, quantity, air.pressure_altitude_ft, air.table_temperature_c),
+            lambda table: _bilinear(table.values[quantity], *air.on_axes(table)),
         )
     return _scaled(profile, operation, quantity, air)
 

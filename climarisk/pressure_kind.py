@@ -347,12 +347,31 @@ def derived_months(station: Station, hours: pd.DataFrame) -> list[DerivedMonth]:
         return []
     earlier = t.reindex(t.index - pd.Timedelta(hours=12)).to_numpy()
     local = table.index + pd.Timedelta(hours=station.longitude / 15.0)
-    table = pd.DataFrame(
-        {"t": t.to_numpy(), "p": p.to_numpy(), "off": (t.to_numpy() - earlier) / 2}, index=local
+    whole = _in_whole_days(local.as_unit("s").asi8 // 86400)
+    month = (local.year.to_numpy() * 12 + local.month.to_numpy() - 1)[whole]
+    columns = pd.DataFrame(
+        {
+            "day": local.day.to_numpy()[whole],
+            "hour": local.hour.to_numpy()[whole],
+            "t": t.to_numpy()[whole],
+            "p": p.to_numpy()[whole],
+            "off": (t.to_numpy() - earlier)[whole] / 2,
+        }
     )
-    months = table.groupby([local.year, local.month])
-    found = (_derived_month(key, one, station.elevation_m) for key, one in months)
-    return [month for month in found if month is not None]
+    edges = np.flatnonzero(np.diff(month)) + 1
+    bounds = np.concatenate(([0], edges, [len(month)]))
+    found = [
+        _derived_month(int(month[a]), columns.iloc[a:b], station.elevation_m)
+        for a, b in zip(bounds, bounds[1:], strict=False)
+        if b > a
+    ]
+    return [m for m in found if m is not None]
+
+
+def _in_whole_days(day: np.ndarray) -> np.ndarray:
+    """Which hours belong to days with enough of them, given each hour's day number."""
+    _, place, count = np.unique(day, return_inverse=True, return_counts=True)
+    return count[place] >= _WHOLE_DAY_HOURS
 
 
 def derived_hours(station: Station, hours: pd.DataFrame) -> np.ndarray:
@@ -362,28 +381,27 @@ def derived_hours(station: Station, hours: pd.DataFrame) -> np.ndarray:
     return np.isin(local.year * 12 + local.month, months)
 
 
-def _derived_month(
-    key: tuple[int, int], table: pd.DataFrame, elevation_m: float
-) -> DerivedMonth | None:
-    whole = table.groupby(table.index.day)["t"].transform("count") >= _WHOLE_DAY_HOURS
-    table = table[whole]
-    if table.index.day.nunique() < _WHOLE_DAYS:
+def _derived_month(key: int, table: pd.DataFrame, elevation_m: float) -> DerivedMonth | None:
+    day, hour, t, p, off = (table[c].to_numpy() for c in ("day", "hour", "t", "p", "off"))
+    if len(np.unique(day)) < _WHOLE_DAYS:
         return None
-    cycle = table[["t", "p"]].groupby(table.index.hour).mean()
-    cycle = cycle - cycle.mean()
-    power = float((cycle["t"] ** 2).sum())
+    count = np.bincount(hour, minlength=24)
+    has = count > 0
+    t_cycle, p_cycle = (np.bincount(hour, x, 24)[has] / count[has] for x in (t, p))
+    t_cycle, p_cycle = t_cycle - t_cycle.mean(), p_cycle - p_cycle.mean()
+    power = float((t_cycle**2).sum())
     if power <= 0.0:
         return None
-    slope = float((cycle["t"] * cycle["p"]).sum()) / power
-    pressure, t = float(table["p"].mean()), float(table["t"].mean())
-    expected = float(column_sensitivity_hpa_per_k(pressure, elevation_m, t))
+    slope = float((t_cycle * p_cycle).sum()) / power
+    pressure = float(p.mean())
+    expected = float(column_sensitivity_hpa_per_k(pressure, elevation_m, float(t.mean())))
     if slope < _DERIVED_SHARE * expected:
         return None
-    hour = table.index.hour
-    afternoon = table[(hour >= _AFTERNOON[0]) & (hour <= _AFTERNOON[1])]
-    too_high = expected * float(afternoon["off"].mean())
-    feet = float(pressure_error_ft(abs(too_high), pressure, float(afternoon["t"].mean())))
-    return DerivedMonth(*key, slope, expected, too_high, float(np.copysign(feet, too_high)))
+    afternoon = (hour >= _AFTERNOON[0]) & (hour <= _AFTERNOON[1])
+    too_high = expected * float(np.nanmean(off[afternoon]))
+    feet = float(pressure_error_ft(abs(too_high), pressure, float(t[afternoon].mean())))
+    signed = float(np.copysign(feet, too_high))
+    return DerivedMonth(key // 12, key % 12 + 1, slope, expected, too_high, signed)
 
 
 def _derived_finding(station: Station, hours: pd.DataFrame) -> Finding | None:

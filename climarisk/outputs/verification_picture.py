@@ -21,10 +21,8 @@ _MONTHS = ["Jan", "Feb", "Mar", "Apr", "May", "Jun", "Jul", "Aug", "Sep", "Oct",
 _INK, _PALE, _NIGHT, _DAY = "#222222", "#dddddd", "#0072b2", "#d55e00"
 #: Mean absolute value of a normal variable in standard deviations: sqrt(2 / pi).
 _MAE_PER_SD = float(np.sqrt(2.0 / np.pi))
-_MOST_LABELS = 40
-#: Where a label may stand beside its point: pixels right and down, and its anchor; labels
-#: further off than `_FAR_PX` get a line to their point.
-_LABEL_PLACES = (
+#: Where a label may stand beside its point: pixels right and down, and its anchor.
+_NEAR_PLACES = (
     (9, 4, "start"),
     (-9, 4, "end"),
     (0, -10, "middle"),
@@ -33,6 +31,9 @@ _LABEL_PLACES = (
     (7, 15, "start"),
     (-7, -7, "end"),
     (-7, 15, "end"),
+)
+#: Further places, joined to the point by a line, unless there are more stations than this.
+_FAR_PLACES = (
     (25, -30, "start"),
     (25, 40, "start"),
     (-25, -30, "end"),
@@ -42,7 +43,7 @@ _LABEL_PLACES = (
     (0, -50, "middle"),
     (0, 60, "middle"),
 )
-_FAR_PX = 20
+_MOST_FAR = 20
 
 
 @dataclass(frozen=True)
@@ -67,9 +68,8 @@ def svg_text(report: VerificationReport) -> str:
     kept = report.stations["verified"] & ~report.stations["singled_out"]
     singled = int(report.stations["singled_out"].sum())
     note = (
-        f"Each station hidden in turn and estimated from the others, {report.first_year}-"
-        f"{report.last_year}: {int(kept.sum())} stations"
-        + (f", and {singled} singled out" if singled else "")
+        f"Each station hidden in turn and estimated from the others, {report.period}: "
+        f"{int(kept.sum())} stations" + (f", and {singled} singled out" if singled else "")
     )
     if len(report.scores):
         body = [*_height_panel(report), *_month_panel(report)]
@@ -83,13 +83,14 @@ def svg_text(report: VerificationReport) -> str:
         if body
         else note
     )
+    height = _HEIGHT if body else _TOP
     head = [
-        f'<svg xmlns="http://www.w3.org/2000/svg" width="{_WIDTH}" height="{_HEIGHT}" '
-        f'viewBox="0 0 {_WIDTH} {_HEIGHT}" role="img" aria-labelledby="title desc" '
+        f'<svg xmlns="http://www.w3.org/2000/svg" width="{_WIDTH}" height="{height}" '
+        f'viewBox="0 0 {_WIDTH} {height}" role="img" aria-labelledby="title desc" '
         'font-family="DejaVu Sans, Verdana, Arial, sans-serif" font-size="13">',
         f'<title id="title">{_escaped(title)}</title>',
         f'<desc id="desc">{_escaped(described)}</desc>',
-        f'<rect width="{_WIDTH}" height="{_HEIGHT}" fill="#ffffff"/>',
+        f'<rect width="{_WIDTH}" height="{height}" fill="#ffffff"/>',
         _text(28, 36, _cut(title, 75), size=20, weight="bold"),
         *(
             _text(28, 60 + 18 * i, line)
@@ -202,35 +203,37 @@ def _points(table: pd.DataFrame, axes: _Axes) -> list[str]:
         )
         mark = _mark("diamond" if s["singled_out"] else "circle", x, y, _INK)
         parts.append(f"<g><title>{_escaped(tip)}</title>{mark}</g>")
-        if len(table) <= _MOST_LABELS or s["singled_out"]:
-            parts += _label(_cut(clean(s["station"]), 14), x, y, axes, taken)
+        far = len(table) <= _MOST_FAR or bool(s["singled_out"])
+        parts += _label(_cut(clean(s["station"]), 14), (x, y), axes, taken, far)
     return parts
 
 
 def _label(
     text: str,
-    x: float,
-    y: float,
+    point: tuple[float, float],
     axes: _Axes,
     taken: list[tuple[float, float, float, float]],
+    far: bool,
 ) -> list[str]:
     """The label of a point where it covers nothing; none where there is no room."""
+    x, y = point
     wide = 7.0 * len(text)
-    for dx, dy, anchor in _LABEL_PLACES:
+    for dx, dy, anchor in _NEAR_PLACES + (_FAR_PLACES if far else ()):
         left = x + dx - {"start": 0.0, "middle": wide / 2, "end": wide}[anchor]
         box = (left, y + dy - 10, left + wide, y + dy + 2)
         inside = box[0] >= axes.left and box[2] <= axes.right + 20 and box[3] <= _BOTTOM - 1
         clear = all(box[2] < b[0] or b[2] < box[0] or box[3] < b[1] or b[3] < box[1] for b in taken)
         if inside and clear:
             taken.append(box)
-            leader = []
-            if max(abs(dx), abs(dy - 4)) > _FAR_PX:
-                end = (x + dx, y + dy + (2 if dy < 0 else -10))
-                leader = [
-                    f'<line x1="{x:.1f}" y1="{y:.1f}" x2="{end[0]:.1f}" y2="{end[1]:.1f}" '
-                    'stroke="#767676"/>'
-                ]
-            return [*leader, _text(x + dx, y + dy, text, anchor, 11)]
+            label = _text(x + dx, y + dy, text, anchor, 11)
+            if (dx, dy, anchor) in _NEAR_PLACES:
+                return [label]
+            foot = y + dy + (2 if dy < 0 else -10)
+            leader = (
+                f'<line x1="{x:.1f}" y1="{y:.1f}" x2="{x + dx:.1f}" y2="{foot:.1f}" '
+                'stroke="#767676"/>'
+            )
+            return [leader, label]
     return []
 
 
