@@ -64,12 +64,20 @@ _Years = Annotated[
         "--years", metavar="A-B", help="Also for these years alone, in scenarios.csv; repeatable."
     ),
 ]
+_Limit = Annotated[
+    float | None,
+    typer.Option(
+        "--limit-ft",
+        help="Density altitude whose exceedance is scored; default each station's own 90th "
+        "percentile.",
+    ),
+]
 _Offline = Annotated[bool, typer.Option("--offline", help="Never touch the network.")]
 
 
 @app.command(epilog="Example: climarisk demo")
 def demo(out: _Out = None) -> None:
-    """Run the invented demo study: no network, no files of yours."""
+    """Run the invented demo study, without a network."""
     _run(_demo_study(), out, None, offline=True)
 
 
@@ -85,14 +93,14 @@ def run(
     warmer_holds: _WarmerHolds = "relative-humidity",
     years: _Years = None,
 ) -> None:
-    """Run a study: read the weather, score the aircraft, write the map and the tables."""
+    """Run a study: write the map and the tables."""
     asked = _Asked(tuple(warmer or ()), warmer_holds.replace("-", " "), tuple(years or ()))
     _run(study, out, store, offline, asked)
 
 
 @app.command(epilog="Example: climarisk check strips/study.toml")
 def check(study: _StudyPath, store: _StoreFolder = None) -> None:
-    """Read everything, say what a run would do and every problem at once; write nothing."""
+    """Say what a run would do, and every problem at once."""
     from climarisk.pipeline import evaluate
     from climarisk.study import read_study
     from climarisk.weather import load_weather
@@ -109,9 +117,37 @@ def check(study: _StudyPath, store: _StoreFolder = None) -> None:
     _results.print(_escaped(_coverage_line(result)))
 
 
+@app.command(epilog="Example: climarisk verify strips/study.toml --limit-ft 6000")
+def verify(
+    study: _StudyPath,
+    out: _Out = None,
+    limit_ft: _Limit = None,
+    store: _StoreFolder = None,
+    offline: _Offline = False,
+) -> None:
+    """Hide each station in turn: how far to trust each field."""
+    from climarisk.outputs.verification import plain_text, write_verification
+    from climarisk.study import read_study
+    from climarisk.verification import check_limit, verify_study
+    from climarisk.weather import load_weather
+
+    check_limit(limit_ft)
+    read = read_study(study)
+    kept = _store(store) if read.source != "synthetic" else None
+    with _bar() as progress:
+        weather = load_weather(read, kept, progress, offline)
+        report = verify_study(read, weather, progress, limit_ft)
+        folder = _output_folder(read, out)
+        files = write_verification(report, folder)
+    _print_findings([f for f in weather.findings if f.severity != "note"])
+    for line in plain_text(report).splitlines():
+        _results.print(_escaped(line))
+    _results.print(_escaped(f"Verification: {', '.join(f.name for f in files)} in {folder}"))
+
+
 @app.command(epilog="Example: climarisk fetch strips/study.toml")
 def fetch(study: _StudyPath, store: _StoreFolder = None) -> None:
-    """Fill the store with the station years of a study from the online archive."""
+    """Fill the store from the online archive."""
     from climarisk.errors import InputError
     from climarisk.online import fetch_stations
     from climarisk.study import read_study

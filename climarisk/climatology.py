@@ -109,7 +109,9 @@ def _sorted_within(values: np.ndarray, cells: np.ndarray, count: np.ndarray) -> 
     return ordered
 
 
-def _statistics(values: np.ndarray, cells: np.ndarray, n_cells: int) -> pd.DataFrame:
+def _statistics(
+    values: np.ndarray, error: np.ndarray | float, cells: np.ndarray, n_cells: int
+) -> pd.DataFrame:
     """Statistics of each cell from the levels of each hour, shape (n_levels, n)."""
     n_levels = len(values)
     count = np.bincount(cells, minlength=n_cells)
@@ -121,11 +123,14 @@ def _statistics(values: np.ndarray, cells: np.ndarray, n_cells: int) -> pd.DataF
     )
     for i, p in enumerate(PERCENTILES):
         table[f"p{p:02d}"] = quantiles[:, i]
-    table["transfer_error"] = np.sqrt(np.bincount(cells, values.var(axis=0), n_cells) / some)
+    squares = np.broadcast_to(np.square(error), len(cells))
+    table["transfer_error"] = np.sqrt(np.bincount(cells, squares, n_cells) / some)
     return table
 
 
-def hourly_distribution(values: np.ndarray, clock: LocalClock) -> pd.DataFrame:
+def hourly_distribution(
+    values: np.ndarray, clock: LocalClock, error: np.ndarray | None = None
+) -> pd.DataFrame:
     """Distribution of a variable in the 288 month x hour cells, all hours.
 
     Parameters
@@ -134,6 +139,8 @@ def hourly_distribution(values: np.ndarray, clock: LocalClock) -> pd.DataFrame:
         The variable at each level of the transfer error, one level without any; NaN where
         unknown, in all levels alike.
     clock : LocalClock
+    error : ndarray, shape (n_hours,), optional
+        One standard deviation of the transfer, in the variable's unit; default 0.
 
     Returns
     -------
@@ -145,7 +152,8 @@ def hourly_distribution(values: np.ndarray, clock: LocalClock) -> pd.DataFrame:
     values = np.atleast_2d(values)
     complete = completeness(np.isfinite(values[0]), clock)
     used = complete.used
-    table = _statistics(values[:, used], clock.month_hour[used], 288)
+    sd = 0.0 if error is None else error[used]
+    table = _statistics(values[:, used], sd, clock.month_hour[used], 288)
     n_years = complete.counts.sum(axis=0).reshape(-1)
     table.insert(1, "n_years", n_years)
     table.insert(2, "coverage", n_years / clock.n_years)
@@ -155,7 +163,9 @@ def hourly_distribution(values: np.ndarray, clock: LocalClock) -> pd.DataFrame:
     return table
 
 
-def monthly_distribution(values: np.ndarray, clock: LocalClock, inside: np.ndarray) -> pd.DataFrame:
+def monthly_distribution(
+    values: np.ndarray, clock: LocalClock, inside: np.ndarray, error: np.ndarray | None = None
+) -> pd.DataFrame:
     """Distribution of a variable by month over the hours window.
 
     Parameters
@@ -164,6 +174,8 @@ def monthly_distribution(values: np.ndarray, clock: LocalClock, inside: np.ndarr
     clock : LocalClock
     inside : ndarray of bool, shape (n_hours,)
         The hours window.
+    error : ndarray, shape (n_hours,), optional
+        As for `hourly_distribution`.
 
     Returns
     -------
@@ -174,7 +186,8 @@ def monthly_distribution(values: np.ndarray, clock: LocalClock, inside: np.ndarr
     values = np.atleast_2d(values)
     complete = completeness(np.isfinite(values[0]), clock)
     used = complete.used & inside
-    table = _statistics(values[:, used], clock.month[used], 12)
+    sd = 0.0 if error is None else error[used]
+    table = _statistics(values[:, used], sd, clock.month[used], 12)
     years = np.bincount(
         clock.month[used] * clock.n_years + clock.year[used], minlength=12 * clock.n_years
     )

@@ -50,7 +50,7 @@ from climarisk.risk import Hours, risk_tables
 from climarisk.rules import reporting_findings
 from climarisk.store import Store
 from climarisk.study import Study, read_study
-from climarisk.timing import misdated, timing_findings
+from climarisk.timing import Misdating, misdated, timing_findings
 from climarisk.transfer import (
     FieldAir,
     StationAir,
@@ -135,7 +135,7 @@ def evaluate(study: Study, weather: Weather, progress: Progress = quiet) -> Stud
         No field has a usable station.
     """
     grid = hour_grid(study.first_year, study.last_year)
-    stations, timing = _stations_on_grid(study, weather, grid)
+    stations, wrong = stations_on_grid(weather, grid)
     error = _learned_error(study, stations, grid, progress)
     parts = []
     for done, field in enumerate(study.fields):
@@ -145,7 +145,7 @@ def evaluate(study: Study, weather: Weather, progress: Progress = quiet) -> Stud
     findings = sort_findings(
         [
             *weather.findings,
-            *timing,
+            *_record_findings(study, stations, wrong, grid),
             *(f for part in parts for f in part.findings),
             *aircraft_findings(study.aircraft),
         ]
@@ -190,10 +190,22 @@ def _refuse_without_station(study: Study, use: pd.DataFrame, findings: Sequence[
         )
 
 
-def _stations_on_grid(
-    study: Study, weather: Weather, grid: np.ndarray
-) -> tuple[list[StationAir], list[Finding]]:
-    """Stations on the study's hours; those whose dates look wrong or that have gaps told."""
+def stations_on_grid(
+    weather: Weather, grid: np.ndarray
+) -> tuple[list[StationAir], dict[str, Misdating]]:
+    """Stations on the study's hours, those whose dates look wrong marked.
+
+    Parameters
+    ----------
+    weather : Weather
+    grid : ndarray of int64, shape (n_hours,)
+
+    Returns
+    -------
+    stations : list of StationAir
+    wrong : dict of str to Misdating
+        By station id.
+    """
     airs = [
         on_grid(s.station, s.hours, grid, s.elevation_trusted, s.derived) for s in weather.stations
     ]
@@ -202,24 +214,36 @@ def _stations_on_grid(
         [a.temperature_c for a in airs],
         utc_month(grid) * 24 + grid % 24,
     )
-    marked = [replace(a, timing_trusted=a.station.id not in wrong) for a in airs]
+    return [replace(a, timing_trusted=a.station.id not in wrong) for a in airs], wrong
+
+
+def _record_findings(
+    study: Study, stations: Sequence[StationAir], wrong: dict[str, Misdating], grid: np.ndarray
+) -> list[Finding]:
+    """What there is to say of the stations' dates and of the hours they never report."""
     findings = timing_findings(wrong)
-    for air in marked:
+    for air in stations:
         clock = local_clock(as_field(air), grid, study.first_year, study.last_year)
         findings += reporting_findings(air.station, np.isfinite(air.temperature_c), clock)
-    return marked, findings
+    return findings
+
+
+def serving(study: Study, stations: Sequence[StationAir]) -> set[str]:
+    """Ids of the trusted stations that air is carried from to the study's fields."""
+    found: set[str] = set()
+    for field in study.fields:
+        chosen = candidates(field, stations, study.radius_km)
+        if not (field.stations and all(c.on_spot for c in chosen)):
+            found |= {c.air.station.id for c in chosen if c.air.timing_trusted}
+    return found
 
 
 def _learned_error(
     study: Study, stations: Sequence[StationAir], grid: np.ndarray, progress: Progress
 ) -> TransferError:
     """The error of carried air, learned by hiding the stations that air is carried from."""
-    serving: set[str] = set()
-    for field in study.fields:
-        chosen = candidates(field, stations, study.radius_km)
-        if not (field.stations and all(c.on_spot for c in chosen)):
-            serving |= {c.air.station.id for c in chosen if c.air.timing_trusted}
-    places = [i for i, a in enumerate(stations) if a.station.id in serving][:MOST_HIDDEN]
+    wanted = serving(study, stations)
+    places = [i for i, a in enumerate(stations) if a.station.id in wanted][:MOST_HIDDEN]
     shown = []
     for done, i in enumerate(places):
         progress("hiding stations", done, len(places))
@@ -256,11 +280,12 @@ def field_tables(
     air = air_at_field(field, chosen, stations, clock, lapse)
     air = warmed(air, study.warmer_k, study.warmer_holds, field.elevation_m)
     sd_k = error.sd_k(air.carried_m, clock.month, clock.hour)
-    shifts = error.levels[:, None] * sd_k if (sd_k > 0).any() else np.zeros((1, len(sd_k)))
-    values = _levels_of_variables(field, air, shifts)
-    sd_ft = values["density_altitude"].std(axis=0)
-    of_month, of_hour = _distributions(field, values, clock, inside)
-    scene = _Scene(study, field, air, clock, inside, shifts, sd_ft, error.persistence)
+    values = _levels_of_variables(field, air, error.hour_levels[:, None] * sd_k)
+    sds = errors_of_variables(field, air, sd_k)
+    sd_ft = sds["density_altitude"]
+    of_month, of_hour = _distributions(field, values, sds, clock, inside)
+    shifts = error.place_levels[:, None] * sd_k
+    scene = _Scene(study, field, air, clock, inside, shifts, sd_ft, error.place_share)
     risk = [_risk(scene, profile) for profile in study.aircraft]
     field_error = FieldError(sd_k, sd_ft, lapse.stations, error.stations)
     central = variables(field, air)["density_altitude"]
@@ -283,17 +308,43 @@ def field_tables(
     )
 
 
+#: Variables that the transfer error of the temperature moves.
+_MOVED = ("density_altitude", "temperature", "relative_humidity")
+
+
 def _levels_of_variables(field: Field, air: FieldAir, shifts: np.ndarray) -> dict[str, np.ndarray]:
     """The six variables at each level of the transfer error; one level where it moves none."""
     central = variables(field, air)
-    if len(shifts) == 1:
+    if not (shifts != 0.0).any():
         return {name: values[None, :] for name, values in central.items()}
     levels = [variables(field, air, shift) for shift in shifts]
     return {
         name: np.array([level[name] for level in levels])
-        if name in ("density_altitude", "temperature", "relative_humidity")
+        if name in _MOVED
         else central[name][None, :]
         for name in central
+    }
+
+
+def errors_of_variables(field: Field, air: FieldAir, sd_k: np.ndarray) -> dict[str, np.ndarray]:
+    """What one standard deviation of the temperature is worth in each variable it moves.
+
+    Parameters
+    ----------
+    field : Field
+    air : FieldAir
+    sd_k : ndarray, shape (n_hours,)
+
+    Returns
+    -------
+    dict of str to ndarray, shape (n_hours,)
+    """
+    if not (sd_k > 0).any():
+        return {name: np.zeros(len(sd_k)) for name in VARIABLES}
+    colder, warmer = variables(field, air, -sd_k), variables(field, air, sd_k)
+    return {
+        name: np.abs(warmer[name] - colder[name]) / 2 if name in _MOVED else np.zeros(len(sd_k))
+        for name in VARIABLES
     }
 
 
@@ -343,14 +394,18 @@ def shifted(
 
 
 def _distributions(
-    field: Field, values: dict[str, np.ndarray], clock: LocalClock, inside: np.ndarray
+    field: Field,
+    values: dict[str, np.ndarray],
+    sds: dict[str, np.ndarray],
+    clock: LocalClock,
+    inside: np.ndarray,
 ) -> tuple[pd.DataFrame, pd.DataFrame]:
     monthly: list[pd.DataFrame] = []
     hourly: list[pd.DataFrame] = []
     for variable, unit in VARIABLES.items():
         for table, into in (
-            (monthly_distribution(values[variable], clock, inside), monthly),
-            (hourly_distribution(values[variable], clock), hourly),
+            (monthly_distribution(values[variable], clock, inside, sds[variable]), monthly),
+            (hourly_distribution(values[variable], clock, sds[variable]), hourly),
         ):
             into.append(table.assign(field=field.id, variable=variable, unit=unit))
     return (
@@ -405,7 +460,7 @@ def _risk(scene: _Scene, profile: AircraftProfile) -> _Scored:
     known = np.flatnonzero(complete & np.isfinite(air.pressure_hpa) & clock.in_period)
     central = margins(profile, field, _table_air(scene, known, np.zeros(len(known))))
     levels: list[Margins] = []
-    if len(scene.shifts) > 1:
+    if (scene.shifts != 0.0).any():
         carried = np.flatnonzero(np.isfinite(air.carried_m[known]))
         levels = [
             _moved(central, carried, margins(profile, field, _table_air(scene, where, s[where])))

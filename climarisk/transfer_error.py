@@ -3,10 +3,11 @@
 from __future__ import annotations
 
 from collections.abc import Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 import numpy as np
 
+from climarisk.climatology import segment_quantiles
 from climarisk.lapse import DAY_HOURS
 
 #: Standard deviation of the air temperature carried to a place without a station, K: at the
@@ -22,10 +23,15 @@ LEVELS = 9
 #: Fine probabilities at which the distribution is kept: the middles of 450 equal shares.
 PROBABILITIES = (np.arange(450) + 0.5) / 450
 #: Shape and persistence of the errors are taken from at least so many hidden stations.
-_STATIONS_FOR_SHAPE = 5
+_STATIONS_FOR_SHAPE, _STATIONS_FOR_DISPERSION = 5, 2
 #: Share of the error variance that stays with a place through a season: 0.5 until verified
 #: (a judgement; siting and inversions persist, cloud and wind do not).
 _PLANNING_PERSISTENCE = 0.5
+#: The other half is taken as the hours' own until verified.
+_PLANNING_DISPERSION = 0.5
+_P90 = np.array([0.9])
+#: Common hours that a month x hour cell of a hidden station needs.
+CELL_HOURS = 20
 
 
 def planning_sd_k(carried_m: np.ndarray) -> np.ndarray:
@@ -56,6 +62,8 @@ class HiddenStation:
     carried_m : ndarray, shape (n_hours,)
     month, hour, year : ndarray of int, shape (n_hours,)
         Local standard time at the station; month 0-11.
+    estimated_c : ndarray, shape (n_hours,)
+        Estimated temperature.
     """
 
     error_k: np.ndarray
@@ -63,6 +71,7 @@ class HiddenStation:
     month: np.ndarray
     hour: np.ndarray
     year: np.ndarray
+    estimated_c: np.ndarray
 
 
 @dataclass(frozen=True)
@@ -77,6 +86,9 @@ class TransferError:
         Of the standardised error, at `PROBABILITIES`; mean 0.
     persistence : float
         Share of the variance that stays with a place through a month of a year.
+    dispersion : float
+        Share of the variance by which the hours of a place vary more than their estimates,
+        chosen so that the 90th percentile of hidden stations comes out without bias.
     stations : int
         Stations hidden; 0: planning values.
     """
@@ -84,12 +96,28 @@ class TransferError:
     scale: np.ndarray
     quantiles: np.ndarray
     persistence: float
+    dispersion: float
     stations: int
 
     @property
     def levels(self) -> np.ndarray:
         """Means of `LEVELS` equal shares of the distribution, shape (`LEVELS`,)."""
         return self.quantiles.reshape(LEVELS, -1).mean(axis=1)
+
+    @property
+    def hour_levels(self) -> np.ndarray:
+        """Levels by which the hours of a place vary around their estimates."""
+        return self.levels * np.sqrt(self.dispersion)
+
+    @property
+    def place_levels(self) -> np.ndarray:
+        """Levels of what is not known of an hour at a place: its hours' and the place's own."""
+        return self.levels * np.sqrt(min(self.dispersion + self.persistence, 1.0))
+
+    @property
+    def place_share(self) -> float:
+        """Share of the variance of `place_levels` that stays with the place."""
+        return self.persistence / (self.dispersion + self.persistence)
 
     def quantile(self, probability: float) -> float:
         """Quantile of the standardised error."""
@@ -102,7 +130,9 @@ class TransferError:
 
 def planning_error() -> TransferError:
     """The error distribution before any station was hidden."""
-    return TransferError(np.ones((12, 2)), normal_quantiles(), _PLANNING_PERSISTENCE, 0)
+    return TransferError(
+        np.ones((12, 2)), normal_quantiles(), _PLANNING_PERSISTENCE, _PLANNING_DISPERSION, 0
+    )
 
 
 def normal_quantiles() -> np.ndarray:
@@ -139,14 +169,36 @@ def learn_error(hidden: Sequence[HiddenStation]) -> TransferError:
         persistent.append(_persistence(u, h.year[known] * 24 + cell))
         standardised.append((u, cell))
     scale = _scale(squares)
-    if len(hidden) < _STATIONS_FOR_SHAPE:
-        return TransferError(scale, normal_quantiles(), _PLANNING_PERSISTENCE, len(hidden))
-    return TransferError(
-        scale,
-        _pooled_quantiles([u / scale.reshape(-1)[cell] for u, cell in standardised]),
-        float(np.clip(np.mean(persistent), 0.1, 0.9)),
-        len(hidden),
-    )
+    quantiles, persistence = normal_quantiles(), _PLANNING_PERSISTENCE
+    if len(hidden) >= _STATIONS_FOR_SHAPE:
+        quantiles = _pooled_quantiles([u / scale.reshape(-1)[cell] for u, cell in standardised])
+        persistence = float(np.clip(np.mean(persistent), 0.1, 0.9))
+    error = TransferError(scale, quantiles, persistence, _PLANNING_DISPERSION, len(hidden))
+    return replace(error, dispersion=_dispersion(hidden, error))
+
+
+def _dispersion(hidden: Sequence[HiddenStation], error: TransferError) -> float:
+    """Share of the error variance that, added to the hours, frees the mean P90 of bias.
+
+    The 90th percentile is taken to rise in proportion to the share.
+    """
+    missing, rise = [], []
+    for h in hidden:
+        known = np.isfinite(h.error_k)
+        cell = h.month[known] * 24 + h.hour[known]
+        sd = error.sd_k(h.carried_m[known], h.month[known], h.hour[known])
+        estimated = h.estimated_c[known]
+        spread = (estimated + error.levels[:, None] * sd).reshape(-1)
+        plain = segment_quantiles(estimated, cell, 288, _P90)[:, 0]
+        with_error = segment_quantiles(spread, np.tile(cell, LEVELS), 288, _P90)[:, 0]
+        enough = np.bincount(cell, minlength=288) >= CELL_HOURS
+        if enough.any():
+            measured = segment_quantiles(estimated + h.error_k[known], cell, 288, _P90)[:, 0]
+            missing.append(float((measured - plain)[enough].mean()))
+            rise.append(float((with_error - plain)[enough].mean()))
+    if len(missing) < _STATIONS_FOR_DISPERSION or np.mean(rise) <= 0.0:
+        return _PLANNING_DISPERSION
+    return float(np.clip(np.mean(missing) / np.mean(rise), 0.0, 1.0))
 
 
 def _scale(squares: np.ndarray) -> np.ndarray:

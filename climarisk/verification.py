@@ -7,7 +7,7 @@ cold, or a density altitude too low, which is the unsafe side.
 from __future__ import annotations
 
 from collections.abc import Mapping, Sequence
-from dataclasses import dataclass, replace
+from dataclasses import dataclass
 
 import numpy as np
 import pandas as pd
@@ -15,22 +15,19 @@ import pandas as pd
 from climarisk.atmosphere import (
     HIGHEST_M,
     LOWEST_M,
-    density_altitude_ft,
 )
 from climarisk.clock import hour_grid, local_clock
 from climarisk.errors import InputError
 from climarisk.fields import Field
-from climarisk.pipeline import MOST_HIDDEN, shifted
+from climarisk.pipeline import MOST_HIDDEN, errors_of_variables, serving, stations_on_grid
 from climarisk.progress import Progress, quiet
 from climarisk.reporting import FieldError, estimate, field_findings
 from climarisk.study import Study
-from climarisk.timing import Misdating, misdated
+from climarisk.timing import Misdating
 from climarisk.transfer import (
-    FieldAir,
     StationAir,
     air_at_field,
     candidates,
-    on_grid,
 )
 from climarisk.transfer_error import TransferError, learn_error
 from climarisk.units import METRES_PER_FOOT
@@ -149,7 +146,7 @@ def verify_study(
     """
     check_limit(limit_ft)
     grid = hour_grid(study.first_year, study.last_year)
-    stations, wrong = _on_study_grid(weather, grid)
+    stations, wrong = stations_on_grid(weather, grid)
     shown = _hide_all(study, stations, grid, progress)
     measures = []
     for done, one in enumerate(shown):
@@ -191,22 +188,6 @@ def check_limit(limit_ft: float | None) -> None:
             f"{highest:.0f} ft. Give another, or leave it out for each station's own 90th "
             "percentile."
         )
-
-
-def _on_study_grid(
-    weather: Weather, grid: np.ndarray
-) -> tuple[list[StationAir], dict[str, Misdating]]:
-    """Stations on the study's hours, those whose dates look wrong marked."""
-    airs = [
-        on_grid(s.station, s.hours, grid, s.elevation_trusted, s.derived) for s in weather.stations
-    ]
-    utc_month = (grid // 24).astype("datetime64[D]").astype("datetime64[M]").astype(int) % 12
-    wrong = misdated(
-        [a.station for a in airs],
-        [a.temperature_c for a in airs],
-        utc_month * 24 + grid % 24,
-    )
-    return [replace(a, timing_trusted=a.station.id not in wrong) for a in airs], wrong
 
 
 def _hide_all(
@@ -328,16 +309,6 @@ def _unverified_reason(
     return "it has no hour in common with the stations that could stand in for it"
 
 
-def serving(study: Study, stations: Sequence[StationAir]) -> set[str]:
-    """Ids of the trusted stations that air is carried from to the study's fields."""
-    found: set[str] = set()
-    for field in study.fields:
-        chosen = candidates(field, stations, study.radius_km)
-        if not (field.stations and all(c.on_spot for c in chosen)):
-            found |= {c.air.station.id for c in chosen if c.air.timing_trusted}
-    return found
-
-
 def _run_error(
     study: Study, stations: Sequence[StationAir], shown: Sequence[Shown]
 ) -> TransferError:
@@ -376,7 +347,12 @@ def _field_row(
     lapse = lapse_for(field, stations, clock, study.radius_km)
     air = air_at_field(field, chosen, stations, clock, lapse)
     sd_k = error.sd_k(air.carried_m, clock.month, clock.hour)
-    spread = FieldError(sd_k, _sd_ft(field, air, sd_k, error), lapse.stations, error.stations)
+    spread = FieldError(
+        sd_k,
+        errors_of_variables(field, air, sd_k)["density_altitude"],
+        lapse.stations,
+        error.stations,
+    )
     sure = estimate(field, chosen, air, spread, clock).iloc[0]
     findings = field_findings(field, chosen, stations, air, clock, study)
     wanted = ("no-station", "no-hours", "far-station")
@@ -391,24 +367,6 @@ def _field_row(
     known = bool((np.isfinite(air.temperature_c) & clock.in_period).any())
     numbers = [sure[name] for name in FIELD_COLUMNS[2:8]]
     return (field.id, field.name, *numbers, " ".join(cautions), known)
-
-
-def _sd_ft(field: Field, air: FieldAir, sd_k: np.ndarray, error: TransferError) -> np.ndarray:
-    """Standard deviation of density altitude that the transfer error leaves, ft."""
-    carried = np.flatnonzero(sd_k > 0)
-    part = replace(
-        air,
-        temperature_c=air.temperature_c[carried],
-        vapour_pressure_hpa=air.vapour_pressure_hpa[carried],
-        pressure_hpa=air.pressure_hpa[carried],
-    )
-    levels = [
-        density_altitude_ft(part.pressure_hpa, *shifted(field, part, shift))
-        for shift in error.levels[:, None] * sd_k[carried]
-    ]
-    sd_ft = np.zeros(len(sd_k))
-    sd_ft[carried] = np.std(levels, axis=0)
-    return sd_ft
 
 
 def unverifiable(report: VerificationReport) -> str:

@@ -243,7 +243,7 @@ def _cell_measures(shown: Shown, nested: TransferError) -> dict[str, np.ndarray]
     enough = np.bincount(cell, minlength=288) >= CELL_HOURS
     sd_k = nested.sd_k(error.carried_m, error.month, error.hour)[known]
     central = shown.hidden.estimate.temperature_c[known]
-    levels = central[None, :] + nested.levels[:, None] * sd_k[None, :]
+    levels = central[None, :] + nested.hour_levels[:, None] * sd_k[None, :]
     share = np.array([0.5, 0.9])
     truth = segment_quantiles(shown.hidden.air.temperature_c[known], cell, 288, share)
     told = {"n_cells": float(enough.sum())}

@@ -128,7 +128,12 @@ def hide(
 def errors(hidden: Hidden) -> HiddenStation:
     """The temperature errors of a hidden station, hour by hour, within the period."""
     clock = hidden.clock
-    error = np.where(
-        clock.in_period, hidden.air.temperature_c - hidden.estimate.temperature_c, np.nan
+    measured = np.where(clock.in_period, hidden.air.temperature_c, np.nan)
+    return HiddenStation(
+        measured - hidden.estimate.temperature_c,
+        hidden.estimate.carried_m,
+        clock.month,
+        clock.hour,
+        clock.year,
+        hidden.estimate.temperature_c,
     )
-    return HiddenStation(error, hidden.estimate.carried_m, clock.month, clock.hour, clock.year)

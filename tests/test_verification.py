@@ -240,6 +240,8 @@ def test_the_reference_is_the_nearest_station_that_reports_unadjusted(tmp_path):
     second = row(report.scores, "month", "09", station="X")
     assert first["mae_nearest_k"] == pytest.approx(1.5)
     assert second["mae_nearest_k"] == pytest.approx(5.0)
+    # From NEAR, X is the nearest and weighs most.
+    assert row(report.scores, station="NEAR")["mae_nearest_k"] == pytest.approx(5.0)
     # At 6.5 K/km NEXT alone gives base - 4.5 - 0.65.
     assert first["mae_fixed_k"] == pytest.approx(0.85)
     assert row(report.scores, "height", "100-300 m", station="X")["n_hours"] > 0
@@ -297,6 +299,7 @@ def test_one_station_cannot_be_verified_and_every_file_says_so(tmp_path):
     assert len(files[0].read_text().splitlines()) == 1
     picture = ET.fromstring(files[1].read_text())
     assert "cannot be verified" in picture.findtext(f"{SVG}desc")
+    assert "2021-2021" not in text + files[1].read_text()
 
 
 def test_stations_that_nothing_can_stand_in_for_are_told(tmp_path):

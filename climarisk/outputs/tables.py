@@ -3,15 +3,13 @@
 from __future__ import annotations
 
 import json
-import shutil
-import tempfile
 from pathlib import Path
 from typing import Any
 
 import pandas as pd
 
-from climarisk.errors import OutputError
 from climarisk.outputs.map import render_map
+from climarisk.outputs.writing import write_files, write_texts
 from climarisk.results import StudyResult
 
 #: Decimals written to the CSV files.  Feet, kelvins, per cent and hectopascals are finer than
@@ -81,47 +79,7 @@ def write_outputs(result: StudyResult, folder: Path) -> list[Path]:
     OutputError
         The folder cannot be written.
     """
-    folder = Path(folder)
-    staging = None
-    try:
-        folder.parent.mkdir(parents=True, exist_ok=True)
-        staging = Path(tempfile.mkdtemp(prefix=".climarisk-", dir=folder.parent))
-        names = _write_all(result, staging)
-        folder.mkdir(exist_ok=True)
-        _move_in(staging, folder, names)
-    except OSError as error:
-        raise OutputError(
-            f"{folder}: the results cannot be written ({error.strerror or error}); what was "
-            "there stands as it was. Free some space, close the files, or choose another folder "
-            "with --out."
-        ) from None
-    finally:
-        if staging is not None:
-            shutil.rmtree(staging, ignore_errors=True)
-    return [folder / name for name in names]
-
-
-def _move_in(staging: Path, folder: Path, names: list[str]) -> None:
-    """Move the files into the folder; where one cannot be, put the old ones back."""
-    old = staging / "old"
-    old.mkdir()
-    for name in names:
-        if (folder / name).is_dir():
-            raise IsADirectoryError(f"{name} is a folder there")
-        if (folder / name).exists():
-            shutil.copy2(folder / name, old / name)
-    moved: list[str] = []
-    try:
-        for name in names:
-            (staging / name).replace(folder / name)
-            moved.append(name)
-    except BaseException:
-        for name in moved:
-            if (old / name).exists():
-                shutil.copy2(old / name, folder / name)
-            else:
-                (folder / name).unlink(missing_ok=True)
-        raise
+    return write_files(folder, lambda staging: _write_all(result, staging))
 
 
 def _write_all(result: StudyResult, folder: Path) -> list[str]:
@@ -138,10 +96,9 @@ def _write_all(result: StudyResult, folder: Path) -> list[str]:
     texts["extremes.csv"] = csv_text(result.extremes)
     if result.scenarios is not None:
         texts["scenarios.csv"] = csv_text(result.scenarios)
-    for name, text in texts.items():
-        (folder / name).write_text(text, encoding="utf-8", newline="\n")
+    names = write_texts(folder, texts)
     _write_layers(result, folder)
-    return [*texts, "fields.gpkg", "fields.geojson"]
+    return [*names, "fields.gpkg", "fields.geojson"]
 
 
 def csv_text(table: pd.DataFrame) -> str:

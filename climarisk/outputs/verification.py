@@ -2,15 +2,13 @@
 
 from __future__ import annotations
 
-import shutil
-import tempfile
 import textwrap
 from pathlib import Path
 
 import pandas as pd
 
-from climarisk.errors import OutputError
 from climarisk.outputs.verification_picture import svg_text
+from climarisk.outputs.writing import write_files, write_texts
 from climarisk.verification import (
     SCORE_COLUMNS,
     SINGLED_OUT_FACTOR,
@@ -46,30 +44,12 @@ def write_verification(report: VerificationReport, folder: Path) -> list[Path]:
     OutputError
         The folder cannot be written.
     """
-    folder = Path(folder)
     texts = {
         "verification.csv": csv_text(report),
         "verification.svg": svg_text(report),
         "verification.txt": plain_text(report),
     }
-    staging = None
-    try:
-        folder.parent.mkdir(parents=True, exist_ok=True)
-        staging = Path(tempfile.mkdtemp(prefix=".climarisk-", dir=folder.parent))
-        for name, text in texts.items():
-            (staging / name).write_text(text, encoding="utf-8", newline="\n")
-        folder.mkdir(exist_ok=True)
-        for name in texts:
-            (staging / name).replace(folder / name)
-    except OSError as error:
-        raise OutputError(
-            f"{folder}: the verification cannot be written ({error.strerror or error}); nothing "
-            "was half-written. Free some space or choose another folder with --out."
-        ) from None
-    finally:
-        if staging is not None:
-            shutil.rmtree(staging, ignore_errors=True)
-    return [folder / name for name in texts]
+    return write_files(folder, lambda staging: write_texts(staging, texts))
 
 
 def csv_text(report: VerificationReport) -> str:
