@@ -18,7 +18,7 @@ MINIMUM_STATIONS, MINIMUM_SPAN_M = 3, 300.0
 STEEPEST_INVERSION, DRY_ADIABAT = -10.0, 9.8
 
 #: Spread of the true lapse around the table, and of a cell's around its neighbours', K/km:
-#: published seasonal means differ by 3-5 K/km for the same season (METHODS 9), a standard
+#: published seasonal means differ by 3-5 K/km for the same season, a standard
 #: deviation of about 1.5; neighbouring cells by about a third of that (a judgement).
 _TABLE_SD, _NEIGHBOUR_SD = 1.5, 0.5
 #: Siting effect of a station beside its elevation, K, and the weight of that expectation in

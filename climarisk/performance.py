@@ -29,7 +29,7 @@ N_MARGIN_CHECKS = 5
 #: Margin of an hour beyond the table: nothing shows that any length would do.
 OUTSIDE_MARGIN = -1.0
 
-#: Surface factors (METHODS 5.2).  Grass, wet grass, soft, snow: UK CAA Safety Sense Leaflet
+#: Surface factors.  Grass, wet grass, soft, snow: UK CAA Safety Sense Leaflet
 #: 7c (2013), from memory; gravel: NZ CAA AC91-3 "metal" surface, from memory.
 TAKEOFF_SURFACE = {
     "paved": 1.0,
@@ -50,7 +50,7 @@ LANDING_SURFACE = {
 #: Per 1 % of adverse slope: AMC2 CAT.POL.A.305 and AMC2 CAT.POL.A.430.
 SLOPE_PER_PCT = 0.05
 
-#: Exponents of density and mass for profiles without a table (METHODS 5.3, engineering
+#: Exponents of density and mass for profiles without a table (engineering
 #: judgement bracketed by theory): quantity -> (density exponent, mass exponent).
 SCALING = {
     "ground_roll_m": (2.3, 2.0),
@@ -238,7 +238,11 @@ def required(profile: AircraftProfile, operation: str, quantity: str, air: Table
 
 
 def _scaled(profile: AircraftProfile, operation: str, quantity: str, air: TableAir) -> np.ndarray:
-    """A quantity scaled from one sea-level ISA figure (METHODS 5.3 and 5.4); no credit above it."""
+    """A quantity scaled from one sea-level ISA figure; no credit for air denser than that.
+
+    Distances by powers of density and mass; rate of climb linear in density altitude, to zero
+    at the absolute ceiling.
+    """
     figures = profile.scaled
     assert figures is not None
     if operation == "climb":

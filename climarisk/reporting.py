@@ -34,7 +34,7 @@ from climarisk.transfer import (
 from climarisk.trend import STATION_MOVE
 
 #: Without a station this near in distance and height the field's air is of low confidence
-#: (METHODS 9, step 6).
+#: (a judgement; the published errors of hourly transfer grow fast beyond).
 _CONFIDENT_KM, _CONFIDENT_M = 50.0, 500.0
 
 

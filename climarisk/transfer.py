@@ -230,6 +230,8 @@ def candidates(field: Field, stations: Sequence[StationAir], radius_km: float) -
             continue
         if not air.elevation_trusted and abs(dz) > 1.0:
             continue
+        if not pinned and not np.isfinite(air.temperature_c).any():
+            continue
         on_spot = distance <= ON_SPOT_KM and abs(dz) <= ON_SPOT_M
         chosen.append(Candidate(air, distance, dz, _weight(distance, dz), on_spot))
     chosen.sort(key=lambda c: (not c.on_spot, -c.weight, c.air.station.id))

@@ -12,8 +12,9 @@ from climarisk.lapse import DAY_HOURS
 
 #: Standard deviation of the air temperature carried to a place without a station, K: at the
 #: same elevation, and what each kilometre of height adds (in quadrature).  They give the
-#: planning values 0.9, 1.5 and 2.5 K at 0, 500 and 1000 m (METHODS 2.7, planning assumptions
-#: informed by the published errors of METHODS 9), used until stations can be hidden.
+#: planning values 0.9, 1.5 and 2.5 K at 0, 500 and 1000 m (planning assumptions
+#: informed by published errors of hourly transfer, 1.3-2.0 K mean absolute), used until
+#: stations can be hidden.
 BASE_SD_K, HEIGHT_SD_K_PER_KM = 0.9, 2.4
 #: Station equivalents by which a study's own verification is drawn to the planning values,
 #: and each month and half-day to the study's own mean (judgements).
