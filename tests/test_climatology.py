@@ -248,3 +248,49 @@ def test_window_cells_marks_what_the_window_touches():
     inside[one] = True
     cells = window_cells(inside, clock)
     assert np.argwhere(cells).tolist() == [[1, 1, 17]]
+
+
+# ---- levels of the transfer error ------------------------------------------------------------
+
+
+def test_distribution_with_levels_is_that_of_all_levels_together():
+    field, grid, clock = clock_of(2019, 2020)
+    draw = np.random.default_rng(8)
+    central = draw.normal(3000, 800, len(clock.hour))
+    central[draw.random(len(central)) < 0.05] = np.nan
+    levels = central + np.array([-300.0, -50.0, 50.0, 300.0])[:, None]
+    error = np.full(len(central), 215.0)
+    inside = in_window((6, 20), field, grid, clock)
+    plain = monthly_distribution(central, clock, inside)
+    got = monthly_distribution(levels, clock, inside, error)
+    for column in ("month", "n_hours", "n_years", "coverage", "years_note"):
+        assert list(got[column]) == list(plain[column])
+    np.testing.assert_allclose(got["mean"], plain["mean"], rtol=1e-12)
+    np.testing.assert_allclose(got["transfer_error"], 215.0, rtol=1e-12)
+    assert (plain["transfer_error"] == 0.0).all()
+    used = completeness(np.isfinite(central), clock).used & inside
+    for month in (1, 7):
+        pool = levels[:, used & (clock.month == month - 1)].ravel()
+        expected = np.quantile(pool, [0.01, 0.5, 0.9, 0.99], method="median_unbiased")
+        row = got[got["month"] == month].iloc[0]
+        np.testing.assert_allclose(row[["p01", "p50", "p90", "p99"]].astype(float), expected)
+    wider = got["p90"] - got["p10"] > plain["p90"] - plain["p10"]
+    assert wider.all()
+
+
+def test_hourly_distribution_takes_levels_and_their_error_too():
+    _, _, clock = clock_of(2019, 2020)
+    draw = np.random.default_rng(9)
+    central = draw.normal(20, 5, len(clock.hour))
+    levels = central + np.array([-2.0, 0.0, 2.0])[:, None]
+    own = clock.hour < 6  # hours of the field's own station: no error
+    levels[:, own] = central[own]
+    got = hourly_distribution(levels, clock, np.where(own, 0.0, 1.6))
+    plain = hourly_distribution(central, clock)
+    assert list(got["n_hours"]) == list(plain["n_hours"])
+    at_night = got["hour"] < 6
+    np.testing.assert_allclose(got.loc[at_night, "mean"], plain.loc[at_night, "mean"])
+    assert (got.loc[at_night, "transfer_error"] == 0.0).all()
+    np.testing.assert_allclose(got.loc[~at_night, "transfer_error"], 1.6)
+    spread = (got["p90"] - got["p10"]) - (plain["p90"] - plain["p10"])
+    assert spread[~at_night].mean() > 0.5

@@ -5,11 +5,9 @@ import pytest
 
 from climarisk import lapse
 
-#: A month of three days of every month stands for the year: 12 x 3 x 24 hours, several times.
-DAYS = 12
-MONTH_HOUR = np.concatenate(
-    [m * 24 + np.arange(24) for _ in range(DAYS) for m in range(12)]
-)  # every cell DAYS times
+#: Every month x hour cell, 40 days of each.
+DAYS = 40
+MONTH_HOUR = np.concatenate([m * 24 + np.arange(24) for _ in range(DAYS) for m in range(12)])
 N = len(MONTH_HOUR)
 TRUE = 5.0 + 2.0 * np.cos(2 * np.pi * np.arange(12) / 12)[:, None] * np.ones((12, 24))
 TRUE = TRUE + 1.5 * np.cos(2 * np.pi * (np.arange(24) - 14) / 24)  # 1.5 to 8.5 K/km

@@ -41,6 +41,7 @@ _SCRIPTS = (
     "grid.js",
     "chart.js",
     "cards.js",
+    "evidence.js",
     "panel.js",
     "method.js",
     "app.js",

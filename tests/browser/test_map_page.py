@@ -32,6 +32,24 @@ def altitude_text(feet: float) -> str:
     return f"{math.floor(Fraction(feet) / 100 + Fraction(1, 2)) * 100:,} ft".replace("-", "\u2212")
 
 
+def interval_text(low: float, high: float) -> str:
+    if math.isnan(low):
+        return "none"
+    return f"{share_text(low)}-{share_text(high)}".replace(" %-", "-").replace("< ", "<")
+
+
+def rounded(value: float, unit: Fraction) -> Fraction:
+    """To the nearest multiple of the unit, halves up."""
+    return math.floor(Fraction(value) / unit + Fraction(1, 2)) * unit
+
+
+def signed_text(value: float, unit: Fraction, digits: int) -> str:
+    if math.isnan(value):
+        return "no data"
+    number = rounded(value, unit)
+    return f"{float(number):{'+' if number else ''},.{digits}f}".replace("-", "\u2212")
+
+
 def markers(page) -> dict[str, str]:
     """Number beside each marker, by field id."""
     return page.evaluate(
@@ -82,9 +100,12 @@ def test_page_from_disk_asks_for_nothing_and_complains_of_nothing(opened, view, 
 
 
 @pytest.mark.parametrize("view", VIEWS)
-@pytest.mark.parametrize("fragment", ["", "#field=field-3", "#field=field-0&measure=p90"])
+@pytest.mark.parametrize(
+    "fragment", ["", "#field=field-3", "#field=field-1", "#field=field-0&measure=p90"]
+)
 def test_page_has_no_sideways_scroll(opened, view, fragment):
     page = opened(view).open(fragment)
+    page.eval_on_selector_all("details", "(all) => all.forEach((one) => { one.open = true; })")
     wide = page.evaluate("document.documentElement.scrollWidth")
     assert wide == VIEWS[view]["viewport"]["width"]
     # Nothing may stand outside the text column either (the map clips what it holds).
@@ -128,7 +149,7 @@ def test_hostile_texts_are_shown_as_text(opened, result):
     assert "<img src=x onerror=window.pwned=1>" in page.inner_text("#field-part .findings")
     assert result.attributions[1] in page.inner_text("#method-part")
     page.click("#all-fields")
-    assert set(page.locator("#fields tbody button").all_text_contents()) == set(names)
+    assert set(page.locator("#fields tbody button > bdi").all_text_contents()) == set(names)
     assert page.locator("img, iframe, b[onclick]").count() == 0
 
 
@@ -218,10 +239,18 @@ def test_no_data_looks_different_from_zero(opened):
     image = "(node) => getComputedStyle(node).backgroundImage"
     assert "gradient" in page.eval_on_selector(none, image)
     assert page.eval_on_selector(zero, image) == "none"
-    page.evaluate(f"location.hash = 'field={EMPTY_FIELD}'")
-    page.wait_for_function("document.querySelector('.big b').textContent === 'no data'")
-    assert set(sum(grid_cells(page), [])) == {"\u2013"}
-    assert page.locator(".band-chart").count() == 0
+
+
+def test_field_without_any_figure_says_so_once_and_why(opened):
+    page = opened().open(f"#field={EMPTY_FIELD}")
+    text = page.inner_text(".headline")
+    assert "no month, no hour, no aircraft" in text
+    assert "That does not mean no risk." in text
+    assert "no figures: <b>no station</b>." in text  # the finding, as text
+    assert page.inner_text(".air") == "Air: no data, no station could be used."
+    assert page.locator(".grid, .band-chart, table.months").count() == 0
+    assert page.locator("#field-part details").count() == 0
+    assert page.locator("#field-part .card").count() == 2  # its runways
 
 
 def test_panel_shows_the_month_table_of_the_frame(opened, result):
@@ -229,12 +258,16 @@ def test_panel_shows_the_month_table_of_the_frame(opened, result):
     frame = result.risk_monthly
     rows = frame[(frame["field"] == "field-0") & (frame["aircraft"] == "aircraft-1")]
     table = page.locator("table.months").first
+    notes = table.locator("xpath=following-sibling::ul[1]").inner_text()
+    assert [line.split(" ", 1)[1] for line in notes.splitlines()] == [
+        note for note in dict.fromkeys(rows["interval_note"]) if note
+    ]
+    letters = {line.split(" ", 1)[1]: line.split(" ", 1)[0] for line in notes.splitlines()}
     for row, line in zip(rows.itertuples(), table.locator("tbody tr").all(), strict=True):
-        interval = f"{share_text(row.ci_low)}-{share_text(row.ci_high)}"
         assert [cell.strip() for cell in line.locator("th, td").all_inner_texts()] == [
             MONTHS[row.month - 1],
             share_text(row.shortfall),
-            interval.replace(" %-", "-").replace("< ", "<"),
+            interval_text(row.ci_low, row.ci_high) + letters.get(row.interval_note, ""),
             share_text(row.days_affected),
             share_text(row.outside_table),
             row.limiting or "none",
@@ -251,7 +284,9 @@ def test_panel_shows_density_altitude_and_humidity_of_the_frame(opened, result):
     for i, line in enumerate(high.locator("tbody tr").all()):
         columns = ["p10", "p25", "p50", "p75", "p90", "p95"]
         expected = [altitude_text(altitude.iloc[i][c]).removesuffix(" ft") for c in columns]
-        assert line.locator("td").all_inner_texts() == [*expected, "14"]
+        assert line.locator("td").all_inner_texts() == [*expected, "14a"]
+    note = altitude["years_note"].iloc[0]
+    assert high.locator("xpath=following-sibling::ul[1]").inner_text() == f"a {note}"
     for i, line in enumerate(wet.locator("tbody tr").all()):
         expected = [share_text(humidity.iloc[i][c] / 100) for c in ("p10", "p50", "p90")]
         assert line.locator("td").all_inner_texts() == expected
@@ -281,7 +316,7 @@ def test_panel_names_runways_stations_sources_findings_and_cautions(opened, resu
     assert "flight manual" in page.inner_text(".cautions")
     method = page.inner_text("#method-part")
     assert "study.json" in method
-    assert "3 findings" in method
+    assert "5 findings" in method
     assert "Invented weather, no rights reserved" in method
     assert "Leaflet 1.9.3" in method
 
@@ -299,7 +334,7 @@ def test_other_bands_and_window_are_labelled_by_their_numbers(opened, result, tm
     page = opened_page.open("#month=7&hour=9")
     assert opened_page.complaints == []
     labels = page.locator("#legend li").all_inner_texts()
-    assert labels == ["< 0.5 %", "0.5-12.5 %", "12.5 % or more", "no data"]
+    assert labels == ["< 0.5 %", "0.5-12.5 %", "12.5 % or more", "no data", "steep: own procedure"]
     assert "06:00 to 20:00" in page.inner_text("#study-line")
     assert page.locator("#period optgroup").count() == 1
     classes = page.evaluate(
@@ -313,6 +348,228 @@ def test_other_bands_and_window_are_labelled_by_their_numbers(opened, result, tm
         number = sum(row.shortfall >= edge for edge in (0.005, 0.125))
         expected = "class-none" if math.isnan(row.shortfall) else f"class-{number}"
         assert classes[row.field] == expected
+
+
+# How the air is known, change, extremes, variants
+
+
+def test_panel_and_list_say_how_the_air_is_known(opened):
+    page = opened().open()
+    marks = dict(
+        zip(
+            listed(page),
+            page.eval_on_selector_all(
+                "#fields tbody tr",
+                "(rows) => rows.map((r) => r.querySelector('.marks')?.innerText)",
+            ),
+            strict=True,
+        )
+    )
+    steep = "steep: own procedure"
+    assert marks == {
+        "field-0": steep,
+        "field-1": "partly estimated \u00b1120 ft",
+        "field-2": "estimated \u00b1170 ft",
+        "field-3": f"estimated \u00b199 ft \u00b7 {steep}",
+        "field-4": "estimated \u00b1130 ft",
+        EMPTY_FIELD: None,
+    }
+    texts = [
+        "Air measured at its own station; pressure < 1 ft (1 sd).",
+        "Air measured at its own station in 40 % of the hours, otherwise estimated from 2 "
+        "stations, \u00b1120 ft of density altitude (1 sd), error learned by hiding 6 stations; "
+        "pressure \u00b16 ft (1 sd).",
+        "Air estimated from 3 stations, \u00b1170 ft of density altitude (1 sd), error from "
+        "planning values, no station could be hidden; pressure \u00b166 ft (1 sd).",
+        "Air estimated from 4 stations, \u00b199 ft of density altitude (1 sd), error learned by "
+        "hiding 6 stations; pressure \u00b17 ft (1 sd).",
+        "Air estimated from 1 station, \u00b1130 ft of density altitude (1 sd), error learned by "
+        "hiding 1 station; pressure \u00b19 ft (1 sd).",
+    ]
+    for index, text in enumerate(texts):
+        page.evaluate(f"location.hash = 'field=field-{index}'")
+        page.wait_for_function(
+            f"document.querySelector('.place')?.innerText.includes('field-{index}')"
+        )
+        assert page.inner_text(".air") == text
+
+
+def test_steep_fields_are_marked_with_text_and_shape_wherever_they_are_shown(opened, result):
+    # METHODS 6: above 2 % published factors do not hold, no automatic pass; 2 % is not above.
+    page = opened().open("#month=1")
+    steep = {f.id for f in result.fields if any(abs(d.slope_pct) > 2 for d in f.runways)}
+    assert 0 < len(steep) < len(result.fields)
+    found = page.evaluate(
+        """() => [...document.querySelectorAll(".marker-box")].map((box) => [box.dataset.field,
+            box.querySelector(".label em")?.textContent, Boolean(box.querySelector(".wedge")),
+            box.getAttribute("aria-label").endsWith("steep: own procedure")])"""
+    )
+    for field, text, wedge, spoken in found:
+        assert (text == "steep: own procedure") == wedge == spoken == (field in steep)
+    # A pale marker without a mark would look like a pass.
+    assert page.is_visible(".marker-box[data-field=field-0] .wedge")
+    page.click(".marker-box[data-field=field-0]")
+    assert "steeper than 2 %: no figure here is a pass" in page.inner_text(".headline")
+
+
+def test_central_share_stands_beside_the_share_where_it_differs(opened, result):
+    page = opened().open("#field=field-1&aircraft=aircraft-0&month=7")
+    rows = result.risk_monthly.query("field == 'field-1' and aircraft == 'aircraft-0'")
+    lines = page.locator("table.months").first.locator("tbody tr").all()
+    differing = 0
+    for row, line in zip(rows.itertuples(), lines, strict=True):
+        small = line.locator("td").first.locator("small").all_inner_texts()
+        if abs(row.shortfall - row.shortfall_central) >= 0.01:
+            assert [text.replace("\u00a0", " ") for text in small] == [
+                f"central {share_text(row.shortfall_central)}"
+            ]
+            differing += 1
+        else:
+            assert small == []
+    assert 0 < differing < 12
+    july = rows.query("month == 7").iloc[0]
+    expected = f"{share_text(july.shortfall_central)} with the air as estimated"
+    assert expected in page.inner_text(".headline")
+
+
+@pytest.mark.parametrize("month", [1, 2, 3])
+def test_headline_interval_carries_its_note(opened, result, month):
+    page = opened().open(f"#field=field-0&aircraft=aircraft-0&month={month}")
+    row = result.risk_monthly.query(
+        f"field == 'field-0' and aircraft == 'aircraft-0' and month == {month}"
+    ).iloc[0]
+    text = page.inner_text(".headline dl div:has(dt:text('90 % interval')) dd")
+    if math.isnan(row.ci_low):
+        assert text == row.interval_note == "no interval below 5 years"
+    else:
+        note = f" ({row.interval_note})" if row.interval_note else ""
+        assert text == interval_text(row.ci_low, row.ci_high) + note
+
+
+@pytest.mark.parametrize("aircraft", [0, 1])
+def test_trends_and_return_levels_are_those_of_the_frames(opened, result, aircraft):
+    page = opened().open(f"#field=field-2&aircraft=aircraft-{aircraft}")
+    part = page.locator("section.part:has(h3:text-is('Trends and extremes'))")
+    assert not part.locator("table").first.is_visible()
+    part.locator("summary").click()
+    air, shares, levels = part.locator("table").all()
+    own = result.trends[result.trends["field"] == "field-2"]
+    for table, who, unit, digits in (
+        (air, "", Fraction(10), 0),
+        (shares, f"aircraft-{aircraft}", Fraction(1, 10), 1),
+    ):
+        rows = own[own["aircraft"] == who]
+        for row, line in zip(rows.itertuples(), table.locator("tbody tr").all(), strict=True):
+            slope, low, high = (
+                signed_text(v, unit, digits)
+                for v in (row.slope_per_decade, row.ci_low, row.ci_high)
+            )
+            missing = slope == "no data"
+            verdict = "fewer than 15 years"
+            if not missing:
+                verdict = "significant" if row.significant else "not significant"
+            if row.break_p_value < 0.1:
+                verdict += "; may be a station move, step in 2017"
+            assert line.locator("th, td").all_inner_texts() == [
+                row.season,
+                slope,
+                "no data" if missing else f"{low} to {high}",
+                str(row.n_years),
+                verdict,
+            ]
+    rows = result.extremes[result.extremes["field"] == "field-2"]
+    for row, line in zip(rows.itertuples(), levels.locator("tbody tr").all(), strict=True):
+        low, level, high = map(altitude_text, (row.ci_low, row.density_altitude_ft, row.ci_high))
+        assert line.locator("th, td").all_inner_texts() == [
+            f"1 in {row.return_period_years}",
+            level,
+            f"{low.removesuffix(' ft')} to {high}",
+        ]
+    assert "22 annual maxima" in levels.locator("caption").inner_text()
+    # What was opened stays open while the panel is drawn anew.
+    page.select_option("#period", "m3")
+    assert part.locator("table").first.is_visible()
+
+
+def test_part_without_trends_and_extremes_says_why(opened):
+    page = opened().open("#field=field-1")
+    part = page.locator("section.part:has(h3:text-is('Trends and extremes'))")
+    assert part.locator("p").all_inner_texts() == [
+        "No trend: it needs 15 years of a season, at most 11 count.",
+        "No return levels: 9 annual maxima, {{20}} are needed.",
+    ]
+    assert part.locator("table, details").count() == 0
+
+
+@pytest.mark.parametrize(("field", "aircraft", "month"), [(0, 1, 7), (3, 0, 1), (1, 0, 2)])
+def test_scenarios_are_those_of_the_frame(opened, result, field, aircraft, month):
+    page = opened().open(f"#field=field-{field}&aircraft=aircraft-{aircraft}&month={month}")
+    part = page.locator("section.part:has(h3:text-is('Scenarios'))")
+    assert not part.locator("table").is_visible()
+    part.locator("summary").click()
+    base, *lines = part.locator("tbody tr").all()
+    where = f"field == 'field-{field}' and aircraft == 'aircraft-{aircraft}' and month == {month}"
+    share = result.risk_monthly.query(where).iloc[0].shortfall
+    assert base.locator("td").first.inner_text() == share_text(share)
+    for row, line in zip(result.scenarios.query(where).itertuples(), lines, strict=True):
+        points = share_text(abs(row.shortfall_change)).removesuffix(" %")
+        down = row.shortfall_change < 0
+        change = ("\u2212" if down else "+") + points + (" point" if points == "1" else " points")
+        if row.shortfall_change == 0:
+            change = "no change"
+        elif points == "< 1":
+            change = f"< 1 point {'down' if down else 'up'}"
+        air = []
+        for p in ("p50", "p90"):
+            moved = getattr(row, f"density_altitude_{p}_change_ft")
+            air.append(altitude_text(getattr(row, f"density_altitude_{p}_ft")))
+            if not math.isnan(moved):
+                air[-1] += "\n" + signed_text(moved, Fraction(10), 0) + " ft"
+        empty = math.isnan(row.shortfall)
+        assert line.locator("th, td").all_inner_texts() == [
+            row.scenario,
+            "no data" if empty else f"{share_text(row.shortfall)}\n{change}",
+            "no data" if empty else interval_text(row.ci_low, row.ci_high),
+            *air,
+        ]
+    page.select_option("#period", "s1")
+    assert "choose a month" in part.inner_text()
+
+
+def test_study_without_scenarios_has_no_such_part(opened, result, tmp_path):
+    path = tmp_path / "plain.html"
+    path.write_text(render_map(replace(result, scenarios=None)), encoding="utf-8")
+    opened_page = opened()
+    opened_page.url = path.as_uri()
+    page = opened_page.open("#field=field-0")
+    assert page.locator("h3:text-is('Scenarios')").count() == 0
+    assert opened_page.complaints == []
+
+
+def test_fields_across_180_degrees_stand_together_with_true_longitudes(opened, result, tmp_path):
+    fields = tuple(
+        replace(f, longitude=longitude, latitude=-17.0 + i / 10)
+        for i, (f, longitude) in enumerate(
+            zip(result.fields, [179.2, 179.9, -179.6, -179.0, 178.5, -178.4], strict=True)
+        )
+    )
+    path = tmp_path / "across.html"
+    path.write_text(render_map(replace(result, fields=fields)), encoding="utf-8")
+    opened_page = opened()
+    opened_page.url = path.as_uri()
+    page = opened_page.open()
+    places = page.evaluate(
+        """() => Object.fromEntries([...document.querySelectorAll(".marker-box")].map((box) =>
+            [box.dataset.field, box.getBoundingClientRect().left]))"""
+    )
+    order = sorted(places, key=places.get)
+    assert order == [f"field-{i}" for i in (4, 0, 1, 2, 3, 5)]
+    assert max(places.values()) - min(places.values()) > 200  # zoomed to the three degrees
+    labels = page.locator(".graticule-label.north span").all_inner_texts()
+    assert {"179\u00b0 E", "180\u00b0", "179\u00b0 W"} <= set(labels)
+    page.evaluate("location.hash = 'field=field-2'")
+    page.wait_for_selector(".place")
+    assert "179\u00b0 36\u2032 W" in page.inner_text(".place")
 
 
 # Use
@@ -445,10 +702,10 @@ def test_classes_differ_in_shape_as_well_as_colour(opened):
     shapes = page.eval_on_selector_all(
         "#legend path", "(paths) => paths.map((p) => p.getAttribute('d'))"
     )
-    assert len(shapes) == 5
-    assert len(set(shapes)) == 5
+    assert len(shapes) == 6  # the last one is the wedge of the steep fields
+    assert len(set(shapes)) == 6
     labels = page.locator("#legend li").all_inner_texts()
-    assert labels == ["< 1 %", "1-5 %", "5-20 %", "20 % or more", "no data"]
+    assert labels == ["< 1 %", "1-5 %", "5-20 %", "20 % or more", "no data", "steep: own procedure"]
 
 
 def test_touch_targets_are_44_px(opened):

@@ -12,11 +12,13 @@ import numpy as np
 import pandas as pd
 
 from climarisk.aircraft import AircraftProfile, PerformanceTable, ScaledFigures
+from climarisk.extremes import EXTREME_COLUMNS
 from climarisk.fields import Field, RunwayDirection
 from climarisk.findings import Finding
 from climarisk.results import (
     DISTRIBUTIONS_HOURLY_COLUMNS,
     DISTRIBUTIONS_MONTHLY_COLUMNS,
+    ESTIMATE_COLUMNS,
     PERCENTILES,
     RISK_HOURLY_COLUMNS,
     RISK_MONTHLY_COLUMNS,
@@ -25,6 +27,9 @@ from climarisk.results import (
     VARIABLES,
     StudyResult,
 )
+from climarisk.rules import interval_notes, years_notes
+from climarisk.scenarios import SCENARIO_COLUMNS
+from climarisk.trend import TREND_COLUMNS
 
 #: Texts that run, break the page or break its layout when they are not shown as text.
 HOSTILE = (
@@ -38,6 +43,16 @@ LONG_NAME = "Upper meadow of the long valley behind the second ridge " * 4 + "x"
 EMPTY_FIELD = "field-5"
 LIMITS = ("take-off to 50 ft", "landing from 50 ft", "rate of climb")
 SEASONS = ("DJF", "MAM", "JJA", "</script>summer")
+SCENARIOS = ("air +2 K, relative humidity unchanged", "</script><b>2015-2024</b>")
+#: Own station's share, stations, error in K and ft, pressure error in ft, lapse, verified.
+ESTIMATES = (
+    (1.0, 0, 0.0, 0.0, 0.3, 6, 6),
+    (0.4, 2, 1.1, 118.4, 5.8, 5, 6),
+    (0.0, 3, 1.6, 172.0, 66.4, 0, 0),
+    (0.0, 4, 0.9, 98.7, 7.2, 6, 6),
+    (0.0, 1, 1.2, 131.6, 9.1, 6, 1),
+    (0.0, 0, 0.0, 0.0, 0.0, 6, 6),
+)
 
 
 def sample_result(n_fields: int = 6, n_aircraft: int = 2, seed: int = 7) -> StudyResult:
@@ -45,6 +60,8 @@ def sample_result(n_fields: int = 6, n_aircraft: int = 2, seed: int = 7) -> Stud
     rng = np.random.default_rng(seed)
     fields = tuple(_field(i) for i in range(n_fields))
     aircraft = tuple(_aircraft(i) for i in range(n_aircraft))
+    risk_monthly = _risk(rng, fields, aircraft, "month")
+    monthly = _distributions(rng, fields, hourly=False)
     return StudyResult(
         title="Summer schedule </title><script>window.pwned=1</script> {{7*7}}",
         fields=fields,
@@ -58,9 +75,9 @@ def sample_result(n_fields: int = 6, n_aircraft: int = 2, seed: int = 7) -> Stud
             "seasons": {"JJA": ["06-01", "08-31"]},
             "radius_km": 100.0,
         },
-        distributions_monthly=_distributions(rng, fields, hourly=False),
+        distributions_monthly=monthly,
         distributions_hourly=_distributions(rng, fields, hourly=True),
-        risk_monthly=_risk(rng, fields, aircraft, "month"),
+        risk_monthly=risk_monthly,
         risk_hourly=_risk(rng, fields, aircraft, "hour"),
         risk_seasonal=_risk(rng, fields, aircraft, "season"),
         station_use=_station_use(fields),
@@ -73,13 +90,22 @@ def sample_result(n_fields: int = 6, n_aircraft: int = 2, seed: int = 7) -> Stud
             ],
             columns=["field", "source", "share"],
         ),
+        estimates=pd.DataFrame(
+            [(f.id, *ESTIMATES[i % len(ESTIMATES)]) for i, f in enumerate(fields)],
+            columns=ESTIMATE_COLUMNS,
+        ),
+        trends=_trends(rng, fields, aircraft),
+        extremes=_extremes(fields),
         attributions=("Invented weather, no rights reserved", HOSTILE[1]),
         findings=(
             Finding("reject", "station", "st-0", "implied-elevation", HOSTILE[2]),
             Finding("caution", "field", "field-0", "slope", "needs a site-specific procedure"),
+            Finding("note", "field", "field-1", "extremes", "9 annual maxima, {{20}} are needed"),
+            Finding("reject", "field", EMPTY_FIELD, "no-station", "no figures: <b>no station</b>."),
             Finding("note", "study", "study", "transfer", "fixed lapse table"),
         ),
         provenance={"version": "0.1.0"},
+        scenarios=_scenarios(rng, risk_monthly, monthly),
     )
 
 
@@ -87,10 +113,11 @@ def _field(i: int) -> Field:
     names = ["Quiet Plateau", *HOSTILE, LONG_NAME]
     # The empty field keeps a hostile name too; later ones get plain numbers.
     name = names[i] if i < 5 else f"Meadow {i}"
+    slope = 3.5 if i % 3 == 0 else 2.0  # 2 % itself is not steep
     runways = (
-        RunwayDirection("09", 92.0, 640.0, 700.0, 640.0, 600.0, 3.5, "grass", True, False),
+        RunwayDirection("09", 92.0, 640.0, 700.0, 640.0, 600.0, slope, "grass", True, False),
         RunwayDirection(
-            "27", 272.0, 640.4, 640.4, 640.4, 640.4, -3.5, "wet-grass", False, True, undeclared=True
+            "27", 272.0, *[640.4] * 4, -slope, "wet-grass", False, True, undeclared=True
         ),
     )
     return Field(
@@ -147,6 +174,7 @@ def _distributions(rng: np.random.Generator, fields: tuple[Field, ...], hourly: 
         if empty:
             values, middle = [math.nan] * len(values), math.nan
         years = 0 if empty else 14
+        note = years_notes(np.array([years]))[0]
         rows.append(
             [
                 *cell[:2],
@@ -157,6 +185,8 @@ def _distributions(rng: np.random.Generator, fields: tuple[Field, ...], hourly: 
                 years / 15,
                 middle,
                 *values,
+                math.nan if empty else spread / 8,
+                note,
             ]
         )
     columns = DISTRIBUTIONS_HOURLY_COLUMNS if hourly else DISTRIBUTIONS_MONTHLY_COLUMNS
@@ -177,12 +207,17 @@ def _risk(rng: np.random.Generator, fields, aircraft, kind: str) -> pd.DataFrame
         share = min(1.0, max(0.0, level + float(rng.normal(0, 0.004))))
         if cell[0] == "field-4" and kind != "season" and cell[2] == 1:
             share = 0.00004  # rare, yet not zero
+        years = 0 if empty else (14, 8, 4)[(number + cell[2]) % 3] if kind == "month" else 14
         numbers = [share, max(0.0, share - 0.04), min(1.0, share + 0.05), share * 0.1]
+        if years < 5:
+            numbers[1:3] = [math.nan, math.nan]
         limiting = LIMITS[(number + cell[2]) % 3] if kind != "season" else LIMITS[0]
-        tail = [limiting if share else "", 0.1, 0.3, min(1.0, share * 2.2)]
+        central = max(0.0, share - 0.03) if number % 2 else share  # with the air as estimated
+        tail = [limiting if share else "", 0.1, 0.3, min(1.0, share * 2.2), central, 90.0 * number]
         if empty:
-            numbers, tail = [math.nan] * 4, [None, math.nan, math.nan, math.nan]
-        rows.append([*cell, 0 if empty else 4200, 0 if empty else 14, *numbers, *tail])
+            numbers, tail = [math.nan] * 4, [None, *[math.nan] * 5]
+        note = interval_notes(np.array([years]))[0]
+        rows.append([*cell, 300 * years, years, *numbers, *tail, note])
     columns = {
         "month": RISK_MONTHLY_COLUMNS,
         "hour": RISK_HOURLY_COLUMNS,
@@ -216,3 +251,48 @@ def _station_use(fields: tuple[Field, ...]) -> pd.DataFrame:
         )
     ]
     return pd.DataFrame(rows, columns=STATION_USE_COLUMNS)
+
+
+def _trends(rng: np.random.Generator, fields, aircraft) -> pd.DataFrame:
+    """Every field but two has trends; spring has too few years, summer breaks in 2017."""
+    rows = []
+    for field, who, season in itertools.product(fields, ["", *(a.id for a in aircraft)], SEASONS):
+        unit = "percentage points per decade" if who else "ft per decade"
+        name = [field.id, who, season, "shortfall" if who else "density_altitude_p90", unit]
+        if season == "MAM" or field.id in ("field-1", EMPTY_FIELD):
+            years = 0 if field.id == EMPTY_FIELD else 11
+            rows.append([*name, years, 2010, 2024, *[math.nan] * 4, None, None, math.nan])
+            continue
+        slope = float(rng.normal(0.4, 1.1)) * (1.0 if who else 150.0)
+        width = abs(float(rng.normal(1.0, 0.2))) * (1.0 if who else 150.0)
+        p_break = 0.02 if season == "JJA" else 0.1
+        figures = [slope, slope - width, slope + width, 0.05, abs(slope) > width]
+        rows.append([*name, 15, 2010, 2024, *figures, 2017, p_break])
+    table = pd.DataFrame(rows, columns=TREND_COLUMNS)
+    whole = dict.fromkeys(["first_year", "last_year", "break_year"], "Int64")
+    return table.astype(whole | {"significant": "boolean"})
+
+
+def _extremes(fields) -> pd.DataFrame:
+    rows = [
+        [f.id, 22, years, 9000.3 + 149.9 * n, 8800.0 + 101.0 * n, 9300.7 + 333.0 * n]
+        for f in fields
+        if f.id not in ("field-1", EMPTY_FIELD)
+        for n, years in enumerate((2, 5, 10, 20, 30, 40))
+    ]
+    return pd.DataFrame(rows, columns=EXTREME_COLUMNS)
+
+
+def _scenarios(rng, risk: pd.DataFrame, monthly: pd.DataFrame) -> pd.DataFrame:
+    air = monthly[monthly["variable"] == "density_altitude"]
+    base = risk.merge(air[["field", "month", "p50", "p90"]], on=["field", "month"])
+    parts = []
+    for name, shift in zip(SCENARIOS, (0.07, -0.031), strict=True):
+        moved = base["shortfall"] + shift * rng.random(len(base)) * (base["shortfall"] > 0)
+        part = base.assign(scenario=name, shortfall=moved.clip(0.0, 1.0))
+        part["shortfall_change"] = part["shortfall"] - base["shortfall"]
+        for p in ("p50", "p90"):
+            part[f"density_altitude_{p}_change_ft"] = 3000.0 * shift
+            part[f"density_altitude_{p}_ft"] = base[p] + 3000.0 * shift
+        parts.append(part[SCENARIO_COLUMNS])
+    return pd.concat(parts, ignore_index=True)

@@ -16,10 +16,12 @@ import pandas as pd
 import pytest
 from hypothesis import given
 from hypothesis import strategies as st
-from sample_result import HOSTILE, sample_result
+from sample_result import HOSTILE, SEASONS, sample_result
 
 from climarisk.outputs import map as map_module
-from climarisk.outputs.map import CAUTIONS, NO_BYTE, NO_FEET, render_map
+from climarisk.outputs import map_data
+from climarisk.outputs.map import render_map
+from climarisk.outputs.map_data import CAUTIONS, NO_BYTE, NO_FEET
 
 # Subresource integrity value published for leaflet.js 1.9.3 (npm package leaflet 1.9.3,
 # dist/leaflet.js); the value in base64 is sha256-WBkoXOwTeyKclOHuWtc+i2uENFpDZ9YPdf5Hf+D7ewM=.
@@ -227,8 +229,8 @@ def test_missing_rows_are_no_data(result):
 def test_share_codes_keep_the_band_and_the_whole_per_cent(hours, edge, data):
     exact = Fraction(data.draw(st.integers(0, hours)), hours)
     band = Fraction(edge, 1000)
-    levels = map_module._share_levels([float(band)])
-    code = int(map_module._share_codes(pd.Series([float(exact)]), levels)[0])
+    levels = map_data._share_levels([float(band)])
+    code = int(map_data._share_codes(pd.Series([float(exact)]), levels)[0])
     level = Fraction(str(levels[code])) if code != 1 else Fraction(1, 10**9)
 
     def shown(share):
@@ -241,17 +243,64 @@ def test_share_codes_keep_the_band_and_the_whole_per_cent(hours, edge, data):
 
 
 def test_codes_keep_no_data_apart():
-    levels = map_module._share_levels([0.01, 0.05, 0.2])
-    codes = map_module._share_codes(pd.Series([np.nan, 0.0, 1e-9, 1.0]), levels)
+    levels = map_data._share_levels([0.01, 0.05, 0.2])
+    codes = map_data._share_codes(pd.Series([np.nan, 0.0, 1e-9, 1.0]), levels)
     assert codes.tolist() == [NO_BYTE, 0, 1, len(levels) - 1]
-    assert len(levels) + map_module.MOST_EDGES < NO_BYTE
-    feet = map_module._feet(pd.Series([np.nan, 0.0, -0.5, 8449.9]))
+    assert len(levels) + map_data.MOST_EDGES < NO_BYTE
+    feet = map_data._feet(pd.Series([np.nan, 0.0, -0.5, 8449.9]))
     assert feet.tolist() == [NO_FEET, 0, -1, 8449]
 
 
 def test_size_of_a_large_study_stays_small():
-    size = len(render_map(sample_result(50, 5)).encode())
-    assert size < 520_000
+    large = sample_result(50, 5)
+    assert len(render_map(replace(large, scenarios=None)).encode()) < 560_000
+    assert len(render_map(large).encode()) < 620_000
+
+
+def test_packed_trends_are_those_of_the_frame(result, parsed):
+    slopes = _array(parsed, "trend_slope_per_decade", "<i2").reshape(6, 3, 4)
+    breaks = _array(parsed, "trend_break", "u1").reshape(6, 3, 4)
+    order = ["", "aircraft-0", "aircraft-1"]
+    for row in result.trends.itertuples():
+        cell = int(row.field[-1]), order.index(row.aircraft), SEASONS.index(row.season)
+        scale = 100 if row.aircraft else 1
+        missing = np.isnan(row.slope_per_decade)
+        assert slopes[cell] == (NO_FEET if missing else np.floor(row.slope_per_decade * scale))
+        # 0.1 itself is not below the level of the test at a confidence of 0.90.
+        broken = row.break_p_value < 0.1
+        assert breaks[cell] == (2017 - 2010 if broken else NO_BYTE)
+
+
+def test_central_share_is_sent_where_it_differs_by_a_whole_per_cent(result, parsed):
+    central = _array(parsed, "month_central", "u1").reshape(6, 2, 12)
+    levels = _study(parsed)["levels"]
+    sent = 0
+    for row in result.risk_monthly.itertuples():
+        cell = central[int(row.field[-1]), int(row.aircraft[-1]), row.month - 1]
+        if abs(row.shortfall - row.shortfall_central) >= 0.01:
+            assert 0.0 <= row.shortfall_central - levels[cell] < 0.01
+            sent += 1
+        else:
+            assert cell == NO_BYTE
+    assert 0 < sent < len(result.risk_monthly)
+
+
+@pytest.mark.parametrize(
+    ("longitudes", "drawn"),
+    [
+        ([179.2, -179.5, 178.0], [179.2, 180.5, 178.0]),
+        ([-179.5], [-179.5]),
+        ([-170.0, 10.0], [-170.0, 10.0]),  # as far apart either way
+        ([-5.0, 8.0], [-5.0, 8.0]),
+        ([], []),
+    ],
+)
+def test_fields_on_both_sides_of_180_degrees_are_drawn_together(result, longitudes, drawn):
+    fields = [replace(result.fields[0], longitude=longitude) for longitude in longitudes]
+    assert map_data.drawn_longitudes(fields) == drawn
+    if longitudes:
+        middle = (min(drawn) + max(drawn)) / 2
+        assert f", {round(middle, 4)}]" in map_module._map_script(fields)
 
 
 def test_study_without_stations_or_shares_still_renders(result):
@@ -262,9 +311,17 @@ def test_study_without_stations_or_shares_still_renders(result):
         risk_seasonal=result.risk_seasonal.iloc[:0],
         station_use=result.station_use.iloc[:0],
         pressure_sources=result.pressure_sources.iloc[:0],
+        estimates=result.estimates.iloc[:0],
+        trends=result.trends.iloc[:0],
+        extremes=result.extremes.iloc[:0],
+        scenarios=None,
         attributions=(),
         findings=(),
     )
     study = _study(_Parsed(render_map(bare)))
     assert study["seasons"] == []
     assert study["fields"][0]["stations"] == []
+    assert study["fields"][0]["estimate"] == []
+    assert study["fields"][0]["extremes"]["levels"] == []
+    assert study["scenarios"] == []
+    assert study["arrays"]["trend_n_years"] == ""

@@ -132,9 +132,21 @@ function showControls() {
 
 // Drawing
 
-function legendItems(measure) {
+function classItems(measure) {
   const item = (number, text) => el("li", null, symbol(number), text);
   return [...SCALES[measure].labels.map((text, i) => item(i, text)), item(-1, NO_DATA)];
+}
+
+function legendItems(measure) {
+  const steep = STUDY.fields.some(isSteep)
+    ? el(
+        "li",
+        null,
+        svg("svg", { viewBox: "-3 -1 19 15", class: "symbol key-wedge", "aria-hidden": "true" }, wedge()),
+        STEEP_MARK
+      )
+    : null;
+  return [...classItems(measure), steep].filter(Boolean);
 }
 
 function showCaption() {
@@ -194,6 +206,7 @@ function draw() {
 }
 
 function start() {
+  let closed = [];
   const { first_year: first, last_year: last } = STUDY.settings;
   byId("study-title").replaceChildren(given(STUDY.title));
   byId("study-line").textContent = [
@@ -217,9 +230,13 @@ function start() {
     draw();
   });
   window.addEventListener("beforeprint", () => {
-    for (const details of document.querySelectorAll("details")) details.open = true;
+    closed = [...document.querySelectorAll("details:not([open])")];
+    for (const details of closed) details.open = true;
     map.invalidateSize({ animate: false });
     fitFields(map);
+  });
+  window.addEventListener("afterprint", () => {
+    for (const details of closed) details.open = false;
   });
   window.addEventListener("keydown", (event) => {
     if (event.key === "Escape" && state.field >= 0) actions.close();

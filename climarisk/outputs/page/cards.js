@@ -1,6 +1,13 @@
 // cards.js: runways and stations of a field, one card each.
 
-const STEEP_PCT = 2;
+// No figure of such a field is a pass: published factors do not hold on the slope.
+const STEEP = "steep";
+const STEEP_REST = ": own procedure";
+const STEEP_MARK = STEEP + STEEP_REST;
+
+function isSteep(field) {
+  return field.runways.some((runway) => runway.steep);
+}
 
 function factList(facts) {
   return el(
@@ -17,7 +24,6 @@ function runwayUse(runway) {
 }
 
 function runwayCard(runway) {
-  const steep = Math.abs(runway.slope) > STEEP_PCT;
   const [tora, toda, asda, lda] = runway.lengths.map(lengthText);
   const slope =
     runway.slope === 0
@@ -42,8 +48,8 @@ function runwayCard(runway) {
       "Runway ",
       given(runway.runway),
       runway.undeclared ? el("span", { class: "tag" }, "undeclared distances") : null,
-      steep
-        ? el("span", { class: "tag" }, "slope over " + STEEP_PCT + " %: needs a site-specific procedure")
+      runway.steep
+        ? el("span", { class: "tag" }, "slope over " + STUDY.steepPct + " %: needs a site-specific procedure")
         : null
     ),
     factList(facts)

@@ -3,6 +3,7 @@
 const STUDY = JSON.parse(byId("study").textContent);
 const NO_BYTE = 255;
 const NO_FEET = -32768;
+const FEET_ARRAYS = /^(scenario_)?altitude_(p|hour)|^trend_(slope|ci)/;
 
 function decode(base64) {
   if (Uint8Array.fromBase64) return Uint8Array.fromBase64(base64);
@@ -15,8 +16,13 @@ function decode(base64) {
 const ARRAYS = {};
 for (const [name, text] of Object.entries(STUDY.arrays)) {
   const bytes = decode(text);
-  const isFeet = name.startsWith("altitude_p") || name.startsWith("altitude_hour");
-  ARRAYS[name] = isFeet ? new Int16Array(bytes.buffer) : bytes;
+  ARRAYS[name] = FEET_ARRAYS.test(name) ? new Int16Array(bytes.buffer) : bytes;
+}
+
+// Rows travel without the names of their columns.
+for (const [name, columns] of Object.entries(STUDY.columns)) {
+  for (const field of STUDY.fields)
+    field[name] = field[name].map((row) => Object.fromEntries(columns.map((column, i) => [column, row[i]])));
 }
 
 // Feet, rounded down to whole ones; null where there is no data.
@@ -59,6 +65,30 @@ function riskYears(field, aircraft, period) {
 function limitingCheck(field, aircraft, period) {
   const word = countAt(riskArray("limiting", period), riskPlace(field, aircraft, period));
   return word === null ? null : STUDY.limits[word];
+}
+
+// The share with the air as estimated, where it differs from the share by a whole per cent.
+function centralShare(field, aircraft, period) {
+  return riskShare("central", field, aircraft, period);
+}
+
+function intervalNote(field, aircraft, period) {
+  const word = countAt(riskArray("note", period), riskPlace(field, aircraft, period));
+  return word === null ? null : STUDY.notes[word];
+}
+
+// A field of which nothing at all is known, whatever the aircraft, month or hour.
+function isEmpty(field) {
+  const none = (name, from, count, missing) =>
+    ARRAYS[name].subarray(from, from + count).every((value) => value === missing);
+  const cells = STUDY.aircraft.length * 12 * 24;
+  return (
+    none("altitude_hour_p50", field * 12 * 24, 12 * 24, NO_FEET) &&
+    none("hour_shortfall", field * cells, cells, NO_BYTE) &&
+    MONTHS.every((_, index) =>
+      STUDY.aircraft.every((_, a) => riskShare("shortfall", field, a, { season: false, index }) === null)
+    )
+  );
 }
 
 // The value of a measure for a field; hour -1 is the whole window.

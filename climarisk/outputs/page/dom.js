@@ -33,6 +33,10 @@ function givenString(text) {
   return "\u2068" + text + "\u2069";
 }
 
+function dataCell(content) {
+  return el("td", { class: [content].flat()[0] === NO_DATA ? "none" : null }, content);
+}
+
 // A table from a caption, column heads and rows of cells; the first cell of a row is its head.
 function table(caption, heads, rows, kind) {
   return el(
@@ -55,7 +59,7 @@ function table(caption, heads, rows, kind) {
         el(
           "tr",
           null,
-          row.map((cell, i) => (i ? el("td", null, cell) : el("th", { scope: "row" }, cell)))
+          row.map((cell, i) => (i ? dataCell(cell) : el("th", { scope: "row" }, cell)))
         )
       )
     )

@@ -59,8 +59,24 @@ function cellText(measure, value) {
 }
 
 function interval(low, high) {
-  if (low === null || high === null) return NO_DATA;
+  if (low === null || high === null) return "none";
   return percentNumber(low) + "-" + percentNumber(high) + " %";
+}
+
+// Feet per decade and the like: the nearest ten.
+function tens(feet) {
+  return feet === null ? NO_DATA : signedWhole(Math.floor((feet + 5) / 10) * 10);
+}
+
+// Hundredths, to the nearest tenth.
+function tenths(hundredths) {
+  return hundredths === null ? NO_DATA : signed(Math.floor((hundredths + 5) / 10) / 10, 1);
+}
+
+// One standard deviation: two digits say enough.
+function errorText(feet) {
+  if (feet < 0.5) return "< 1 ft";
+  return "\u00b1" + grouped(feet < 10 ? Math.round(feet) : Number(feet.toPrecision(2))) + " ft";
 }
 
 function hourText(hour) {
@@ -94,6 +110,10 @@ function degreesText(value, positive, negative) {
   return (
     Math.floor(minutes / 60) + "\u00b0" + (part ? " " + String(part).padStart(2, "0") + "\u2032" : "") + side
   );
+}
+
+function signedWhole(value) {
+  return (value > 0 ? "+" : "") + grouped(value);
 }
 
 function signed(value, digits) {

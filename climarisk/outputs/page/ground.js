@@ -10,6 +10,14 @@ function graticuleStep(span) {
   );
 }
 
+// Meridians go on beyond 180 degrees, where fields on both sides of it are drawn together.
+const FURTHEST_LON = 540;
+
+function meridianText(lon) {
+  const around = ((((lon + 180) % 360) + 360) % 360) - 180;
+  return degreesText(around, Math.abs(around) === 180 ? "" : "E", Math.abs(around) === 180 ? "" : "W");
+}
+
 function marks(from, to, step, limit) {
   const found = [];
   for (let i = Math.ceil(Math.max(from, -limit) / step); i * step <= Math.min(to, limit); i += 1)
@@ -48,7 +56,7 @@ function drawGround(map, group) {
       group.addLayer(graticuleLabel([lat, view.getEast()], degreesText(lat, "N", "S"), "east"));
     }
   }
-  for (const lon of marks(wide.getWest(), wide.getEast(), step, 180)) {
+  for (const lon of marks(wide.getWest(), wide.getEast(), step, FURTHEST_LON)) {
     const [south, north] = [Math.max(wide.getSouth(), -85), Math.min(wide.getNorth(), 85)];
     group.addLayer(
       L.polyline(
@@ -61,7 +69,7 @@ function drawGround(map, group) {
     );
     const at = map.latLngToContainerPoint([view.getNorth(), lon]);
     if (at.x > CORNER_PX && at.x < map.getSize().x - CORNER_PX) {
-      group.addLayer(graticuleLabel([view.getNorth(), lon], degreesText(lon, "E", "W"), "north"));
+      group.addLayer(graticuleLabel([view.getNorth(), lon], meridianText(lon), "north"));
     }
   }
 }

@@ -37,7 +37,16 @@ function listHead(column, state, sortBy) {
 
 function listRow(row, state, choose) {
   const number = classOf(state.measure, row.value);
-  const button = el("button", { type: "button", "data-field": row.field.id }, given(row.field.name));
+  const marked = [
+    estimateMark(row.field),
+    isSteep(row.field) ? el("span", { class: "steep" }, STEEP_MARK) : null,
+  ].filter(Boolean);
+  const button = el(
+    "button",
+    { type: "button", "data-field": row.field.id },
+    given(row.field.name),
+    marked.length ? el("span", { class: "marks" }, marked.flatMap((mark, i) => (i ? [" \u00b7 ", mark] : mark))) : null
+  );
   button.addEventListener("click", () => choose(row.index));
   return el(
     "tr",
@@ -47,7 +56,7 @@ function listRow(row, state, choose) {
     el(
       "td",
       { class: "number value" },
-      el("span", { class: "value-cell" }, symbol(number), measureText(state.measure, row.value))
+      el("span", { class: "value-cell" }, symbol(number, isSteep(row.field)), measureText(state.measure, row.value))
     )
   );
 }

@@ -5,7 +5,7 @@ const MOST_TAB_STOPS = 60;
 const MARKER_SIZE = 44;
 
 function fitFields(map) {
-  const places = STUDY.fields.map((field) => [field.latitude, field.longitude]);
+  const places = STUDY.fields.map((field) => [field.latitude, field.drawn]);
   if (places.length)
     map.fitBounds(places, {
       paddingTopLeft: [76, 44],
@@ -19,7 +19,7 @@ function makeMarker(map, field, index, choose) {
   const root = el("div", { class: "marker" });
   const icon = L.divIcon({ html: root, className: "marker-box", iconSize: [MARKER_SIZE, MARKER_SIZE] });
   const keyboard = STUDY.fields.length <= MOST_TAB_STOPS;
-  const marker = L.marker([field.latitude, field.longitude], { icon, keyboard, riseOnHover: true }).addTo(
+  const marker = L.marker([field.latitude, field.drawn], { icon, keyboard, riseOnHover: true }).addTo(
     map
   );
   const tip = el("div", { class: "tip" });
@@ -40,15 +40,22 @@ function showMarker(entry, index, state) {
   const number = classOf(state.measure, value);
   const text = measureText(state.measure, value);
   entry.number = number;
-  entry.label = el("div", { class: "label" }, el("b", null, text), el("span", null, given(field.name)));
-  entry.root.replaceChildren(symbol(number), entry.label);
+  const steep = isSteep(field);
+  entry.label = el(
+    "div",
+    { class: "label" },
+    el("div", { class: "head" }, el("b", null, text), steep ? el("em", null, STEEP, el("i", null, STEEP_REST)) : null),
+    el("span", null, given(field.name))
+  );
+  entry.root.replaceChildren(symbol(number, steep), entry.label);
   entry.root.classList.toggle("chosen", state.field === index);
   entry.tip.replaceChildren(
     el("b", null, given(field.name)),
-    el("span", null, elevationText(field.elevation)),
-    el("span", null, text)
+    ...[elevationText(field.elevation), text, ...(steep ? [STEEP_MARK] : [])].map((line) =>
+      el("span", null, line)
+    )
   );
-  entry.marker.getElement().setAttribute("aria-label", givenString(field.name) + ", " + text);
+  entry.marker.getElement().setAttribute("aria-label", [givenString(field.name), text, ...(steep ? [STEEP_MARK] : [])].join(", "));
   // The higher the class, the nearer the top of a pile.
   entry.marker.setZIndexOffset(state.field === index ? 100000 : (number + 1) * 1000);
 }
@@ -77,30 +84,35 @@ function labelBox(at, size, side) {
 
 const LABEL_PLACES = ["below", "above", "right", "left"];
 
+const LABEL_KINDS = ["", "no-name", "no-name short"];
+
+// Sizes of every label in each kind. All labels change kind at once: one layout for each.
+function labelSizes(entries) {
+  const sizes = entries.map(() => []);
+  for (const kind of LABEL_KINDS) {
+    for (const entry of entries) entry.label.className = "label " + kind;
+    entries.forEach((entry, index) => {
+      const { width, height } = entry.label.getBoundingClientRect();
+      sizes[index].push({ kind, width, height });
+    });
+  }
+  return sizes;
+}
+
 // The first place where a label covers no other marker or label: with its name, else the number
 // alone, else not at all (the list and the tip still have it). Sizes are read once, then placed.
 function placeLabels(entries, state, container) {
   const frame = container.getBoundingClientRect();
-  entries.forEach((entry) => {
-    entry.label.className = "label";
-  });
   const inside = (box) =>
     box.left >= frame.left && box.right <= frame.right && box.top >= frame.top && box.bottom <= frame.bottom;
   const symbols = entries.map((entry) => entry.root.firstChild.getBoundingClientRect());
-  const sizes = entries.map((entry) => {
-    const [whole, number] = [entry.label, entry.label.firstChild].map((node) => node.getBoundingClientRect());
-    return [
-      { kind: "", width: whole.width, height: whole.height },
-      { kind: "no-name", width: number.width, height: number.height },
-    ];
-  });
+  const sizes = labelSizes(entries);
   const taken = [...container.querySelectorAll(".leaflet-control, .graticule-label span")].map((node) =>
     node.getBoundingClientRect()
   );
   const order = entries.map((_, i) => i);
-  order.sort(
-    (a, b) => (state.field === b) - (state.field === a) || entries[b].number - entries[a].number || a - b
-  );
+  const first = (i) => 2 * (state.field === i) + isSteep(STUDY.fields[i]);
+  order.sort((a, b) => first(b) - first(a) || entries[b].number - entries[a].number || a - b);
   for (const index of order) {
     const free = (box) =>
       inside(box) &&

@@ -3,7 +3,9 @@
 const METHOD = [
   "Every hour of the record gives one value of the air at the field and, for each aircraft, one margin per check: distance or climb available against required times the operator\u2019s factors, in still air, in the most favourable direction that may be used. An hour falls short when a margin is negative, a stated limit is passed, or the air is hotter or higher than the table (\u201coutside table\u201d).",
   "Density altitude is the altitude of the International Standard Atmosphere with the same air density, moisture included. It is computed hour by hour and only then ordered into percentiles (Hyndman and Fan type 8), by month and hour of local standard time; clock changes are not applied. An hour is the nearest full hour.",
-  "A year counts for a cell when at least 80 % of its days have a value there; the number of years is shown. A cell below the rule, and an interval from too few years, is \u201cno data\u201d: it does not mean no risk. Intervals come from resampling whole years.",
+  "A year counts for a cell when at least 80 % of its days have a value there; the number of years is shown. A cell below the rule is \u201cno data\u201d: it does not mean no risk. Intervals come from resampling whole years; from too few years there is none.",
+  "Air estimated from stations nearby carries an error, learned by hiding stations that are near the fields and estimating them from the others. Percentiles, shares and intervals include it; the central share does not.",
+  "Trends by season are Theil-Sen slopes with the Mann-Kendall test, corrected for autocorrelation; a step beside the trend may be a station move. Return levels are a generalised extreme-value distribution fitted to annual maxima by L-moments, to twice the length of the record at most.",
   "Shown here: density altitude to the nearest 100 ft, shares to the whole per cent, \u201c< 1 %\u201d for anything above zero and below one. The CSV files hold the unrounded values.",
 ];
 

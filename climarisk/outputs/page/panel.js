@@ -27,16 +27,15 @@ function shareOf(share, what) {
 function headline(state) {
   const value = measured(state.measure, state.field, state.aircraft, state.period, state.hour);
   const risk = (column) => riskShare(column, state.field, state.aircraft, state.period);
-  const confidence = STUDY.settings.confidence;
   const years = riskYears(state.field, state.aircraft, state.period);
   const limit = limitingCheck(state.field, state.aircraft, state.period);
+  const central = centralShare(state.field, state.aircraft, state.period);
   const profile = STUDY.aircraft[state.aircraft];
+  const steep = isSteep(STUDY.fields[state.field]);
   const facts = [
     ["Shortfall", shareOf(risk("shortfall"), " of hours fall short")],
-    [
-      confidence ? Math.round(confidence * 100) + " % interval" : "Interval",
-      interval(risk("ci_low"), risk("ci_high")),
-    ],
+    ...(central === null ? [] : [["Central share", percent(central) + " with the air as estimated"]]),
+    [confidenceText(), intervalText(state)],
     ["Years that count", String(years || 0)],
     ["Days affected", shareOf(risk("days_affected"), " of days have at least one such hour")],
     ["Outside table", shareOf(risk("outside_table"), " of hours")],
@@ -48,37 +47,91 @@ function headline(state) {
     el(
       "p",
       { class: "big" },
-      symbol(classOf(state.measure, value)),
+      symbol(classOf(state.measure, value), steep),
       el("b", null, measureText(state.measure, value)),
       el("span", null, viewText(state))
     ),
+    steep
+      ? el(
+          "p",
+          { class: "steep-line" },
+          el("span", { class: "tag" }, STEEP_MARK),
+          " A runway is steeper than " + STUDY.steepPct + " %: no figure here is a pass."
+        )
+      : null,
     el("p", { class: "profile" }, given(profile.name), " ", aircraftTag(profile)),
     el("p", { class: "scope" }, periodText(state.period) + ", whole window (" + windowText() + ")"),
     factList(facts)
   );
 }
 
+function intervalText(state) {
+  const risk = (column) => riskShare(column, state.field, state.aircraft, state.period);
+  const note = intervalNote(state.field, state.aircraft, state.period);
+  if (risk("shortfall") === null) return NO_DATA;
+  if (risk("ci_low") === null) return note || "none";
+  return interval(risk("ci_low"), risk("ci_high")) + (note ? " (" + note + ")" : "");
+}
+
+// Notes told once below a table, and the letters that stand for them in it.
+class Notes {
+  constructor() {
+    this.texts = [];
+  }
+
+  letter(text) {
+    if (text === null) return null;
+    if (!this.texts.includes(text)) this.texts.push(text);
+    return el("sup", null, "abcdefgh"[this.texts.indexOf(text)]);
+  }
+
+  list() {
+    if (!this.texts.length) return null;
+    return el(
+      "ul",
+      { class: "notes" },
+      this.texts.map((text) => el("li", null, this.letter(text), " " + text))
+    );
+  }
+}
+
 function riskByMonth(state) {
+  const notes = new Notes();
+  const anyCentral = MONTHS.some(
+    (_, index) => centralShare(state.field, state.aircraft, { season: false, index }) !== null
+  );
   const rows = MONTHS.map((name, index) => {
     const period = { season: false, index };
+    const central = centralShare(state.field, state.aircraft, period);
     const risk = (column) => riskShare(column, state.field, state.aircraft, period);
     const value = risk("shortfall");
     return [
       name,
-      percent(value),
-      interval(risk("ci_low"), risk("ci_high")),
+      [percent(value), central === null ? null : el("small", null, "central " + percent(central).replace(/ /g, "\u00a0"))],
+      value === null
+        ? NO_DATA
+        : [
+            interval(risk("ci_low"), risk("ci_high")),
+            notes.letter(intervalNote(state.field, state.aircraft, period)),
+          ],
       percent(risk("days_affected")),
       percent(risk("outside_table")),
       limitingCheck(state.field, state.aircraft, period) || (value === null ? NO_DATA : "none"),
       String(riskYears(state.field, state.aircraft, period) || 0),
     ];
   });
-  return table(
-    "Hours that fall short in the window, by month",
-    ["Month", "Shortfall", "Interval", "Days affected", "Outside table", "Limiting check", "Years"],
-    rows,
-    "plain-table months"
-  );
+  return [
+    table(
+      "Hours that fall short in the window, by month",
+      ["Month", "Shortfall", "Interval", "Days affected", "Outside table", "Limiting check", "Years"],
+      rows,
+      "plain-table months"
+    ),
+    notes.list(),
+    anyCentral
+      ? el("p", { class: "key" }, "Central: the share with the air as estimated, without its error.")
+      : null,
+  ];
 }
 
 function altitudePart(field) {
@@ -94,10 +147,12 @@ function altitudePart(field) {
     null
   );
   const years = months(countAt, "altitude_years", field);
+  const notes = new Notes();
+  const note = months(countAt, "altitude_note", field);
   const rows = MONTHS.map((name, month) => [
     name,
     ...columns.map((column) => (column[month] === null ? NO_DATA : grouped(hundreds(column[month]) * 100))),
-    String(years[month] || 0),
+    [String(years[month] || 0), notes.letter(note[month] === null ? null : STUDY.notes[note[month]])],
   ]);
   return section(
     "Density altitude by month",
@@ -108,7 +163,8 @@ function altitudePart(field) {
       ["Month", ...shown.map((p) => p.toUpperCase()), "Years"],
       rows,
       "plain-table months"
-    )
+    ),
+    notes.list()
   );
 }
 
@@ -164,12 +220,51 @@ function findingsOf(state) {
     : el("p", { class: "empty" }, "None for this field, its stations and this aircraft.");
 }
 
+function pressureTable(field) {
+  const rows = field.pressure.map((row) => [given(row.source), percent(row.share)]);
+  if (!rows.length) return null;
+  return table("Where the pressure of the hours came from", ["Source", "Share of hours"], rows);
+}
+
+function figures(state, actions) {
+  return [
+    headline(state),
+    section(
+      "Month by hour",
+      el("ul", { class: "legend small" }, classItems(state.measure)),
+      makeGrid(state, actions.chooseCell)
+    ),
+    section("Month by month", ...riskByMonth(state)),
+    altitudePart(state.field),
+    humidityPart(state.field),
+    evidencePart(state),
+    scenarioPart(state),
+  ].filter(Boolean);
+}
+
+// In place of rows upon rows of "no data".
+function emptyPart(field) {
+  const reasons = STUDY.findings.filter(
+    (finding) => finding.severity === "reject" && finding.subject === "field" && finding.id === field.id
+  );
+  return el(
+    "div",
+    { class: "headline" },
+    el("p", { class: "big" }, symbol(-1, isSteep(field)), el("b", null, NO_DATA)),
+    el(
+      "p",
+      null,
+      "The study has no figure for this field: no month, no hour, no aircraft. That does not mean no risk."
+    ),
+    ...reasons.map((finding) => el("p", { class: "reason" }, given(finding.message)))
+  );
+}
+
 function fieldPanel(state, actions) {
   const field = STUDY.fields[state.field];
   const back = el("button", { type: "button", id: "all-fields" }, "\u2190 All fields");
   back.addEventListener("click", actions.close);
   const place = degreesText(field.latitude, "N", "S") + ", " + degreesText(field.longitude, "E", "W");
-  const pressure = field.pressure.map((row) => [given(row.source), percent(row.share)]);
   return [
     back,
     el("h2", { id: "field-heading", tabindex: "-1" }, given(field.name)),
@@ -180,22 +275,13 @@ function fieldPanel(state, actions) {
       " \u00b7 " + elevationText(field.elevation) + " \u00b7 " + place + " \u00b7 ",
       given(field.timezone)
     ),
-    headline(state),
-    section(
-      "Month by hour",
-      el("ul", { class: "legend small" }, legendItems(state.measure)),
-      makeGrid(state, actions.chooseCell)
-    ),
-    section("Month by month", riskByMonth(state)),
-    altitudePart(state.field),
-    humidityPart(state.field),
+    el("p", { class: "air" }, airText(field)),
+    ...(isEmpty(state.field) ? [emptyPart(field)] : figures(state, actions)),
     section("Runways", cards(field.runways, runwayCard, "No runway in the study.")),
     section(
       "Stations used",
       cards(field.stations, stationCard, "No station could be used: no data at this field."),
-      pressure.length
-        ? table("Where the pressure of the hours came from", ["Source", "Share of hours"], pressure)
-        : null
+      pressureTable(field)
     ),
     section("Findings", findingsOf(state)),
     section(

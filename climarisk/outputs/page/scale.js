@@ -137,10 +137,18 @@ function shapePath(number) {
   return number < 0 ? NO_DATA_SHAPE : SHAPES[Math.min(number, SHAPES.length - 1)];
 }
 
-function symbol(number) {
+// A wedge on the symbol of a field with a steep runway; it stays where a label finds no room.
+const WEDGE = "M14,12H-1L14,1Z";
+
+function symbol(number, steep) {
   return svg(
     "svg",
     { viewBox: "-15 -15 30 30", class: "symbol " + className(number), "aria-hidden": "true" },
-    svg("path", { d: shapePath(number) })
+    svg("path", { d: shapePath(number), class: "shape" }),
+    steep ? wedge() : null
   );
+}
+
+function wedge() {
+  return svg("path", { d: WEDGE, class: "wedge" });
 }
