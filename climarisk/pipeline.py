@@ -279,7 +279,7 @@ def field_tables(
     lapse = lapse_for(field, stations, clock, study.radius_km)
     air = air_at_field(field, chosen, stations, clock, lapse)
     air = warmed(air, study.warmer_k, study.warmer_holds, field.elevation_m)
-    sd_k = error.sd_k(air.carried_m, clock.month, clock.hour)
+    sd_k = error.sd_k(air.carried_m, clock.month, clock.hour, air.carried_km)
     values = _levels_of_variables(field, air, error.hour_levels[:, None] * sd_k)
     sds = errors_of_variables(field, air, sd_k)
     sd_ft = sds["density_altitude"]

@@ -106,20 +106,13 @@ def estimate(
     carried = known & ~own
     used = (air.share[:, carried] > 0).any(axis=1) if len(chosen) else np.zeros(0, bool)
 
-    complete = known & np.isfinite(air.pressure_hpa) & np.isfinite(air.vapour_pressure_hpa)
-    pressure_ft = pressure_error_ft(
-        air.pressure_error_hpa[complete],
-        air.pressure_hpa[complete],
-        air.temperature_c[complete],
-        air.vapour_pressure_hpa[complete],
-    )
     row = (
         field.id,
         float(own.sum() / max(known.sum(), 1)),
         int(used.sum()),
         _typical(error.sd_k[carried]),
         _typical(error.sd_ft[carried]),
-        _typical(np.asarray(pressure_ft)),
+        _typical(_pressure_error_ft(air, known)),
         error.lapse_stations,
         error.verified_stations,
     )
@@ -280,11 +273,25 @@ def _pressure_texts(
         )
         texts.append(
             f"some or all months have no pressure of the field's stations; in its place stands "
-            f"{what}, good to {_typical(air.pressure_error_hpa[stand_in]):.1f} hPa (about 33 ft "
-            f"each). Default values, uncalibrated sea-level pressure above "
+            f"{what}, good to {_typical(_pressure_error_ft(air, stand_in)):.0f} ft of density "
+            f"altitude. Default values, uncalibrated sea-level pressure above "
             f"{SEA_LEVEL_LIMIT_M:.0f} m and stations of doubtful elevation are not used."
         )
     return texts
+
+
+def _pressure_error_ft(air: FieldAir, hours: np.ndarray) -> np.ndarray:
+    """What the pressure's error is worth in density altitude at some hours, ft."""
+    complete = hours & np.isfinite(air.pressure_hpa) & np.isfinite(air.vapour_pressure_hpa)
+    complete &= np.isfinite(air.temperature_c)
+    return np.asarray(
+        pressure_error_ft(
+            air.pressure_error_hpa[complete],
+            air.pressure_hpa[complete],
+            air.temperature_c[complete],
+            air.vapour_pressure_hpa[complete],
+        )
+    )
 
 
 def _typical(values: np.ndarray) -> float:

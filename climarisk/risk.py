@@ -87,7 +87,8 @@ def level_weights(n_levels: int, persistence: float) -> np.ndarray:
 
     drawn = np.random.default_rng(SEED + 1).standard_normal(RESAMPLES)[:, None]
     edges = norm.ppf(np.arange(n_levels + 1) / n_levels)[None, :]
-    passed = norm.cdf((edges - np.sqrt(persistence) * drawn) / np.sqrt(1.0 - persistence))
+    rest = np.sqrt(max(1.0 - persistence, 1e-9))  # all of it may persist
+    passed = norm.cdf((edges - np.sqrt(persistence) * drawn) / rest)
     return np.diff(passed, axis=1)
 
 

@@ -17,6 +17,8 @@ _SMALLEST_H = 12
 #: A lag is believed where it lifts the correlation by this much (measured on real networks:
 #: well-dated stations gain less than 0.01, misdated ones more than 0.05).
 _GAIN = 0.04
+#: A lag is believed where the moved series has at least this correlation.
+_LEAST_CORRELATION = 0.3
 #: Neighbours compared with: within this distance, at least so many, at most so many.
 _NEIGHBOUR_KM, _FEWEST, _MOST = 150.0, 2, 10
 #: Common hours needed, in steps: a season.
@@ -106,7 +108,9 @@ def _lag(own: np.ndarray, others: Sequence[np.ndarray]) -> Misdating | None:
     fit = {s * _STEP_H: _correlation(own, reference, s) for s in steps}
     as_dated = fit[0]
     best = max(fit, key=lambda lag: fit[lag] if np.isfinite(fit[lag]) else -2.0)
-    if not np.isfinite(as_dated) or abs(best) < _SMALLEST_H or fit[best] - as_dated < _GAIN:
+    if not np.isfinite(as_dated) or abs(best) < _SMALLEST_H:
+        return None
+    if fit[best] - as_dated < _GAIN or fit[best] < _LEAST_CORRELATION:
         return None
     return Misdating(best, as_dated, fit[best])
 

@@ -11,6 +11,7 @@ import pandas as pd
 from climarisk.atmosphere import (
     G0,
     R_DRY,
+    T0_K,
     hypsometric_pressure_hpa,
     isa_pressure_hpa,
     vapour_pressure_hpa,
@@ -131,6 +132,8 @@ class FieldAir:
     carried_m : ndarray, shape (n_hours,)
         Weighted height over which the temperature was carried; NaN where the field's own
         station gave it.
+    carried_km : ndarray, shape (n_hours,)
+        Weighted distance over which it was carried; NaN likewise.
     pressure_source : ndarray of uint8, shape (n_hours,)
         Index into `climarisk.pressure.SOURCES`; `NO_PRESSURE` where there is none.
     pressure_error_hpa : ndarray, shape (n_hours,)
@@ -142,6 +145,7 @@ class FieldAir:
     pressure_hpa: np.ndarray
     share: np.ndarray
     carried_m: np.ndarray
+    carried_km: np.ndarray
     pressure_source: np.ndarray
     pressure_error_hpa: np.ndarray
 
@@ -281,18 +285,19 @@ def air_at_field(
     n = len(clock.hour)
     carried_t, carried_e = np.full((len(chosen), n), np.nan), np.full((len(chosen), n), np.nan)
     for i, c in enumerate(chosen):
-        dz_km = c.height_difference_m / 1000.0
+        dz_km = 0.0 if c.on_spot else c.height_difference_m / 1000.0
         carried_t[i] = c.air.temperature_c - k_per_km * dz_km
         carried_e[i] = c.air.vapour_pressure_hpa * np.exp(-decay * dz_km)
     temperature, share = _blend(carried_t, chosen)
-    vapour, _ = _blend(carried_e, chosen)
+    vapour, vapour_share = _blend(carried_e, chosen)
     own = np.array([c.on_spot for c in chosen], bool)
-    from_own = share[own].sum(axis=0) > 0
-    carried = (share.sum(axis=0) > 0) & ~from_own
+    carried = (share.sum(axis=0) > 0) & ~(share[own].sum(axis=0) > 0)
     heights = np.array([abs(c.height_difference_m) for c in chosen])
-    carried_m = np.where(carried, heights @ share, np.nan)
+    distances = np.array([c.distance_km for c in chosen])
+    # Air as measured on the spot is left as it is; any other mixture is at most saturated.
+    measured = (share[own].sum(axis=0) > 0) & (vapour_share[own].sum(axis=0) > 0)
     saturation = vapour_saturated_hpa(temperature, field.elevation_m)
-    vapour = np.where(from_own, vapour, np.minimum(vapour, saturation))
+    vapour = np.where(measured, vapour, np.minimum(vapour, saturation))
     pressure = _pressure(field, chosen, temperature, vapour)
     _fill_climatological(field, region, clock, temperature, pressure)
     return FieldAir(
@@ -300,7 +305,8 @@ def air_at_field(
         vapour,
         pressure.pressure_hpa,
         share,
-        carried_m,
+        np.where(carried, heights @ share, np.nan),
+        np.where(carried, distances @ share, np.nan),
         pressure.source,
         pressure.error_hpa,
     )
@@ -391,9 +397,10 @@ def _carried_error_hpa(c: Candidate, carried_hpa: np.ndarray) -> np.ndarray:
 
     One end of the column is measured, the other carried: half the planning error of its mean.
     """
-    column_k = planning_sd_k(np.abs(c.height_difference_m)) / 2 if c.height_difference_m else 0.0
-    kelvin = c.air.temperature_c + KELVIN_AT_0C
-    per_kelvin = G0 * np.abs(c.height_difference_m) * carried_hpa / (R_DRY * kelvin**2)
+    dz = np.abs(c.height_difference_m)
+    column_k = planning_sd_k(dz, c.distance_km) / 2 if not c.on_spot else 0.0
+    kelvin = np.where(np.isfinite(c.air.temperature_c), c.air.temperature_c + KELVIN_AT_0C, T0_K)
+    per_kelvin = G0 * dz * carried_hpa / (R_DRY * kelvin**2)
     return np.hypot(c.air.pressure_error_hpa, np.nan_to_num(per_kelvin) * column_k)
 
 

@@ -346,7 +346,7 @@ def _field_row(
     chosen = candidates(field, stations, study.radius_km)
     lapse = lapse_for(field, stations, clock, study.radius_km)
     air = air_at_field(field, chosen, stations, clock, lapse)
-    sd_k = error.sd_k(air.carried_m, clock.month, clock.hour)
+    sd_k = error.sd_k(air.carried_m, clock.month, clock.hour, air.carried_km)
     spread = FieldError(
         sd_k,
         errors_of_variables(field, air, sd_k)["density_altitude"],

@@ -193,7 +193,7 @@ def _references(
 def _covered(shown: Shown, known: np.ndarray, nested: TransferError) -> np.ndarray:
     """1 for each hour within the central 80 % interval of the others' errors, else 0."""
     error = shown.error
-    sd_k = nested.sd_k(error.carried_m, error.month, error.hour)[known]
+    sd_k = nested.sd_k(error.carried_m, error.month, error.hour, error.carried_km)[known]
     low, high = (nested.quantile(p) * sd_k for p in INTERVAL)
     return ((error.error_k[known] >= low) & (error.error_k[known] <= high)).astype(float)
 
@@ -241,7 +241,7 @@ def _cell_measures(shown: Shown, nested: TransferError) -> dict[str, np.ndarray]
     error, known = shown.error, shown.known
     cell = shown.hidden.clock.month_hour[known]
     enough = np.bincount(cell, minlength=288) >= CELL_HOURS
-    sd_k = nested.sd_k(error.carried_m, error.month, error.hour)[known]
+    sd_k = nested.sd_k(error.carried_m, error.month, error.hour, error.carried_km)[known]
     central = shown.hidden.estimate.temperature_c[known]
     levels = central[None, :] + nested.hour_levels[:, None] * sd_k[None, :]
     share = np.array([0.5, 0.9])

@@ -136,4 +136,5 @@ def errors(hidden: Hidden) -> HiddenStation:
         clock.hour,
         clock.year,
         hidden.estimate.temperature_c,
+        hidden.estimate.carried_km,
     )

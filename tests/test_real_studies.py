@@ -327,11 +327,6 @@ def test_alpine_has_figures_without_any_pressure(alpine):
     assert july_afternoon["n_years"] == 1
 
 
-@pytest.mark.xfail(
-    strict=True,
-    raises=RuntimeWarning,
-    reason="defect: a learned dispersion of 0 makes place_share 1, which divides by zero",
-)
 def test_california_runs_through_its_mapping(tmp_path, shared, mappings):
     folder = shared / "stations" / "california"
     stations = [

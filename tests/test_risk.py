@@ -416,11 +416,6 @@ def test_level_weights_are_the_levels_of_a_place_whose_error_persists(persistenc
     assert 0.85 * persistence - 1e-9 <= of_place.var() <= persistence + 1e-9
 
 
-@pytest.mark.xfail(
-    strict=True,
-    reason="defect: an error that persists altogether (place_share 1) divides by zero",
-    raises=RuntimeWarning,
-)
 def test_level_weights_of_an_error_that_persists_altogether():
     weights = risk.level_weights(9, 1.0)
     np.testing.assert_allclose(weights.sum(axis=1), 1.0)

@@ -150,9 +150,6 @@ def test_a_season_in_common_is_needed():
         assert list(misdated(stations, short, MONTH_HOUR)) == found
 
 
-@pytest.mark.xfail(
-    strict=True, reason="defect: a chance gain of a correlation that stays near nothing is believed"
-)
 def test_stations_without_weather_in_common_accuse_nobody():
     stations, _ = network(5)
     unrelated = [weather(seed) for seed in range(5)]

@@ -681,9 +681,6 @@ def test_air_at_the_field_is_never_more_than_saturated(to_m):
     assert relative_humidity(got, to_m).max() <= 100.0 + 1e-6
 
 
-@pytest.mark.xfail(
-    strict=True, reason="defect: no cap where the own station gives the temperature alone"
-)
 def test_humidity_of_a_warm_neighbour_does_not_oversaturate_the_fields_own_cold_air():
     cold = on_grid(station("S"), temperature_c=5.0, dew_point_c=np.nan)
     warm = on_grid(station("A", latitude=46.2), temperature_c=20.0, dew_point_c=18.0)

@@ -404,7 +404,7 @@ def test_files_are_the_same_each_time_and_leave_others_alone(hostile, tmp_path):
 
 def test_a_folder_that_cannot_be_written_is_one_sentence(hostile, tmp_path):
     (tmp_path / "out").write_text("a file")
-    with pytest.raises(OutputError, match="verification cannot be written"):
+    with pytest.raises(OutputError, match="results cannot be written"):
         write_verification(hostile, tmp_path / "out")
     assert [p.name for p in tmp_path.iterdir()] == ["out"]
 
