@@ -75,6 +75,8 @@ _MATTERS_HPA_PER_K = 0.1
 #: 205 station-months of typical-year and tropical stations; this is between.
 _DERIVED_SHARE = 0.25
 _AFTERNOON = (12, 17)
+#: An afternoon that is less wrong than a reporting step of 1 hPa, ft, is not told.
+_LEAST_FT = 30.0
 
 
 def kind_findings(
@@ -400,6 +402,8 @@ def _derived_month(key: int, table: pd.DataFrame, elevation_m: float) -> Derived
     afternoon = (hour >= _AFTERNOON[0]) & (hour <= _AFTERNOON[1])
     too_high = expected * float(np.nanmean(off[afternoon]))
     feet = float(pressure_error_ft(abs(too_high), pressure, float(t[afternoon].mean())))
+    if feet < _LEAST_FT:
+        return None
     signed = float(np.copysign(feet, too_high))
     return DerivedMonth(key // 12, key % 12 + 1, slope, expected, too_high, signed)
 
