@@ -43,10 +43,11 @@ from climarisk.results import (
     RISK_HOURLY_COLUMNS,
     RISK_MONTHLY_COLUMNS,
     RISK_SEASONAL_COLUMNS,
+    RISK_YEARLY_COLUMNS,
     VARIABLES,
     StudyResult,
 )
-from climarisk.risk import Hours, risk_tables
+from climarisk.risk import Hours, risk_tables, yearly_counts
 from climarisk.rules import reporting_findings
 from climarisk.store import Store
 from climarisk.study import Study, read_study
@@ -78,6 +79,7 @@ class FieldTables:
     risk_monthly: pd.DataFrame
     risk_hourly: pd.DataFrame
     risk_seasonal: pd.DataFrame
+    risk_yearly: pd.DataFrame
     station_use: pd.DataFrame
     pressure_sources: pd.DataFrame
     estimate: pd.DataFrame
@@ -165,6 +167,7 @@ def evaluate(study: Study, weather: Weather, progress: Progress = quiet) -> Stud
         risk_monthly=_stacked([p.risk_monthly for p in parts]),
         risk_hourly=_stacked([p.risk_hourly for p in parts]),
         risk_seasonal=_stacked([p.risk_seasonal for p in parts]),
+        risk_yearly=_stacked([p.risk_yearly for p in parts]),
         station_use=use,
         pressure_sources=pressure,
         estimates=estimates,
@@ -299,7 +302,8 @@ def field_tables(
         _stacked([scored.monthly for scored in risk]),
         _stacked([scored.hourly for scored in risk]),
         _stacked([scored.seasonal for scored in risk]),
-        station_use(field, chosen, air, clock, grid),
+        _stacked([scored.yearly for scored in risk]),
+        station_use(field, chosen, air, clock),
         pressure_shares(field, air, clock),
         estimate(field, chosen, air, field_error, clock),
         trends,
@@ -436,6 +440,7 @@ class _Scored:
     monthly: pd.DataFrame
     hourly: pd.DataFrame
     seasonal: pd.DataFrame
+    yearly: pd.DataFrame
     known: np.ndarray
     shortfall: np.ndarray
 
@@ -477,13 +482,18 @@ def _risk(scene: _Scene, profile: AircraftProfile) -> _Scored:
         scene.persistence,
         scene.sd_ft[known],
     )
-    tables = risk_tables(scored, study.seasons)
-    columns = (RISK_MONTHLY_COLUMNS, RISK_HOURLY_COLUMNS, RISK_SEASONAL_COLUMNS)
-    monthly, hourly, seasonal = (
-        table.assign(field=field.id, aircraft=profile.id)[wanted]
-        for table, wanted in zip(tables, columns, strict=True)
+    named = {"field": field.id, "aircraft": profile.id}
+    tables = [*risk_tables(scored, study.seasons), yearly_counts(scored)]
+    columns = (
+        RISK_MONTHLY_COLUMNS,
+        RISK_HOURLY_COLUMNS,
+        RISK_SEASONAL_COLUMNS,
+        RISK_YEARLY_COLUMNS,
     )
-    return _Scored(profile.id, monthly, hourly, seasonal, known, central.shortfall)
+    monthly, hourly, seasonal, yearly = (
+        table.assign(**named)[wanted] for table, wanted in zip(tables, columns, strict=True)
+    )
+    return _Scored(profile.id, monthly, hourly, seasonal, yearly, known, central.shortfall)
 
 
 def _moved(central: Margins, places: np.ndarray, moved: Margins) -> Margins:

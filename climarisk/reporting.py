@@ -57,20 +57,17 @@ class FieldError:
 
 
 def station_use(
-    field: Field,
-    chosen: Sequence[Candidate],
-    air: FieldAir,
-    clock: LocalClock,
-    grid: np.ndarray,
+    field: Field, chosen: Sequence[Candidate], air: FieldAir, clock: LocalClock
 ) -> pd.DataFrame:
     """One row per candidate station of a field; columns `STATION_USE_COLUMNS`."""
     share = air.share[:, clock.in_period]
     n_used = max(int((share.sum(axis=0) > 0).sum()), 1)
-    hours = grid[clock.in_period]
+    first_day = np.datetime64(f"{clock.first_year}-01-01")
+    day = clock.day[clock.in_period]
     rows = []
     for i, c in enumerate(chosen):
         known = np.isfinite(c.air.temperature_c[clock.in_period])
-        span = hours[known].astype("datetime64[h]").astype("datetime64[D]")
+        span = first_day + day[known].astype("timedelta64[D]")
         rows.append(
             (
                 field.id,

@@ -52,6 +52,8 @@ RISK_MONTHLY_COLUMNS = ["field", "aircraft", "month", *_RISK]
 RISK_HOURLY_COLUMNS = ["field", "aircraft", "month", "hour", *_RISK]
 RISK_SEASONAL_COLUMNS = ["field", "aircraft", "season", *_RISK]
 
+RISK_YEARLY_COLUMNS = ["field", "aircraft", "month", "year", "n_hours", "shortfall_hours"]
+
 #: Columns of `StudyResult.station_use`: one row per field and station used at it.
 STATION_USE_COLUMNS = [
     "field",
@@ -100,6 +102,8 @@ class StudyResult:
         completeness rule is NaN.
     risk_monthly, risk_hourly, risk_seasonal : DataFrame
         Columns `RISK_MONTHLY_COLUMNS` and so on; shares 0-1.
+    risk_yearly : DataFrame
+        Columns `RISK_YEARLY_COLUMNS`: each month of each year inside the hours window.
     station_use : DataFrame
         Columns `STATION_USE_COLUMNS`.
     pressure_sources : DataFrame
@@ -127,6 +131,7 @@ class StudyResult:
     risk_monthly: pd.DataFrame
     risk_hourly: pd.DataFrame
     risk_seasonal: pd.DataFrame
+    risk_yearly: pd.DataFrame
     station_use: pd.DataFrame
     pressure_sources: pd.DataFrame
     estimates: pd.DataFrame

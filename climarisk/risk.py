@@ -272,16 +272,101 @@ def risk_tables(
         ``field`` and ``aircraft``.
     """
     clock, known = hours.clock, hours.known
-    on_grid = np.zeros(len(clock.hour), bool)
-    on_grid[known] = True
-    complete = completeness(on_grid, clock)
-    used, inside = complete.used[known], hours.inside[known]
+    used, inside = _used(hours), hours.inside[known]
     hourly = shares_by_cell(hours, used, clock.month_hour[known], 288)
     hourly.insert(0, "month", np.repeat(np.arange(1, 13), 24))
     hourly.insert(1, "hour", np.tile(np.arange(24), 12))
     monthly = shares_by_cell(hours, used & inside, clock.month[known], 12)
     monthly.insert(0, "month", np.arange(1, 13))
     return monthly, hourly, _seasonal(hours, used & inside, seasons)
+
+
+def _used(hours: Hours) -> np.ndarray:
+    """Which of the known hours belong to counting years, shape (n_known,)."""
+    on_grid = np.zeros(len(hours.clock.hour), bool)
+    on_grid[hours.known] = True
+    return completeness(on_grid, hours.clock).used[hours.known]
+
+
+def yearly_counts(hours: Hours) -> pd.DataFrame:
+    """Hours and shortfall hours of each month of each year, inside the hours window.
+
+    Parameters
+    ----------
+    hours : Hours
+
+    Returns
+    -------
+    DataFrame
+        ``month`` 1-12, ``year``, ``n_hours``, ``shortfall_hours`` (the mean over the levels of
+        the transfer error, so not whole); months without an hour are absent.
+    """
+    clock = hours.clock
+    levels = hours.levels or (hours.central,)
+    places = np.flatnonzero(_used(hours) & hours.inside[hours.known])
+    where = hours.known[places]
+    index = clock.month[where] * clock.n_years + clock.year[where]
+    size = 12 * clock.n_years
+    total = np.bincount(index, minlength=size)
+    fallen = sum(np.bincount(index, m.shortfall[places], size) for m in levels) / len(levels)
+    some = np.flatnonzero(total)
+    return pd.DataFrame(
+        {
+            "month": some // clock.n_years + 1,
+            "year": some % clock.n_years + clock.first_year,
+            "n_hours": total[some],
+            "shortfall_hours": np.asarray(fallen)[some],
+        }
+    )
+
+
+def paired_difference(
+    first: pd.DataFrame, second: pd.DataFrame, years: range, confidence: float
+) -> pd.DataFrame:
+    """Difference of two shortfall shares by month, with an interval from the same resampled years.
+
+    Parameters
+    ----------
+    first, second : DataFrame
+        As `yearly_counts` returns them: two fields, two aircraft, or a field and its scenario.
+    years : range
+        The years of the study.
+    confidence : float
+
+    Returns
+    -------
+    DataFrame, shape (12, 4)
+        ``month``, ``difference`` (first minus second), ``ci_low``, ``ci_high``; no interval
+        below five years with hours in either.  The part of the transfer error that stays with
+        a place is not in it.
+    """
+    weights = year_weights(len(years))
+    counts = [_counts_of(table, years) for table in (first, second)]
+    rows = []
+    for month in range(12):
+        share, drawn = [], []
+        for total, fallen in counts:
+            n, k = total[month], fallen[month]
+            share.append(k.sum() / n.sum() if n.sum() else np.nan)
+            with np.errstate(invalid="ignore"):
+                drawn.append((weights @ k) / (weights @ n))
+        some = int(min((total[month] > 0).sum() for total, _ in counts))
+        low = high = np.nan
+        if some >= YEARS.interval:
+            tail = expanded_tail(some, confidence)
+            low, high = np.nanquantile(
+                drawn[0] - drawn[1], [tail, 1.0 - tail], method="median_unbiased"
+            )
+        rows.append((month + 1, share[0] - share[1], low, high))
+    return pd.DataFrame(rows, columns=["month", "difference", "ci_low", "ci_high"])
+
+
+def _counts_of(table: pd.DataFrame, years: range) -> tuple[np.ndarray, np.ndarray]:
+    """Hours and shortfall hours by month and year, each of shape (12, n_years)."""
+    total, fallen = np.zeros((12, len(years))), np.zeros((12, len(years)))
+    place = (table["month"].to_numpy() - 1, table["year"].to_numpy() - years.start)
+    total[place], fallen[place] = table["n_hours"], table["shortfall_hours"]
+    return total, fallen
 
 
 def _seasonal(hours: Hours, pooled: np.ndarray, seasons: Sequence[Season]) -> pd.DataFrame:

@@ -11,6 +11,7 @@ from climarisk.errors import InputError
 from climarisk.pipeline import evaluate
 from climarisk.progress import Progress, quiet
 from climarisk.results import StudyResult
+from climarisk.risk import paired_difference
 from climarisk.study import Study
 from climarisk.weather import Weather
 
@@ -26,6 +27,8 @@ SCENARIO_COLUMNS = [
     "ci_low",
     "ci_high",
     "shortfall_change",
+    "change_ci_low",
+    "change_ci_high",
     "density_altitude_p50_ft",
     "density_altitude_p90_ft",
     "density_altitude_p50_change_ft",
@@ -119,18 +122,39 @@ def compare(
     reference = _monthly(base)
     tables = []
     for variant in variants:
-        table = _monthly(evaluate(variant.study, weather, progress))
-        joined = table.merge(reference, on=["field", "aircraft", "month"], suffixes=("", "_base"))
+        result = evaluate(variant.study, weather, progress)
+        keys = ["field", "aircraft", "month"]
+        joined = _monthly(result).merge(reference, on=keys, suffixes=("", "_base"))
+        joined = joined.merge(_changes(result, base), on=keys, how="left")
         joined["scenario"] = variant.name
-        joined["shortfall_change"] = joined["shortfall"] - joined["shortfall_base"]
         for p in ("p50", "p90"):
             column = f"density_altitude_{p}_ft"
             change = joined[column] - joined[f"{column}_base"]
             joined[f"density_altitude_{p}_change_ft"] = change
         tables.append(joined[SCENARIO_COLUMNS])
-    return (
-        pd.concat(tables, ignore_index=True) if tables else pd.DataFrame(columns=SCENARIO_COLUMNS)
-    )
+    return pd.concat(tables, ignore_index=True)
+
+
+def _changes(variant: StudyResult, base: StudyResult) -> pd.DataFrame:
+    """Change of every monthly share with its interval, from the same resampled years."""
+    years = range(base.settings["first_year"], base.settings["last_year"] + 1)
+    keys = ["field", "aircraft"]
+    own, other = (dict(list(r.risk_yearly.groupby(keys))) for r in (variant, base))
+    empty = base.risk_yearly.iloc[:0]
+    tables = []
+    for field in base.fields:
+        for profile in base.aircraft:
+            pair = (field.id, profile.id)
+            table = paired_difference(
+                own.get(pair, empty), other.get(pair, empty), years, base.settings["confidence"]
+            )
+            tables.append(table.assign(field=field.id, aircraft=profile.id))
+    names = {
+        "difference": "shortfall_change",
+        "ci_low": "change_ci_low",
+        "ci_high": "change_ci_high",
+    }
+    return pd.concat(tables, ignore_index=True).rename(columns=names)
 
 
 def _monthly(result: StudyResult) -> pd.DataFrame:

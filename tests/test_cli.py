@@ -21,6 +21,7 @@ FILES = {
     "risk_monthly.csv",
     "risk_hourly.csv",
     "risk_seasonal.csv",
+    "risk_yearly.csv",
     "trends.csv",
     "extremes.csv",
     "fields.gpkg",
@@ -60,7 +61,7 @@ def test_run_writes_the_contract_and_says_where(study_folder, command, tmp_path,
     assert done.code == 0
     assert tree(tmp_path / "results") == FILES
     assert "Map: results/map.html" in done.out
-    assert "10 files in results" in done.out
+    assert "11 files in results" in done.out
     assert "caution: aircraft tourer" in done.err, "findings go to stderr"
     assert "caution" not in done.out
     assert "%|" not in done.err, "no progress bar where stderr is no terminal"

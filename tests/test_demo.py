@@ -15,6 +15,7 @@ CONTRACT = {
     "risk_monthly.csv",
     "risk_hourly.csv",
     "risk_seasonal.csv",
+    "risk_yearly.csv",
     "trends.csv",
     "extremes.csv",
     "fields.gpkg",

@@ -3,6 +3,7 @@
 from calendar import monthrange
 
 import numpy as np
+import pandas as pd
 import pytest
 from scipy import stats
 
@@ -420,3 +421,42 @@ def test_level_weights_of_an_error_that_persists_altogether():
     weights = risk.level_weights(9, 1.0)
     np.testing.assert_allclose(weights.sum(axis=1), 1.0)
     assert (weights.max(axis=1) > 0.99).all()
+
+
+def counts(table):
+    rows = [(m, y, n, k) for (m, y), (n, k) in table.items()]
+    return pd.DataFrame(rows, columns=["month", "year", "n_hours", "shortfall_hours"])
+
+
+def test_yearly_counts_add_up_to_the_monthly_share():
+    clock = clock_of(2015, 2021)
+    margin = np.random.default_rng(8).normal(0.05, 0.2, len(clock.hour))
+    hours = hours_of(clock, margin)
+    monthly, _, _ = risk.risk_tables(hours, [ALL_YEAR])
+    yearly = risk.yearly_counts(hours).groupby("month")[["n_hours", "shortfall_hours"]].sum()
+    assert (yearly["n_hours"].to_numpy() == monthly["n_hours"].to_numpy()).all()
+    np.testing.assert_allclose(
+        yearly["shortfall_hours"] / yearly["n_hours"], monthly["shortfall"], rtol=1e-12
+    )
+
+
+def test_paired_difference_with_itself_is_nothing_for_sure():
+    one = counts({(7, 2010 + i): (100, 10 + 5 * i) for i in range(8)})
+    july = risk.paired_difference(one, one, range(2010, 2018), 0.9).iloc[6]
+    assert (july["difference"], july["ci_low"], july["ci_high"]) == (0.0, 0.0, 0.0)
+
+
+def test_paired_difference_of_a_constant_gap_is_sure_of_it_however_the_years_vary():
+    # The years differ by 80 points between them, the two fields by 5 points in every year.
+    first = counts({(7, 2010 + i): (100, 10 + 10 * i) for i in range(8)})
+    second = counts({(7, 2010 + i): (100, 5 + 10 * i) for i in range(8)})
+    july = risk.paired_difference(first, second, range(2010, 2018), 0.9).iloc[6]
+    np.testing.assert_allclose([july["difference"], july["ci_low"], july["ci_high"]], 0.05)
+
+
+def test_paired_difference_is_empty_without_hours_and_without_enough_years():
+    four = counts({(7, 2010 + i): (100, 10 + 5 * i) for i in range(4)})
+    table = risk.paired_difference(four, four, range(2010, 2018), 0.9)
+    assert np.isnan(table.loc[6, "ci_low"])
+    assert table.loc[6, "difference"] == 0.0
+    assert np.isnan(table.loc[0, "difference"])

@@ -35,6 +35,7 @@ COLUMNS = {
     "risk_monthly.csv": f"field,aircraft,month,{RISK}",
     "risk_hourly.csv": f"field,aircraft,month,hour,{RISK}",
     "risk_seasonal.csv": f"field,aircraft,season,{RISK}",
+    "risk_yearly.csv": "field,aircraft,month,year,n_hours,shortfall_hours",
     "trends.csv": "field,aircraft,season,statistic,unit,n_years,first_year,last_year,"
     "slope_per_decade,ci_low,ci_high,p_value,significant,break_year,break_p_value",
     "extremes.csv": "field,n_years,return_period_years,density_altitude_ft,ci_low,ci_high",

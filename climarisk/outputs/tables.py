@@ -36,6 +36,9 @@ _SHARES = (
     "days_affected",
     "shortfall_central",
     "shortfall_change",
+    "change_ci_low",
+    "change_ci_high",
+    "shortfall_hours",
 )
 #: Written into the GeoPackage in place of the clock, so that the same input gives the same bytes.
 _FIXED_DATE = "2000-01-01T00:00:00.000Z"
@@ -49,6 +52,7 @@ OUTPUT_FILES = (
     "risk_monthly.csv",
     "risk_hourly.csv",
     "risk_seasonal.csv",
+    "risk_yearly.csv",
     "trends.csv",
     "extremes.csv",
     "scenarios.csv",
@@ -92,6 +96,7 @@ def _write_all(result: StudyResult, folder: Path) -> list[str]:
         "risk_seasonal.csv": csv_text(result.risk_seasonal),
         "study.json": json.dumps(result.provenance, indent=1, ensure_ascii=False) + "\n",
     }
+    texts["risk_yearly.csv"] = csv_text(result.risk_yearly)
     texts["trends.csv"] = csv_text(result.trends)
     texts["extremes.csv"] = csv_text(result.extremes)
     if result.scenarios is not None:
@@ -116,12 +121,14 @@ def headline(result: StudyResult) -> list[dict[str, Any]]:
     """Headline figures of each field: the worst month of density altitude and of shortfall.
 
     Keys: ``id, name, elevation_m, da_p90_month, da_p90_ft, rh_p50_pct, worst_aircraft,
-    worst_month, worst_shortfall, cautions``; None where there are no data.
+    worst_month, worst_shortfall, transfer_error_ft, pressure_error_ft, cautions``; None where
+    there are no data.
     """
     rows = []
     distributions = result.distributions_monthly
     for field in result.fields:
         own = distributions[distributions["field"] == field.id]
+        sure = result.estimates[result.estimates["field"] == field.id].iloc[0]
         hottest = _worst(own[own["variable"] == "density_altitude"], "p90")
         risk = _worst(result.risk_monthly[result.risk_monthly["field"] == field.id], "shortfall")
         humidity = own[own["variable"] == "relative_humidity"]["p50"].mean()
@@ -136,6 +143,8 @@ def headline(result: StudyResult) -> list[dict[str, Any]]:
                 "worst_aircraft": None if risk is None else str(risk["aircraft"]),
                 "worst_month": None if risk is None else int(risk["month"]),
                 "worst_shortfall": None if risk is None else round(float(risk["shortfall"]), 6),
+                "transfer_error_ft": round(float(sure["transfer_error_ft"])),
+                "pressure_error_ft": round(float(sure["pressure_error_ft"])),
                 "cautions": sum(
                     f.severity != "note" and f.subject == "field" and f.id == field.id
                     for f in result.findings

@@ -23,6 +23,7 @@ from climarisk.results import (
     RISK_HOURLY_COLUMNS,
     RISK_MONTHLY_COLUMNS,
     RISK_SEASONAL_COLUMNS,
+    RISK_YEARLY_COLUMNS,
     STATION_USE_COLUMNS,
     VARIABLES,
     StudyResult,
@@ -80,6 +81,7 @@ def sample_result(n_fields: int = 6, n_aircraft: int = 2, seed: int = 7) -> Stud
         risk_monthly=risk_monthly,
         risk_hourly=_risk(rng, fields, aircraft, "hour"),
         risk_seasonal=_risk(rng, fields, aircraft, "season"),
+        risk_yearly=pd.DataFrame(columns=RISK_YEARLY_COLUMNS),
         station_use=_station_use(fields),
         pressure_sources=pd.DataFrame(
             [
@@ -291,6 +293,8 @@ def _scenarios(rng, risk: pd.DataFrame, monthly: pd.DataFrame) -> pd.DataFrame:
         moved = base["shortfall"] + shift * rng.random(len(base)) * (base["shortfall"] > 0)
         part = base.assign(scenario=name, shortfall=moved.clip(0.0, 1.0))
         part["shortfall_change"] = part["shortfall"] - base["shortfall"]
+        part["change_ci_low"] = part["shortfall_change"] - 0.02
+        part["change_ci_high"] = part["shortfall_change"] + 0.02
         for p in ("p50", "p90"):
             part[f"density_altitude_{p}_change_ft"] = 3000.0 * shift
             part[f"density_altitude_{p}_ft"] = base[p] + 3000.0 * shift
