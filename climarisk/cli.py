@@ -113,7 +113,8 @@ def check(study: _StudyPath, store: _StoreFolder = None) -> None:
     with _bar() as progress:
         weather = load_weather(read, _read_only_store(store), progress, offline=True)
         result = evaluate(read, weather, progress)
-    _print_findings(result.findings)
+    for finding in result.findings:
+        _notes.print(_escaped(str(finding)))
     _results.print(_escaped(_coverage_line(result)))
 
 

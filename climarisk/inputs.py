@@ -55,6 +55,8 @@ def _identifier(text: str) -> str:
     text = _name(text)
     if any(c.isspace() for c in text) or len(text) > 80:
         raise ValueError("must have no spaces and at most 80 characters")
+    if text[0] in "=+-@":
+        raise ValueError("begins with = + - or @, which a spreadsheet takes for a formula")
     return text
 
 

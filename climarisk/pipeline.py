@@ -36,6 +36,7 @@ from climarisk.reporting import (
     field_findings,
     pressure_shares,
     station_use,
+    temperature_finding,
 )
 from climarisk.results import (
     DISTRIBUTIONS_HOURLY_COLUMNS,
@@ -61,7 +62,7 @@ from climarisk.transfer import (
     utc_month,
     warmed,
 )
-from climarisk.transfer_error import TransferError, learn_error
+from climarisk.transfer_error import HiddenStation, TransferError, far_off, learn_error
 from climarisk.trend import TrendInput, trend_rows
 from climarisk.verify import as_field, errors, hide, lapse_for
 from climarisk.weather import Weather, load_weather
@@ -138,7 +139,7 @@ def evaluate(study: Study, weather: Weather, progress: Progress = quiet) -> Stud
     """
     grid = hour_grid(study.first_year, study.last_year)
     stations, wrong = stations_on_grid(weather, grid)
-    error = _learned_error(study, stations, grid, progress)
+    error, stations, off = _learned_error(study, stations, grid, progress)
     parts = []
     for done, field in enumerate(study.fields):
         progress("scoring fields", done, len(study.fields))
@@ -148,6 +149,7 @@ def evaluate(study: Study, weather: Weather, progress: Progress = quiet) -> Stud
         [
             *weather.findings,
             *_record_findings(study, stations, wrong, grid),
+            *off,
             *(f for part in parts for f in part.findings),
             *aircraft_findings(study.aircraft),
         ]
@@ -217,7 +219,7 @@ def stations_on_grid(
         [a.temperature_c for a in airs],
         utc_month(grid) * 24 + grid % 24,
     )
-    return [replace(a, timing_trusted=a.station.id not in wrong) for a in airs], wrong
+    return [replace(a, serves_others=a.station.id not in wrong) for a in airs], wrong
 
 
 def _record_findings(
@@ -237,25 +239,38 @@ def serving(study: Study, stations: Sequence[StationAir]) -> set[str]:
     for field in study.fields:
         chosen = candidates(field, stations, study.radius_km)
         if not (field.stations and all(c.on_spot for c in chosen)):
-            found |= {c.air.station.id for c in chosen if c.air.timing_trusted}
+            found |= {c.air.station.id for c in chosen if c.air.serves_others}
     return found
 
 
 def _learned_error(
-    study: Study, stations: Sequence[StationAir], grid: np.ndarray, progress: Progress
-) -> TransferError:
-    """The error of carried air, learned by hiding the stations that air is carried from."""
-    wanted = serving(study, stations)
-    places = [i for i, a in enumerate(stations) if a.station.id in wanted][:MOST_HIDDEN]
-    shown = []
-    for done, i in enumerate(places):
-        progress("hiding stations", done, len(places))
-        hidden = hide(i, stations, grid, study.first_year, study.last_year, study.radius_km)
-        if hidden is not None:
-            shown.append(errors(hidden))
-    if places:
-        progress("hiding stations", len(places), len(places))
-    return learn_error(shown)
+    study: Study, stations: list[StationAir], grid: np.ndarray, progress: Progress
+) -> tuple[TransferError, list[StationAir], list[Finding]]:
+    """The error of carried air, learned by hiding the stations that air is carried from.
+
+    A station that is far off what the others say of it is taken out, the worst first, and the
+    others are hidden anew without it.
+    """
+    findings: list[Finding] = []
+    while True:
+        wanted = serving(study, stations)
+        places = [i for i, a in enumerate(stations) if a.station.id in wanted][:MOST_HIDDEN]
+        shown: dict[int, HiddenStation] = {}
+        for done, i in enumerate(places):
+            progress("hiding stations", done, len(places))
+            hidden = hide(i, stations, grid, study.first_year, study.last_year, study.radius_km)
+            if hidden is not None:
+                shown[i] = errors(hidden)
+        if places:
+            progress("hiding stations", len(places), len(places))
+        wrong = far_off(shown)
+        if wrong is None:
+            return learn_error(list(shown.values())), stations, findings
+        bias = float(np.nanmean(shown[wrong].error_k))
+        findings.append(temperature_finding(stations[wrong].station, bias))
+        stations = [
+            replace(a, serves_others=False) if i == wrong else a for i, a in enumerate(stations)
+        ]
 
 
 def field_tables(

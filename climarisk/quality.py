@@ -8,6 +8,7 @@ from __future__ import annotations
 
 from collections.abc import Sequence
 from dataclasses import dataclass
+from typing import Any
 
 import numpy as np
 import pandas as pd
@@ -325,7 +326,7 @@ def check_elevations(
     means = {
         s.id: mean
         for s, t in zip(stations, tables, strict=True)
-        if (mean := _mean_air(s, t)) is not None
+        if (mean := _mean_air(t)) is not None
     }
     by_id = {s.id: s for s in stations if s.id in means}
     trusted = set(by_id)
@@ -347,49 +348,80 @@ def check_elevations(
     return checks, findings
 
 
-def _mean_air(station: Station, hours: pd.DataFrame) -> tuple[float, float] | None:
-    """Mean station pressure (hPa) and mean virtual temperature (K) of the hours with both."""
+@dataclass(frozen=True)
+class _MeanAir:
+    """Mean pressure (hPa) and virtual temperature (K) of the record, and of each calendar month."""
+
+    pressure_hpa: float
+    virtual_k: float
+    monthly_pressure_hpa: np.ndarray
+    monthly_virtual_k: np.ndarray
+
+
+def _mean_air(hours: pd.DataFrame) -> _MeanAir | None:
+    """Means of the hours with temperature and pressure; None with too few."""
     pressure = hours["station_pressure_hpa"].to_numpy()
     both = np.isfinite(pressure) & np.isfinite(hours["temperature_c"].to_numpy())
     if both.sum() < _DEFAULT_MONTH_HOURS:
         return None
+    p = pressure[both]
     e = np.nan_to_num(vapour_pressure_hpa(hours["dew_point_c"].to_numpy()[both]))
-    temperature = hours["temperature_c"].to_numpy()[both]
-    return float(pressure[both].mean()), float(
-        virtual_temperature_k(temperature, e, pressure[both]).mean()
+    virtual = virtual_temperature_k(hours["temperature_c"].to_numpy()[both], e, p)
+    month = hours.index.month.to_numpy()[both] - 1
+    count = np.bincount(month, minlength=12)
+    enough = np.where(count >= _DEFAULT_MONTH_HOURS, count, np.nan)
+    by_month = [np.bincount(month, x, 12) / enough for x in (p, virtual)]
+    return _MeanAir(float(p.mean()), float(virtual.mean()), *by_month)
+
+
+def _to_sea_level(pressure: Any, virtual_k: Any, elevation_m: float) -> Any:
+    """Pressure at sea level by hypsometry, with 6.5 K/km below the station, hPa."""
+    column_k = virtual_k + 0.5 * LAPSE_K_PER_M * elevation_m
+    return pressure * np.exp(G0 * elevation_m / (R_DRY * column_k))
+
+
+def _sea_level(station: Station, means: dict[str, _MeanAir]) -> float:
+    """Mean sea-level pressure from the stated elevation, hPa."""
+    mean = means[station.id]
+    return float(_to_sea_level(mean.pressure_hpa, mean.virtual_k, station.elevation_m))
+
+
+def _neighbours_sea_level(station: Station, other: Station, means: dict[str, _MeanAir]) -> float:
+    """A neighbour's sea-level pressure over the months that both stations have, hPa."""
+    own, its = (
+        _to_sea_level(m.monthly_pressure_hpa, m.monthly_virtual_k, s.elevation_m)
+        for s in (station, other)
+        for m in [means[s.id]]
     )
+    both = np.isfinite(own) & np.isfinite(its)
+    if not both.any():
+        return _sea_level(other, means)
+    return _sea_level(station, means) + float((its - own)[both].mean())
 
 
-def _sea_level(station: Station, means: dict[str, tuple[float, float]]) -> float:
-    """Mean sea-level pressure by hypsometry from the stated elevation, hPa."""
-    pressure, virtual_k = means[station.id]
-    z = station.elevation_m
-    return pressure * float(np.exp(G0 * z / (R_DRY * (virtual_k + 0.5 * LAPSE_K_PER_M * z))))
-
-
-def _standard_off_m(station: Station, means: dict[str, tuple[float, float]]) -> float:
+def _standard_off_m(station: Station, means: dict[str, _MeanAir]) -> float:
     """How far a station's sea-level pressure is from 1013.25 hPa, in metres of height."""
-    scale_height_m = R_DRY * means[station.id][1] / G0
+    scale_height_m = R_DRY * means[station.id].virtual_k / G0
     return abs(float(np.log(_sea_level(station, means) / P0_HPA))) * scale_height_m
 
 
 def _implied(
     station: Station,
-    means: dict[str, tuple[float, float]],
+    means: dict[str, _MeanAir],
     by_id: dict[str, Station],
     others: set[str],
 ) -> ElevationCheck:
     near = [
-        _sea_level(by_id[i], means)
+        _neighbours_sea_level(station, by_id[i], means)
         for i in sorted(others)
         if distance_km(station.latitude, station.longitude, by_id[i].latitude, by_id[i].longitude)
         <= _NEIGHBOUR_KM
     ]
     reference = float(np.median(near)) if near else P0_HPA
-    pressure, virtual_k = means[station.id]
-    ratio = R_DRY / G0 * np.log(reference / pressure)
+    mean = means[station.id]
+    ratio = R_DRY / G0 * np.log(reference / mean.pressure_hpa)
     # z = ratio * (Tv + L z / 2), solved for z.
-    implied = ratio * virtual_k / (1.0 - 0.5 * LAPSE_K_PER_M * ratio)
+    implied = ratio * mean.virtual_k / (1.0 - 0.5 * LAPSE_K_PER_M * ratio)
     return ElevationCheck(float(implied), len(near))
 
 
@@ -406,7 +438,8 @@ def _elevation_finding(station: Station, check: ElevationCheck) -> Finding | Non
     if abs(off) <= ELEVATION_CAUTION_M + allowance:
         return None
     against = (
-        f"the mean sea-level pressure of {check.neighbours} neighbouring stations"
+        f"the mean sea-level pressure of {check.neighbours} neighbouring "
+        f"station{'s' * (check.neighbours > 1)}"
         if check.neighbours
         else f"a sea-level pressure of {P0_HPA} hPa (no neighbour to compare with)"
     )

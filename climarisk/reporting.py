@@ -22,9 +22,11 @@ from climarisk.pressure import (
 )
 from climarisk.results import ESTIMATE_COLUMNS, STATION_USE_COLUMNS
 from climarisk.rules import MONTH, YEARS, patchy_months
+from climarisk.stations import Station, distance_km
 from climarisk.study import Study
 from climarisk.transfer import (
     MAXIMUM_HEIGHT_DIFFERENCE_M,
+    ON_SPOT_KM,
     REGION_KM,
     Candidate,
     FieldAir,
@@ -36,6 +38,10 @@ from climarisk.trend import STATION_MOVE
 #: Without a station this near in distance and height the field's air is of low confidence
 #: (a judgement; the published errors of hourly transfer grow fast beyond).
 _CONFIDENT_KM, _CONFIDENT_M = 50.0, 500.0
+#: Share of a month's hours without humidity above which it is told.
+_MISSING_HUMIDITY = 0.1
+#: A station within 3 km of a field rarely stands higher or lower than this.
+_SAME_PLACE_M = 300.0
 
 
 @dataclass(frozen=True)
@@ -148,20 +154,9 @@ def field_findings(
             )
         )
     if not chosen:
-        why = (
-            f"no station within {study.radius_km:g} km and {MAXIMUM_HEIGHT_DIFFERENCE_M:.0f} m "
-            "of height"
-            if not field.stations
-            else "the stations it is pinned to cannot serve it"
-        )
-        findings.append(
-            say(
-                "reject",
-                "no-station",
-                f"{field.name} ({field.id}) has no figures: {why}, or their elevation is not "
-                "trusted. Add a station, or widen radius_km.",
-            )
-        )
+        why = _why_no_station(field, stations, study)
+        message = f"{field.name} ({field.id}) has no figures: {why}."
+        findings.append(say("reject", "no-station", message))
         return findings
     known = np.isfinite(air.temperature_c[clock.in_period])
     if not known.any():
@@ -179,6 +174,38 @@ def field_findings(
         say("caution", "pressure", t) for t in _pressure_texts(field, chosen, stations, air)
     ]
     return findings
+
+
+def _why_no_station(field: Field, stations: Sequence[StationAir], study: Study) -> str:
+    """Why no station serves a field, and what to do."""
+    if field.stations:
+        return "the stations it is pinned to cannot serve it: their elevation is not trusted"
+    away = [
+        (distance_km(field.latitude, field.longitude, s.latitude, s.longitude), a)
+        for a in stations
+        for s in [a.station]
+    ]
+    near = [
+        a
+        for d, a in away
+        if d <= study.radius_km
+        and abs(field.elevation_m - a.station.elevation_m) <= MAXIMUM_HEIGHT_DIFFERENCE_M
+    ]
+    if not near:
+        distance, nearest = min(away, key=lambda item: item[0])
+        return (
+            f"no station lies within {study.radius_km:g} km and "
+            f"{MAXIMUM_HEIGHT_DIFFERENCE_M:.0f} m of height; the nearest is "
+            f"{nearest.station.id}, {distance:.0f} km off and "
+            f"{field.elevation_m - nearest.station.elevation_m:+.0f} m. Check the coordinates of "
+            "both, add a station, or widen radius_km"
+        )
+    if not any(np.isfinite(a.temperature_c).any() for a in near):
+        return (
+            f"the stations around it have no hour in {study.first_year}-{study.last_year}. Check "
+            "the period against the archive files"
+        )
+    return "the dates, the temperature or the elevation of the stations around it look wrong"
 
 
 def _slope_texts(field: Field) -> list[str]:
@@ -208,28 +235,18 @@ def _air_texts(
                 f"{nearest.distance_km:.0f} km off and {nearest.height_difference_m:+.0f} m.",
             )
         )
-    known = np.isfinite(air.temperature_c) & np.isfinite(air.vapour_pressure_hpa)
-    known &= np.isfinite(air.pressure_hpa) & clock.in_period
-    years = len(np.unique(clock.year[known]))
-    if years < YEARS.percentiles:
-        texts.append(
-            (
-                "caution",
-                "few-years",
-                f"{years} of {clock.n_years} years have hours with temperature, humidity and "
-                f"pressure; percentiles need about {YEARS.percentiles} years to settle.",
-            )
+    texts += [
+        (
+            "caution",
+            "field-elevation",
+            f"its {field.elevation_m:g} m are {c.height_difference_m:+.0f} m from those of station "
+            f"{c.air.station.id}, {c.distance_km:.0f} km off; check both, feet in a metre column "
+            "look like this.",
         )
-    patchy, some = patchy_months(known, clock)
-    if patchy:
-        texts.append(
-            (
-                "note",
-                "patchy-months",
-                f"{patchy} of {some} months with data miss {MONTH.missing_days} days or more, or "
-                f"{MONTH.consecutive_days} in a row.",
-            )
-        )
+        for c in chosen
+        if c.distance_km <= ON_SPOT_KM and abs(c.height_difference_m) > _SAME_PLACE_M
+    ]
+    texts += _record_texts(air, clock)
     for i, c in enumerate(chosen):
         if not c.air.elevation_trusted and (air.share[i] > 0).any():
             texts.append(
@@ -242,6 +259,55 @@ def _air_texts(
                 )
             )
     return texts
+
+
+def _record_texts(air: FieldAir, clock: LocalClock) -> list[tuple[str, str, str]]:
+    """What there is to say of the years, months and humidity of a field's record."""
+    texts = []
+    known = np.isfinite(air.temperature_c) & np.isfinite(air.vapour_pressure_hpa)
+    known &= np.isfinite(air.pressure_hpa) & clock.in_period
+    years = len(np.unique(clock.year[known]))
+    if years < YEARS.percentiles:
+        texts.append(
+            (
+                "caution",
+                "few-years",
+                f"{years} of {clock.n_years} years have hours with temperature, humidity and "
+                f"pressure; percentiles need about {YEARS.percentiles} years to settle.",
+            )
+        )
+    texts += _humidity_texts(air, clock)
+    patchy, some = patchy_months(known, clock)
+    if patchy:
+        texts.append(
+            (
+                "note",
+                "patchy-months",
+                f"{patchy} of {some} months with data miss {MONTH.missing_days} days or more, or "
+                f"{MONTH.consecutive_days} in a row.",
+            )
+        )
+    return texts
+
+
+def _humidity_texts(air: FieldAir, clock: LocalClock) -> list[tuple[str, str, str]]:
+    """A caution where hours lack humidity alone: often the damp ones, so figures are biased."""
+    has_air = np.isfinite(air.temperature_c) & np.isfinite(air.pressure_hpa) & clock.in_period
+    lacking = has_air & np.isnan(air.vapour_pressure_hpa)
+    total = np.bincount(clock.month[has_air], minlength=12)
+    share = np.bincount(clock.month[lacking], minlength=12) / np.maximum(total, 1)
+    worst = np.flatnonzero(share > _MISSING_HUMIDITY)
+    if not len(worst):
+        return []
+    months = ", ".join(f"{m + 1} ({share[m]:.0%})" for m in worst)
+    return [
+        (
+            "caution",
+            "humidity-missing",
+            f"hours with temperature and pressure lack humidity and have no figure, in months "
+            f"{months}; sensors often fail in the dampest air, so the rest may not stand for all.",
+        )
+    ]
 
 
 def _pressure_texts(
@@ -295,6 +361,20 @@ def _typical(values: np.ndarray) -> float:
     """Root mean square of the known values; 0 without any."""
     known = values[np.isfinite(values)]
     return float(np.sqrt((known**2).mean())) if len(known) else 0.0
+
+
+def temperature_finding(station: Station, bias_k: float) -> Finding:
+    """The rejection of a station that is far off what the others say of it."""
+    return Finding(
+        "reject",
+        "station",
+        station.id,
+        "temperature-off",
+        f"its temperature is on average {bias_k:+.1f} K off what the stations around it give for "
+        f"its place and its {station.elevation_m:g} m; nothing is carried from it to other places. "
+        "Check the unit of its temperature, its elevation (feet in a metre column?) and its "
+        "coordinates.",
+    )
 
 
 def evidence_findings(

@@ -45,6 +45,7 @@ _RISK = [
     "shortfall_central",
     "transfer_error_ft",
     "interval_note",
+    "coverage",
 ]
 DISTRIBUTIONS_MONTHLY_COLUMNS = ["field", "variable", "unit", "month", *_STATISTICS]
 DISTRIBUTIONS_HOURLY_COLUMNS = ["field", "variable", "unit", "month", "hour", *_STATISTICS]

@@ -8,7 +8,13 @@ from dataclasses import dataclass
 import numpy as np
 import pandas as pd
 
-from climarisk.climatology import completeness, segment_quantiles
+from climarisk.climatology import (
+    Completeness,
+    completeness,
+    segment_quantiles,
+    window_cells,
+    window_coverage,
+)
 from climarisk.clock import LocalClock
 from climarisk.performance import CHECKS, Margins
 from climarisk.rules import YEARS, interval_notes
@@ -272,20 +278,23 @@ def risk_tables(
         ``field`` and ``aircraft``.
     """
     clock, known = hours.clock, hours.known
-    used, inside = _used(hours), hours.inside[known]
+    complete = _complete(hours)
+    used, inside = complete.used[known], hours.inside[known]
     hourly = shares_by_cell(hours, used, clock.month_hour[known], 288)
     hourly.insert(0, "month", np.repeat(np.arange(1, 13), 24))
     hourly.insert(1, "hour", np.tile(np.arange(24), 12))
+    hourly["coverage"] = hourly["n_years"] / clock.n_years
     monthly = shares_by_cell(hours, used & inside, clock.month[known], 12)
     monthly.insert(0, "month", np.arange(1, 13))
-    return monthly, hourly, _seasonal(hours, used & inside, seasons)
+    monthly["coverage"] = window_coverage(complete.counts, window_cells(hours.inside, clock))
+    return monthly, hourly, _seasonal(hours, complete, seasons)
 
 
-def _used(hours: Hours) -> np.ndarray:
-    """Which of the known hours belong to counting years, shape (n_known,)."""
+def _complete(hours: Hours) -> Completeness:
+    """The completeness rule applied to the hours with a value."""
     on_grid = np.zeros(len(hours.clock.hour), bool)
     on_grid[hours.known] = True
-    return completeness(on_grid, hours.clock).used[hours.known]
+    return completeness(on_grid, hours.clock)
 
 
 def yearly_counts(hours: Hours) -> pd.DataFrame:
@@ -303,7 +312,7 @@ def yearly_counts(hours: Hours) -> pd.DataFrame:
     """
     clock = hours.clock
     levels = hours.levels or (hours.central,)
-    places = np.flatnonzero(_used(hours) & hours.inside[hours.known])
+    places = np.flatnonzero(_complete(hours).used[hours.known] & hours.inside[hours.known])
     where = hours.known[places]
     index = clock.month[where] * clock.n_years + clock.year[where]
     size = 12 * clock.n_years
@@ -369,16 +378,20 @@ def _counts_of(table: pd.DataFrame, years: range) -> tuple[np.ndarray, np.ndarra
     return total, fallen
 
 
-def _seasonal(hours: Hours, pooled: np.ndarray, seasons: Sequence[Season]) -> pd.DataFrame:
+def _seasonal(hours: Hours, complete: Completeness, seasons: Sequence[Season]) -> pd.DataFrame:
     clock, known = hours.clock, hours.known
-    month, day = clock.month[known] + 1, clock.day_of_month[known]
+    offered = hours.inside & clock.in_period
+    counting = offered.copy()
+    counting[offered] = complete.counts.reshape(-1)[clock.year_month_hour[offered]]
     tables = []
     for season in seasons:
-        member = np.zeros((13, 32), bool)
-        for m, d in season.days:
-            member[m, d] = True
-        chosen = pooled & member[month, day]
+        days = np.zeros((13, 32), bool)
+        for month, day in season.days:
+            days[month, day] = True
+        member = days[clock.month + 1, clock.day_of_month]
+        chosen = (complete.used & hours.inside & member)[known]
         table = shares_by_cell(hours, chosen, np.zeros(len(known), int), 1)
         table.insert(0, "season", season.name)
+        table["coverage"] = (counting & member).sum() / max(int((offered & member).sum()), 1)
         tables.append(table)
     return pd.concat(tables, ignore_index=True)

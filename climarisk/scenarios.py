@@ -77,12 +77,12 @@ def scenarios(
             raise InputError(
                 f"--warmer {k:g}: between -{_LARGEST_K:g} and {_LARGEST_K:g} K allowed."
             )
-        name = f"air {k:+g} K, {holds} unchanged"
+        name = f"air {float(k):+} K, {holds} unchanged".replace(".0 K", " K")
         found.append(Scenario(name, replace(study, warmer_k=float(k), warmer_holds=holds)))
     for text in years:
         first, last = _sub_period(text, study)
         found.append(Scenario(f"{first}-{last}", replace(study, first_year=first, last_year=last)))
-    return found
+    return list({scenario.name: scenario for scenario in found}.values())
 
 
 def _sub_period(text: str, study: Study) -> tuple[int, int]:

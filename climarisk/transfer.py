@@ -81,8 +81,8 @@ class StationAir:
         The inverse fitted to the station's sea-level pressure, if there is one.
     elevation_trusted : bool
         False: nothing may be carried from it to another elevation.
-    timing_trusted : bool
-        False: its dates look wrong, so it serves only fields pinned to it.
+    serves_others : bool
+        False: its dates or its temperature look wrong, so it serves only fields pinned to it.
     """
 
     station: Station
@@ -93,7 +93,7 @@ class StationAir:
     pressure_error_hpa: np.ndarray
     calibration: Calibration | None = None
     elevation_trusted: bool = True
-    timing_trusted: bool = True
+    serves_others: bool = True
 
 
 @dataclass(frozen=True)
@@ -229,7 +229,7 @@ def candidates(field: Field, stations: Sequence[StationAir], radius_km: float) -
         if field.stations and not pinned:
             continue
         if not pinned and (
-            distance > radius_km or abs(dz) > MAXIMUM_HEIGHT_DIFFERENCE_M or not air.timing_trusted
+            distance > radius_km or abs(dz) > MAXIMUM_HEIGHT_DIFFERENCE_M or not air.serves_others
         ):
             continue
         if not air.elevation_trusted and abs(dz) > 1.0:

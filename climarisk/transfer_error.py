@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Sequence
+from collections.abc import Mapping, Sequence
 from dataclasses import dataclass, replace
 
 import numpy as np
@@ -34,6 +34,8 @@ _PLANNING_PERSISTENCE = 0.5
 #: The other half is taken as the hours' own until verified.
 _PLANNING_DISPERSION = 0.5
 _P90 = np.array([0.9])
+#: A mean error of a hidden station beyond this is a fault, K: a unit, an elevation, a place.
+_ABSURD_K = 6.0
 #: Common hours that a month x hour cell of a hidden station needs.
 CELL_HOURS = 20
 
@@ -219,6 +221,30 @@ def _dispersion(hidden: Sequence[HiddenStation], error: TransferError) -> float:
     if len(missing) < _STATIONS_FOR_DISPERSION or np.mean(rise) <= 0.0:
         return _PLANNING_DISPERSION
     return float(np.clip(np.mean(missing) / np.mean(rise), 0.0, 1.0))
+
+
+def far_off(shown: Mapping[int, HiddenStation]) -> int | None:
+    """The hidden station whose temperature cannot be right, the worst first; None without one.
+
+    Parameters
+    ----------
+    shown : mapping of int to HiddenStation
+
+    Notes
+    -----
+    Far off is a mean error above 6 K, no valley or crest does that, that is also more than
+    three times the median size of the others'.  Needs two others.
+    """
+    bias = {
+        i: abs(float(np.nanmean(h.error_k)))
+        for i, h in shown.items()
+        if np.isfinite(h.error_k).any()
+    }
+    if len(bias) < 3:
+        return None
+    worst = max(sorted(bias), key=lambda i: bias[i])
+    others = [b for i, b in bias.items() if i != worst]
+    return worst if bias[worst] > _ABSURD_K and bias[worst] > 3 * np.median(others) else None
 
 
 def _scale(squares: np.ndarray) -> np.ndarray:

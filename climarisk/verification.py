@@ -151,7 +151,7 @@ def verify_study(
     measures = []
     for done, one in enumerate(shown):
         progress("comparing stations", done, len(shown))
-        others = [s.error for s in shown if s is not one and s.hidden.air.timing_trusted]
+        others = [s.error for s in shown if s is not one and s.hidden.air.serves_others]
         nested = learn_error(others[:MOST_HIDDEN])
         measures.append(measures_of(one, stations, study.radius_km, nested, limit_ft))
     progress("comparing stations", len(shown), len(shown))

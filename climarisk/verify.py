@@ -75,7 +75,7 @@ def lapse_for(
     for air in stations:
         s = air.station
         distance = distance_km(field.latitude, field.longitude, s.latitude, s.longitude)
-        if distance <= radius_km and air.elevation_trusted and air.timing_trusted:
+        if distance <= radius_km and air.elevation_trusted and air.serves_others:
             near.append((distance, s.id, air))
     nearest = [air for _, _, air in sorted(near, key=lambda item: item[:2])[:LAPSE_STATIONS]]
     return fit_lapse(

@@ -224,7 +224,14 @@ def test_an_identifier_is_one_printable_word(bad):
     assert problems[0].startswith("f: 'id' is ")
 
 
-@pytest.mark.parametrize("good", ["A", "x" * 80, "a,b", "../../up", "{{7*7}}", "Ä-1", "=1+1"])
+@pytest.mark.parametrize("formula", ["=1+1", "+A1", "-A1", "@SUM"])
+def test_an_identifier_that_a_spreadsheet_would_run_is_refused(formula):
+    problems: list[str] = []
+    assert validate(Outer, {"id": formula}, "f", problems) is None
+    assert "a spreadsheet takes for a formula" in problems[0]
+
+
+@pytest.mark.parametrize("good", ["A", "x" * 80, "a,b", "../../up", "{{7*7}}", "Ä-1", "1=1"])
 def test_an_identifier_may_hold_any_other_sign(good):
     problems: list[str] = []
     checked = validate(Outer, {"id": f"  {good} "}, "f", problems)

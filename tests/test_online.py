@@ -42,8 +42,11 @@ def online(tmp_path):
     with standin_server.StandIn() as server:
         for year in range(first, last + 1):
             lines = standin_server.year_text(year, days=31).splitlines()
-            # A pressure that stays the same for a month would be taken for a default value.
-            text = "\n".join(x.replace("1013.2", f"{1010 + i % 9}.0") for i, x in enumerate(lines))
+            # Values that stay the same for days would be taken for a stuck sensor or a default.
+            text = "\n".join(
+                x.replace("1013.2", f"{1010 + i % 9}.0").replace(",60,", f",{55 + i % 9},")
+                for i, x in enumerate(lines)
+            )
             whole = standin_server.packed(text + "\n")
             server.answers[f"/hourly/{year}/GOOD1.csv.gz"] = whole
         yield study, server, tmp_path, range(first, last + 1)

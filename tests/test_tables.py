@@ -27,7 +27,7 @@ STATISTICS = (
 )
 RISK = (
     "n_hours,n_years,shortfall,ci_low,ci_high,outside_table,limiting,margin_p10,margin_p50,"
-    "days_affected,shortfall_central,transfer_error_ft,interval_note"
+    "days_affected,shortfall_central,transfer_error_ft,interval_note,coverage"
 )
 COLUMNS = {
     "distributions_monthly.csv": f"field,variable,unit,month,{STATISTICS}",
@@ -155,7 +155,7 @@ def test_a_cell_that_fails_the_completeness_rule_is_empty_not_zero(written):
     # DESIGN 6: no year has 80 % of March's days at this hour, so the cell has no figure.
     for name, columns in (
         ("distributions_hourly.csv", STATISTICS.split(",")[3:]),
-        ("risk_hourly.csv", RISK.split(",")[2:]),
+        ("risk_hourly.csv", RISK.split(",")[2:-1]),
     ):
         cells = [
             r

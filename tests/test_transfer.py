@@ -523,7 +523,7 @@ def test_candidates_are_the_eight_best():
 
 
 def test_misdated_station_serves_only_fields_pinned_to_it():
-    wrong = replace(on_grid(station("S")), timing_trusted=False)
+    wrong = replace(on_grid(station("S")), serves_others=False)
     good = on_grid(station("A", latitude=46.5))
     free = transfer.candidates(field(), [wrong, good], 100.0)
     assert [c.air.station.id for c in free] == ["A"]
@@ -615,7 +615,7 @@ def test_order_of_the_stations_does_not_matter_to_the_climatological_pressure(or
     "useless",
     [
         on_grid(station("0"), temperature_c=np.nan, dew_point_c=np.nan),
-        replace(on_grid(station("0", latitude=46.01), dew_point_c=15.0), timing_trusted=False),
+        replace(on_grid(station("0", latitude=46.01), dew_point_c=15.0), serves_others=False),
         on_grid(station("0", latitude=60.0), station_pressure_hpa=850.0),
         on_grid(station("0", elevation_m=2500.0)),
         on_grid(station("0", elevation_m=1020.0), trusted=False, station_pressure_hpa=850.0),

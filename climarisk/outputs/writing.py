@@ -1,4 +1,4 @@
-"""Writing a set of files as one: all of the new ones, or all of the old."""
+"""Writing a set of files as one: complete before the first replaces an old one."""
 
 from __future__ import annotations
 

@@ -219,7 +219,7 @@ def _risk(rng: np.random.Generator, fields, aircraft, kind: str) -> pd.DataFrame
         if empty:
             numbers, tail = [math.nan] * 4, [None, *[math.nan] * 5]
         note = interval_notes(np.array([years]))[0]
-        rows.append([*cell, 300 * years, years, *numbers, *tail, note])
+        rows.append([*cell, 300 * years, years, *numbers, *tail, note, years / 15])
     columns = {
         "month": RISK_MONTHLY_COLUMNS,
         "hour": RISK_HOURLY_COLUMNS,
