@@ -294,8 +294,9 @@ def air_at_field(
     carried = (share.sum(axis=0) > 0) & ~(share[own].sum(axis=0) > 0)
     heights = np.array([abs(c.height_difference_m) for c in chosen])
     distances = np.array([c.distance_km for c in chosen])
-    # Air as measured on the spot is left as it is; any other mixture is at most saturated.
-    measured = (share[own].sum(axis=0) > 0) & (vapour_share[own].sum(axis=0) > 0)
+    # Air as measured at this very height is left as it is; any other is at most saturated.
+    here = own & (heights == 0.0)
+    measured = (share[here].sum(axis=0) > 0) & (vapour_share[here].sum(axis=0) > 0)
     saturation = vapour_saturated_hpa(temperature, field.elevation_m)
     vapour = np.where(measured, vapour, np.minimum(vapour, saturation))
     pressure = _pressure(field, chosen, temperature, vapour)

@@ -661,20 +661,7 @@ def relative_humidity(got, elevation_m):
     return relative_humidity_pct(got.temperature_c, dew_point)
 
 
-@pytest.mark.parametrize(
-    "to_m",
-    [
-        1000.0,
-        pytest.param(
-            1014.0,
-            marks=pytest.mark.xfail(
-                strict=True, reason="defect: no cap on an own station's air moved by up to 15 m"
-            ),
-        ),
-        1400.0,
-        600.0,
-    ],
-)
+@pytest.mark.parametrize("to_m", [1000.0, 1014.0, 1400.0, 600.0])
 def test_air_at_the_field_is_never_more_than_saturated(to_m):
     foggy = on_grid(temperature_c=15.0, dew_point_c=15.0)
     got = at_field(field(to_m), foggy)
