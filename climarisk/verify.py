@@ -38,8 +38,6 @@ class Hidden:
         Height difference to its best candidate, field minus station, m.
     nearest_km : float
         Distance to its best candidate, km.
-    nearest : StationAir
-        Its best candidate by distance alone.
     """
 
     air: StationAir
@@ -47,7 +45,6 @@ class Hidden:
     estimate: FieldAir
     nearest_m: float
     nearest_km: float
-    nearest: StationAir
 
 
 def as_field(air: StationAir) -> Field:
@@ -114,14 +111,12 @@ def hide(
     clock = local_clock(field, grid, first_year, last_year)
     lapse = lapse_for(field, others, clock, radius_km)
     estimate = air_at_field(field, chosen, others, clock, lapse)
-    by_distance = min(chosen, key=lambda c: (c.distance_km, c.air.station.id))
     return Hidden(
         air,
         clock,
         estimate,
         chosen[0].height_difference_m,
         chosen[0].distance_km,
-        by_distance.air,
     )
 
 

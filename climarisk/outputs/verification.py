@@ -109,10 +109,6 @@ def _bullet(text: str) -> str:
     return _wrapped(text, "  ", "- ")
 
 
-def _percent(share: float) -> str:
-    return "-" if pd.isna(share) else f"{100 * share:.0f} %"
-
-
 def _total(report: VerificationReport, over: str) -> pd.Series:
     totals = report.totals
     return totals[(totals["over"] == over) & (totals["group_kind"] == "all")].iloc[0]
