@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from collections.abc import Sequence
 from dataclasses import dataclass
 
 import numpy as np
@@ -10,6 +11,7 @@ import pandas as pd
 from climarisk.clock import LocalClock
 from climarisk.results import PERCENTILES
 from climarisk.rules import DAYS, years_notes
+from climarisk.study import Season
 
 
 @dataclass(frozen=True)
@@ -26,6 +28,12 @@ class Completeness:
 
     counts: np.ndarray
     used: np.ndarray
+
+    def counting(self, clock: LocalClock) -> np.ndarray:
+        """Hours of the period that belong to a counting cell, with a value or without."""
+        hours = clock.in_period.copy()
+        hours[hours] = self.counts.reshape(-1)[clock.year_month_hour[hours]]
+        return hours
 
 
 def completeness(known: np.ndarray, clock: LocalClock) -> Completeness:
@@ -198,6 +206,69 @@ def monthly_distribution(
     table["years_note"] = years_notes(n_years)
     table.insert(0, "month", np.arange(1, 13))
     return table
+
+
+def seasonal_distribution(
+    values: np.ndarray,
+    clock: LocalClock,
+    inside: np.ndarray,
+    seasons: Sequence[Season],
+    error: np.ndarray | None = None,
+) -> pd.DataFrame:
+    """Distribution of a variable by season over the hours window.
+
+    Parameters
+    ----------
+    values : ndarray, shape (n_levels, n_hours) or (n_hours,)
+    clock : LocalClock
+    inside : ndarray of bool, shape (n_hours,)
+        The hours window.
+    seasons : sequence of Season
+    error : ndarray, shape (n_hours,), optional
+        As for `hourly_distribution`.
+
+    Returns
+    -------
+    DataFrame, shape (len(seasons), 6 + number of percentiles)
+        As `monthly_distribution` with ``season`` in place of ``month``; ``coverage`` is the
+        share of the season's hours inside the window whose (year, month, hour) cell counts.
+    """
+    values = np.atleast_2d(values)
+    complete = completeness(np.isfinite(values[0]), clock)
+    counting = complete.counting(clock)
+    tables = []
+    for season in seasons:
+        member = inside & season_hours(clock, season)
+        used = complete.used & member
+        sd = 0.0 if error is None else error[used]
+        table = _statistics(values[:, used], sd, np.zeros(int(used.sum()), int), 1)
+        n_years = np.array([len(np.unique(clock.year[used]))])
+        table.insert(1, "n_years", n_years)
+        table.insert(2, "coverage", season_coverage(counting, member, clock))
+        table["years_note"] = years_notes(n_years)
+        table.insert(0, "season", season.name)
+        tables.append(table)
+    return pd.concat(tables, ignore_index=True)
+
+
+def season_hours(clock: LocalClock, season: Season) -> np.ndarray:
+    """Which hours lie in a season, shape (n_hours,), bool."""
+    days = np.zeros((13, 32), bool)
+    for month, day in season.days:
+        days[month, day] = True
+    return days[clock.month + 1, clock.day_of_month]
+
+
+def season_coverage(counting: np.ndarray, member: np.ndarray, clock: LocalClock) -> float:
+    """Share of the hours of a season inside the window whose cell counts.
+
+    Parameters
+    ----------
+    counting, member : ndarray of bool, shape (n_hours,)
+    clock : LocalClock
+    """
+    offered = int((member & clock.in_period).sum())
+    return float((counting & member).sum()) / max(offered, 1)
 
 
 def window_coverage(counts: np.ndarray, window: np.ndarray) -> np.ndarray:

@@ -105,12 +105,16 @@ class Margins:
     outside_table : ndarray of bool
     limiting : ndarray of int8
         Index into `CHECKS` of the smallest margin, passed limits among them.
+    checks : ndarray of float32, shape (7, n)
+        Margin of each of `CHECKS`, infinite where there is none; of a limit, how far it is
+        passed, infinite where it is kept.
     """
 
     margin: np.ndarray
     shortfall: np.ndarray
     outside_table: np.ndarray
     limiting: np.ndarray
+    checks: np.ndarray
 
 
 def density_ratio(
@@ -264,26 +268,34 @@ def takeoff_margins(
 ) -> tuple[np.ndarray, np.ndarray]:
     """Margins of ground roll and of the distance to 50 ft in the most favourable direction.
 
-    The direction is chosen hour by hour as the one whose smaller margin is largest, so both
-    margins belong to the same direction.  A scaled profile without a ground roll has its
-    distance to 50 ft held against TORA as well.
+    The direction is chosen hour by hour as the one whose smaller margin is largest (beyond the
+    table counting as `OUTSIDE_MARGIN`), so both margins belong to the same direction.  A scaled
+    profile without a ground roll has its distance to 50 ft held against TORA as well.
     """
     to_50ft = required(profile, "takeoff", "distance_50ft_m", air)
     scaled = profile.scaled
     has_roll = profile.takeoff or (scaled and scaled.takeoff_ground_roll_m is not None)
     roll = required(profile, "takeoff", "ground_roll_m", air) if has_roll else to_50ft
-    pairs = []
+    best = None
     for direction in (d for d in field.runways if d.takeoff):
         factor = takeoff_correction(direction) * profile.takeoff_factor
-        pairs.append(
-            (direction.tora_m / (roll * factor) - 1.0, direction.toda_m / (to_50ft * factor) - 1.0)
-        )
-    best_roll, best_50ft = pairs[0]
-    for m_roll, m_50ft in pairs[1:]:
-        better = np.minimum(m_roll, m_50ft) > np.minimum(best_roll, best_50ft)
-        best_roll = np.where(better, m_roll, best_roll)
-        best_50ft = np.where(better, m_50ft, best_50ft)
-    return best_roll, best_50ft
+        pair = np.array([direction.tora_m / (roll * factor), direction.toda_m / (to_50ft * factor)])
+        best = pair - 1.0 if best is None else _better(best, pair - 1.0)
+    assert best is not None  # a field without such a direction is refused when it is read
+    return best[0], best[1]
+
+
+def _better(first: np.ndarray, second: np.ndarray) -> np.ndarray:
+    """Of two directions the more favourable, hour by hour; margins of shape (2, n).
+
+    The one whose smaller margin is larger; of equals the one whose other margin is larger, so
+    that the order of the directions does not matter where both are beyond one table.
+    """
+    low, high = np.sort(
+        [np.where(np.isnan(m), OUTSIDE_MARGIN, m) for m in (first, second)], axis=1
+    ).swapaxes(0, 1)
+    wins = (low[1] > low[0]) | ((low[1] == low[0]) & (high[1] > high[0]))
+    return np.where(wins, second, first)
 
 
 def landing_margins(profile: AircraftProfile, field: Field, air: TableAir) -> np.ndarray:
@@ -369,7 +381,22 @@ def margins(profile: AircraftProfile, field: Field, air: TableAir) -> Margins:
     )
     everything = np.concatenate([stack, limits])
     shortfall = outside | (margin < 0) | (limits < 0).any(axis=0)
-    return Margins(margin, shortfall, outside, everything.argmin(axis=0).astype(np.int8))
+    limiting = everything.argmin(axis=0).astype(np.int8)
+    return Margins(margin, shortfall, outside, limiting, everything.astype(np.float32))
+
+
+def checks_of(profile: AircraftProfile) -> tuple[str, ...]:
+    """Those of `CHECKS` that apply to a profile: climb and limits only where stated."""
+    asked = (
+        True,
+        True,
+        True,
+        profile.climb_rate_ft_min is not None,
+        profile.climb_gradient_pct is not None,
+        profile.limit_temperature_c is not None,
+        profile.limit_density_altitude_ft is not None,
+    )
+    return tuple(check for check, wanted in zip(CHECKS, asked, strict=True) if wanted)
 
 
 def _passed(limit: float | None, value: np.ndarray) -> np.ndarray:

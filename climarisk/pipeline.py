@@ -19,13 +19,18 @@ from climarisk.atmosphere import (
     vapour_pressure_hpa,
     virtual_temperature_c,
 )
-from climarisk.climatology import hourly_distribution, monthly_distribution
+from climarisk.climatology import (
+    hourly_distribution,
+    monthly_distribution,
+    seasonal_distribution,
+)
 from climarisk.clock import LocalClock, hour_grid, in_window, local_clock
 from climarisk.errors import InputError
 from climarisk.extremes import extreme_rows
 from climarisk.fields import Field
 from climarisk.findings import Finding, sort_findings
-from climarisk.performance import Margins, TableAir, density_ratio, margins
+from climarisk.near_saturation import near_saturation
+from climarisk.performance import Margins, TableAir, checks_of, density_ratio, margins
 from climarisk.progress import Progress, quiet
 from climarisk.provenance import provenance
 from climarisk.reporting import (
@@ -38,17 +43,8 @@ from climarisk.reporting import (
     station_use,
     temperature_finding,
 )
-from climarisk.results import (
-    DISTRIBUTIONS_HOURLY_COLUMNS,
-    DISTRIBUTIONS_MONTHLY_COLUMNS,
-    RISK_HOURLY_COLUMNS,
-    RISK_MONTHLY_COLUMNS,
-    RISK_SEASONAL_COLUMNS,
-    RISK_YEARLY_COLUMNS,
-    VARIABLES,
-    StudyResult,
-)
-from climarisk.risk import Hours, risk_tables, yearly_counts
+from climarisk.results import FIELD_FRAMES, VARIABLES, StudyResult
+from climarisk.risk import Hours, margins_by_check, risk_tables, yearly_counts
 from climarisk.rules import reporting_findings
 from climarisk.store import Store
 from climarisk.study import Study, read_study
@@ -73,19 +69,16 @@ MOST_HIDDEN = 30
 
 @dataclass(frozen=True)
 class FieldTables:
-    """What one field contributes to the results; the frames lack no contract column."""
+    """What one field contributes to the results.
 
-    distributions_monthly: pd.DataFrame
-    distributions_hourly: pd.DataFrame
-    risk_monthly: pd.DataFrame
-    risk_hourly: pd.DataFrame
-    risk_seasonal: pd.DataFrame
-    risk_yearly: pd.DataFrame
-    station_use: pd.DataFrame
-    pressure_sources: pd.DataFrame
-    estimate: pd.DataFrame
-    trends: pd.DataFrame
-    extremes: pd.DataFrame
+    Parameters
+    ----------
+    frames : dict of str to DataFrame
+        By the names they have in `StudyResult`.
+    findings : tuple of Finding
+    """
+
+    frames: dict[str, pd.DataFrame]
     findings: tuple[Finding, ...]
 
 
@@ -154,30 +147,24 @@ def evaluate(study: Study, weather: Weather, progress: Progress = quiet) -> Stud
             *aircraft_findings(study.aircraft),
         ]
     )
-    use = _stacked([p.station_use for p in parts])
-    pressure = _stacked([p.pressure_sources for p in parts])
+    frames = {name: _stacked([p.frames[name] for p in parts]) for name in parts[0].frames}
+    use = frames["station_use"]
     _refuse_without_station(study, use, findings)
-    estimates = _stacked([p.estimate for p in parts])
-    frames = {"stations": use, "pressure_sources": pressure, "estimate": estimates}
+    told = {
+        "stations": use,
+        "pressure_sources": frames["pressure_sources"],
+        "estimate": frames["estimates"],
+    }
     return StudyResult(
         title=study.title,
         fields=study.fields,
         aircraft=study.aircraft,
         settings=study.settings(),
-        distributions_monthly=_stacked([p.distributions_monthly for p in parts]),
-        distributions_hourly=_stacked([p.distributions_hourly for p in parts]),
-        risk_monthly=_stacked([p.risk_monthly for p in parts]),
-        risk_hourly=_stacked([p.risk_hourly for p in parts]),
-        risk_seasonal=_stacked([p.risk_seasonal for p in parts]),
-        risk_yearly=_stacked([p.risk_yearly for p in parts]),
-        station_use=use,
-        pressure_sources=pressure,
-        estimates=estimates,
-        trends=_stacked([p.trends for p in parts]),
-        extremes=_stacked([p.extremes for p in parts]),
+        **frames,
         attributions=tuple(dict.fromkeys(a for s in weather.stations for a in s.sources)),
         findings=findings,
-        provenance=provenance(study, weather, stations, frames, findings),
+        provenance=provenance(study, weather, stations, told, findings),
+        tiles=study.tiles,
     )
 
 
@@ -301,7 +288,6 @@ def field_tables(
     values = _levels_of_variables(field, air, error.hour_levels[:, None] * sd_k)
     sds = errors_of_variables(field, air, sd_k)
     sd_ft = sds["density_altitude"]
-    of_month, of_hour = _distributions(field, values, sds, clock, inside)
     shifts = error.place_levels[:, None] * sd_k
     scene = _Scene(study, field, air, clock, inside, shifts, sd_ft, error.place_share)
     risk = [_risk(scene, profile) for profile in study.aircraft]
@@ -311,20 +297,17 @@ def field_tables(
     extremes, no_extremes = extreme_rows(field.id, central, clock, study.confidence)
     findings = field_findings(field, chosen, stations, air, clock, study)
     findings += evidence_findings(field, trends, no_extremes, study.confidence)
-    return FieldTables(
-        of_month,
-        of_hour,
-        _stacked([scored.monthly for scored in risk]),
-        _stacked([scored.hourly for scored in risk]),
-        _stacked([scored.seasonal for scored in risk]),
-        _stacked([scored.yearly for scored in risk]),
-        station_use(field, chosen, air, clock),
-        pressure_shares(field, air, clock),
-        estimate(field, chosen, air, field_error, clock),
-        trends,
-        extremes,
-        tuple(findings),
-    )
+    frames = {
+        **_distributions(study, values, sds, clock, inside),
+        **{name: _stacked([s.frames[name] for s in risk]) for name in risk[0].frames},
+        **_near_saturation(study, values, clock, inside),
+        "station_use": station_use(field, chosen, air, clock),
+        "pressure_sources": pressure_shares(field, air, clock),
+        "estimates": estimate(field, chosen, air, field_error, clock),
+    }
+    for name, columns in FIELD_FRAMES.items():
+        frames[name] = frames[name].assign(field=field.id)[columns]
+    return FieldTables(frames | {"trends": trends, "extremes": extremes}, tuple(findings))
 
 
 #: Variables that the transfer error of the temperature moves.
@@ -413,24 +396,37 @@ def shifted(
 
 
 def _distributions(
-    field: Field,
+    study: Study,
     values: dict[str, np.ndarray],
     sds: dict[str, np.ndarray],
     clock: LocalClock,
     inside: np.ndarray,
-) -> tuple[pd.DataFrame, pd.DataFrame]:
-    monthly: list[pd.DataFrame] = []
-    hourly: list[pd.DataFrame] = []
+) -> dict[str, pd.DataFrame]:
+    """Distributions of every variable by month, by month x hour and by season."""
+    made: dict[str, list[pd.DataFrame]] = {"monthly": [], "hourly": [], "seasonal": []}
     for variable, unit in VARIABLES.items():
-        for table, into in (
-            (monthly_distribution(values[variable], clock, inside, sds[variable]), monthly),
-            (hourly_distribution(values[variable], clock, sds[variable]), hourly),
-        ):
-            into.append(table.assign(field=field.id, variable=variable, unit=unit))
-    return (
-        _stacked(monthly)[DISTRIBUTIONS_MONTHLY_COLUMNS],
-        _stacked(hourly)[DISTRIBUTIONS_HOURLY_COLUMNS],
-    )
+        of, sd = values[variable], sds[variable]
+        tables = {
+            "monthly": monthly_distribution(of, clock, inside, sd),
+            "hourly": hourly_distribution(of, clock, sd),
+            "seasonal": seasonal_distribution(of, clock, inside, study.seasons, sd),
+        }
+        for kind, table in tables.items():
+            made[kind].append(table.assign(variable=variable, unit=unit))
+    return {f"distributions_{kind}": _stacked(tables) for kind, tables in made.items()}
+
+
+def _near_saturation(
+    study: Study, values: dict[str, np.ndarray], clock: LocalClock, inside: np.ndarray
+) -> dict[str, pd.DataFrame]:
+    """Shares of hours near saturation; air that the error would supersaturate is at saturation."""
+    spread = np.maximum(values["temperature"] - values["dew_point"], 0.0)
+    monthly, hourly, seasonal = near_saturation(spread, clock, inside, study.seasons)
+    return {
+        "near_saturation_monthly": monthly,
+        "near_saturation_hourly": hourly,
+        "near_saturation_seasonal": seasonal,
+    }
 
 
 @dataclass(frozen=True)
@@ -452,10 +448,7 @@ class _Scored:
     """One aircraft at one field: its tables, and its hours for the trends."""
 
     aircraft: str
-    monthly: pd.DataFrame
-    hourly: pd.DataFrame
-    seasonal: pd.DataFrame
-    yearly: pd.DataFrame
+    frames: dict[str, pd.DataFrame]
     known: np.ndarray
     shortfall: np.ndarray
 
@@ -497,18 +490,16 @@ def _risk(scene: _Scene, profile: AircraftProfile) -> _Scored:
         scene.persistence,
         scene.sd_ft[known],
     )
-    named = {"field": field.id, "aircraft": profile.id}
-    tables = [*risk_tables(scored, study.seasons), yearly_counts(scored)]
-    columns = (
-        RISK_MONTHLY_COLUMNS,
-        RISK_HOURLY_COLUMNS,
-        RISK_SEASONAL_COLUMNS,
-        RISK_YEARLY_COLUMNS,
-    )
-    monthly, hourly, seasonal, yearly = (
-        table.assign(**named)[wanted] for table, wanted in zip(tables, columns, strict=True)
-    )
-    return _Scored(profile.id, monthly, hourly, seasonal, yearly, known, central.shortfall)
+    monthly, hourly, seasonal = risk_tables(scored, study.seasons)
+    frames = {
+        "risk_monthly": monthly,
+        "risk_hourly": hourly,
+        "risk_seasonal": seasonal,
+        "risk_yearly": yearly_counts(scored),
+        "margins_monthly": margins_by_check(scored, checks_of(profile)),
+    }
+    named = {name: table.assign(aircraft=profile.id) for name, table in frames.items()}
+    return _Scored(profile.id, named, known, central.shortfall)
 
 
 def _moved(central: Margins, places: np.ndarray, moved: Margins) -> Margins:
@@ -516,7 +507,7 @@ def _moved(central: Margins, places: np.ndarray, moved: Margins) -> Margins:
     parts = {}
     for name, values in vars(central).items():
         parts[name] = values.copy()
-        parts[name][places] = getattr(moved, name)
+        parts[name][..., places] = getattr(moved, name)
     return Margins(**parts)
 
 

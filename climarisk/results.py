@@ -46,14 +46,37 @@ _RISK = [
     "transfer_error_ft",
     "interval_note",
     "coverage",
+    "hours_offered",  # hours of the cell in a year by the calendar, mean over the period
+    "usable_hours",  # of those, hours that do not fall short, at the share of the known hours
 ]
 DISTRIBUTIONS_MONTHLY_COLUMNS = ["field", "variable", "unit", "month", *_STATISTICS]
 DISTRIBUTIONS_HOURLY_COLUMNS = ["field", "variable", "unit", "month", "hour", *_STATISTICS]
+DISTRIBUTIONS_SEASONAL_COLUMNS = ["field", "variable", "unit", "season", *_STATISTICS]
 RISK_MONTHLY_COLUMNS = ["field", "aircraft", "month", *_RISK]
-RISK_HOURLY_COLUMNS = ["field", "aircraft", "month", "hour", *_RISK]
+#: ``in_window``: share of the cell's days on which the hour lies inside the hours window.
+RISK_HOURLY_COLUMNS = ["field", "aircraft", "month", "hour", *_RISK, "in_window"]
 RISK_SEASONAL_COLUMNS = ["field", "aircraft", "season", *_RISK]
 
 RISK_YEARLY_COLUMNS = ["field", "aircraft", "month", "year", "n_hours", "shortfall_hours"]
+
+#: One row per check that the profile has, over the hours window: the share of hours in which
+#: this check fails, and its margin; no margin for a limit.
+MARGINS_MONTHLY_COLUMNS = [
+    "field",
+    "aircraft",
+    "month",
+    "check",
+    "n_hours",
+    "shortfall",
+    "margin_p10",
+    "margin_p50",
+]
+
+#: Shares of hours whose temperature is at most 1 K, 2.5 K above the dew point.
+_NEAR_SATURATION = ["n_hours", "n_years", "coverage", "share_1k", "share_2_5k"]
+NEAR_SATURATION_MONTHLY_COLUMNS = ["field", "month", *_NEAR_SATURATION]
+NEAR_SATURATION_HOURLY_COLUMNS = ["field", "month", "hour", *_NEAR_SATURATION]
+NEAR_SATURATION_SEASONAL_COLUMNS = ["field", "season", *_NEAR_SATURATION]
 
 #: Columns of `StudyResult.station_use`: one row per field and station used at it.
 STATION_USE_COLUMNS = [
@@ -84,6 +107,41 @@ ESTIMATE_COLUMNS = [
 ]
 
 
+#: Frames of a field that, put below those of the other fields, are the study's.
+FIELD_FRAMES: dict[str, list[str]] = {
+    "distributions_monthly": DISTRIBUTIONS_MONTHLY_COLUMNS,
+    "distributions_hourly": DISTRIBUTIONS_HOURLY_COLUMNS,
+    "distributions_seasonal": DISTRIBUTIONS_SEASONAL_COLUMNS,
+    "risk_monthly": RISK_MONTHLY_COLUMNS,
+    "risk_hourly": RISK_HOURLY_COLUMNS,
+    "risk_seasonal": RISK_SEASONAL_COLUMNS,
+    "risk_yearly": RISK_YEARLY_COLUMNS,
+    "margins_monthly": MARGINS_MONTHLY_COLUMNS,
+    "near_saturation_monthly": NEAR_SATURATION_MONTHLY_COLUMNS,
+    "near_saturation_hourly": NEAR_SATURATION_HOURLY_COLUMNS,
+    "near_saturation_seasonal": NEAR_SATURATION_SEASONAL_COLUMNS,
+    "station_use": STATION_USE_COLUMNS,
+    "pressure_sources": ["field", "source", "share"],
+    "estimates": ESTIMATE_COLUMNS,
+}
+
+
+@dataclass(frozen=True)
+class Tiles:
+    """Where the map page may load background images from.
+
+    Parameters
+    ----------
+    url : str
+        An https address with ``{z}``, ``{x}`` and ``{y}``.
+    attribution : str
+        What the source asks to be shown.
+    """
+
+    url: str
+    attribution: str
+
+
 @dataclass(frozen=True)
 class StudyResult:
     """Everything one run of a study produced.
@@ -97,14 +155,19 @@ class StudyResult:
     settings : dict
         The settings that shaped the numbers, as JSON-ready values: ``first_year``,
         ``last_year``, ``window``, ``seasons``, ``bands``, ``confidence``, ...
-    distributions_monthly, distributions_hourly : DataFrame
-        Columns `DISTRIBUTIONS_MONTHLY_COLUMNS`, `DISTRIBUTIONS_HOURLY_COLUMNS`; every
-        field x variable x month (x hour), in the study's order; a cell that fails the
-        completeness rule is NaN.
+    distributions_monthly, distributions_hourly, distributions_seasonal : DataFrame
+        Columns `DISTRIBUTIONS_MONTHLY_COLUMNS`, `DISTRIBUTIONS_HOURLY_COLUMNS`,
+        `DISTRIBUTIONS_SEASONAL_COLUMNS`; every field x variable x month (x hour) or season, in
+        the study's order; a cell that fails the completeness rule is NaN.
     risk_monthly, risk_hourly, risk_seasonal : DataFrame
         Columns `RISK_MONTHLY_COLUMNS` and so on; shares 0-1.
     risk_yearly : DataFrame
         Columns `RISK_YEARLY_COLUMNS`: each month of each year inside the hours window.
+    margins_monthly : DataFrame
+        Columns `MARGINS_MONTHLY_COLUMNS`.
+    near_saturation_monthly, near_saturation_hourly, near_saturation_seasonal : DataFrame
+        Columns `NEAR_SATURATION_MONTHLY_COLUMNS` and so on; months and seasons inside the
+        hours window.
     station_use : DataFrame
         Columns `STATION_USE_COLUMNS`.
     pressure_sources : DataFrame
@@ -121,6 +184,8 @@ class StudyResult:
         JSON-ready: program version, hashes of the inputs, settings, stations.
     scenarios : DataFrame or None
         Columns `climarisk.scenarios.SCENARIO_COLUMNS`, where variants were asked for.
+    tiles : Tiles or None
+        Background images for the map, where the study names a source of them.
     """
 
     title: str
@@ -129,10 +194,15 @@ class StudyResult:
     settings: dict[str, Any]
     distributions_monthly: pd.DataFrame
     distributions_hourly: pd.DataFrame
+    distributions_seasonal: pd.DataFrame
     risk_monthly: pd.DataFrame
     risk_hourly: pd.DataFrame
     risk_seasonal: pd.DataFrame
     risk_yearly: pd.DataFrame
+    margins_monthly: pd.DataFrame
+    near_saturation_monthly: pd.DataFrame
+    near_saturation_hourly: pd.DataFrame
+    near_saturation_seasonal: pd.DataFrame
     station_use: pd.DataFrame
     pressure_sources: pd.DataFrame
     estimates: pd.DataFrame
@@ -142,3 +212,4 @@ class StudyResult:
     findings: tuple[Finding, ...]
     provenance: dict[str, Any]
     scenarios: pd.DataFrame | None = None
+    tiles: Tiles | None = None

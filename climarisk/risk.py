@@ -11,12 +11,14 @@ import pandas as pd
 from climarisk.climatology import (
     Completeness,
     completeness,
+    season_coverage,
+    season_hours,
     segment_quantiles,
     window_cells,
     window_coverage,
 )
 from climarisk.clock import LocalClock
-from climarisk.performance import CHECKS, Margins
+from climarisk.performance import CHECKS, N_MARGIN_CHECKS, Margins
 from climarisk.rules import YEARS, interval_notes
 from climarisk.study import Season
 
@@ -287,7 +289,66 @@ def risk_tables(
     monthly = shares_by_cell(hours, used & inside, clock.month[known], 12)
     monthly.insert(0, "month", np.arange(1, 13))
     monthly["coverage"] = window_coverage(complete.counts, window_cells(hours.inside, clock))
+    days = np.bincount(clock.month_hour[clock.in_period], minlength=288)
+    _add_usable(hourly, days, clock)
+    offered = hours.inside & clock.in_period
+    hourly["in_window"] = np.bincount(clock.month_hour[offered], minlength=288) / days
+    _add_usable(monthly, np.bincount(clock.month[offered], minlength=12), clock)
     return monthly, hourly, _seasonal(hours, complete, seasons)
+
+
+def _add_usable(table: pd.DataFrame, offered: np.ndarray | int, clock: LocalClock) -> None:
+    """Add the hours a year that the calendar offers in each cell, and those that do not fall short.
+
+    Hours without a value are taken to fall short as often as those with one.
+    """
+    table["hours_offered"] = offered / clock.n_years
+    table["usable_hours"] = table["hours_offered"] * (1.0 - table["shortfall"])
+
+
+def margins_by_check(hours: Hours, checks: Sequence[str]) -> pd.DataFrame:
+    """Margins and shortfall share of each check by month, inside the hours window.
+
+    Parameters
+    ----------
+    hours : Hours
+    checks : sequence of str
+        Those of `climarisk.performance.CHECKS` that the profile has.
+
+    Returns
+    -------
+    DataFrame, shape (12 * len(checks), 6)
+        ``month`` 1-12, ``check``, ``n_hours``, ``shortfall`` (share of the hours in which this
+        check fails, an hour beyond its table among them), ``margin_p10``, ``margin_p50``; no
+        margins for a limit, NaN in a month without an hour.
+    """
+    levels = hours.levels or (hours.central,)
+    places = np.flatnonzero(_complete(hours).used[hours.known] & hours.inside[hours.known])
+    month = hours.clock.month[hours.known[places]]
+    n_hours = np.bincount(month, minlength=12)
+    some = np.where(n_hours > 0, n_hours, np.nan)
+    tables = []
+    for number, check in ((CHECKS.index(name), name) for name in checks):
+        values = np.array([m.checks[number, places] for m in levels])
+        failed = sum(np.bincount(month, row < 0, 12) for row in values) / len(levels)
+        quantiles = np.full((12, 2), np.nan)
+        if number < N_MARGIN_CHECKS:
+            quantiles = segment_quantiles(
+                values.reshape(-1), np.tile(month, len(levels)), 12, np.array([0.1, 0.5])
+            )
+        tables.append(
+            pd.DataFrame(
+                {
+                    "month": np.arange(1, 13),
+                    "check": check,
+                    "n_hours": n_hours,
+                    "shortfall": failed / some,
+                    "margin_p10": quantiles[:, 0],
+                    "margin_p50": quantiles[:, 1],
+                }
+            )
+        )
+    return pd.concat(tables).sort_values("month", kind="stable", ignore_index=True)
 
 
 def _complete(hours: Hours) -> Completeness:
@@ -380,18 +441,14 @@ def _counts_of(table: pd.DataFrame, years: range) -> tuple[np.ndarray, np.ndarra
 
 def _seasonal(hours: Hours, complete: Completeness, seasons: Sequence[Season]) -> pd.DataFrame:
     clock, known = hours.clock, hours.known
-    offered = hours.inside & clock.in_period
-    counting = offered.copy()
-    counting[offered] = complete.counts.reshape(-1)[clock.year_month_hour[offered]]
+    counting = complete.counting(clock)
     tables = []
     for season in seasons:
-        days = np.zeros((13, 32), bool)
-        for month, day in season.days:
-            days[month, day] = True
-        member = days[clock.month + 1, clock.day_of_month]
-        chosen = (complete.used & hours.inside & member)[known]
+        member = hours.inside & season_hours(clock, season)
+        chosen = (complete.used & member)[known]
         table = shares_by_cell(hours, chosen, np.zeros(len(known), int), 1)
         table.insert(0, "season", season.name)
-        table["coverage"] = (counting & member).sum() / max(int((offered & member).sum()), 1)
+        table["coverage"] = season_coverage(counting, member, clock)
+        _add_usable(table, int((member & clock.in_period).sum()), clock)
         tables.append(table)
     return pd.concat(tables, ignore_index=True)

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import datetime as dt
+import re
 from dataclasses import dataclass, field
 from pathlib import Path
 from typing import Annotated, Any, Literal
@@ -14,6 +15,7 @@ from climarisk.aircraft import AircraftProfile, read_aircraft
 from climarisk.errors import InputError
 from climarisk.fields import Field, read_fields, read_runways
 from climarisk.inputs import Name, Strict, load_toml, matching, nearest, repeated, validate
+from climarisk.results import Tiles
 from climarisk.stations import Station, read_stations
 
 _Year = Annotated[int, Ge(1800), Le(2200)]
@@ -76,6 +78,51 @@ class _Risk(Strict):
         return bands
 
 
+_HOST_WORD = r"[a-z0-9](?:[a-z0-9-]*[a-z0-9])?"
+#: An https address of a plain host name; nothing in it can end a word of a security policy.
+_TILE_ADDRESS = re.compile(
+    rf"https://{_HOST_WORD}(?:\.{_HOST_WORD})*(?::(?P<port>[0-9]{{1,5}}))?/[a-z0-9._~%+=&?@:/-]*",
+    re.ASCII | re.IGNORECASE,
+)
+
+
+class _Map(Strict):
+    tiles: Name | None = None
+    tiles_attribution: Name | None = None
+
+    @field_validator("tiles")
+    @classmethod
+    def _address(cls, tiles: str | None) -> str | None:
+        if tiles is None:
+            return None
+        plain = tiles
+        for place in ("{z}", "{x}", "{y}"):
+            if tiles.count(place) != 1:
+                raise ValueError("must hold each of {z}, {x} and {y} once")
+            plain = plain.replace(place, "~")  # no character of a host
+        found = _TILE_ADDRESS.fullmatch(plain)
+        if found is None or not 1 <= int(found["port"] or 443) <= 65535:
+            raise ValueError(
+                "must be an https address of one plain host, such as "
+                '"https://tiles.example.org/{z}/{x}/{y}.png"'
+            )
+        return tiles
+
+    @model_validator(mode="after")
+    def _together(self) -> _Map:
+        if (self.tiles is None) != (self.tiles_attribution is None):
+            raise ValueError(
+                "tiles and tiles_attribution, what the source asks to be shown, are given "
+                "together or not at all; add the other or leave both out"
+            )
+        return self
+
+    def source(self) -> Tiles | None:
+        if self.tiles is None or self.tiles_attribution is None:
+            return None
+        return Tiles(self.tiles, self.tiles_attribution)
+
+
 class _StudyFile(Strict):
     title: Name
     fields: Name
@@ -86,6 +133,7 @@ class _StudyFile(Strict):
     hours: _Hours = _Hours()
     seasons: dict[Name, Annotated[list[str], Len(2, 2)]] = {}
     risk: _Risk = _Risk()
+    map: _Map = _Map()
 
 
 #: No air is carried further in height, even where a field is pinned to a station.
@@ -141,6 +189,8 @@ class Study:
         Kelvins added to the air at every field.
     warmer_holds : {"relative humidity", "vapour pressure"}
         What stays unchanged when the air is warmer.
+    tiles : Tiles or None
+        Background images for the map; they shape no number.
     """
 
     path: Path
@@ -161,6 +211,7 @@ class Study:
     inputs: tuple[Path, ...] = field(default=())
     warmer_k: float = 0.0
     warmer_holds: str = "relative humidity"
+    tiles: Tiles | None = None
 
     @property
     def name(self) -> str:
@@ -239,6 +290,7 @@ def read_study(path: Path | str) -> Study:
         humidity_in_tables=checked.risk.humidity_in_tables,
         seed=checked.weather.seed,
         inputs=tuple(inputs),
+        tiles=checked.map.source(),
     )
 
 

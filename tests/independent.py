@@ -361,6 +361,122 @@ def shortfall_cells(hours, aircraft, runways):
     return table
 
 
+# ---- months inside an hours window: near saturation, checks ----------------------------------
+
+SPREADS_K = (1.0, 2.5)
+
+
+def sun_elevation(utc, latitude, longitude):
+    """Return the geometric elevation of the sun's centre in degrees.
+
+    Low-precision position of Meeus, Astronomical Algorithms (1998), chapters 25 and 28, written
+    down as in the NOAA solar calculator.
+    """
+    days = (utc - datetime(2000, 1, 1, 12)).total_seconds() / 86400
+    t = days / 36525
+    mean = 280.46646 + t * (36000.76983 + 0.0003032 * t)
+    anomaly = math.radians(357.52911 + t * (35999.05029 - 0.0001537 * t))
+    eccentric = 0.016708634 - t * (0.000042037 + 0.0000001267 * t)
+    centre = (1.914602 - t * (0.004817 + 0.000014 * t)) * math.sin(anomaly)
+    centre += (0.019993 - 0.000101 * t) * math.sin(2 * anomaly) + 0.000289 * math.sin(3 * anomaly)
+    node = math.radians(125.04 - 1934.136 * t)
+    true = math.radians(mean + centre - 0.00569 - 0.00478 * math.sin(node))
+    tilt = 23 + (26 + (21.448 - t * (46.815 + t * (0.00059 - 0.001813 * t))) / 60) / 60
+    tilt = math.radians(tilt + 0.00256 * math.cos(node))
+    declination = math.asin(math.sin(tilt) * math.sin(true))
+    y, twice = math.tan(tilt / 2) ** 2, 2 * math.radians(mean)
+    equation = y * math.sin(twice) - 2 * eccentric * math.sin(anomaly)
+    equation += 4 * eccentric * y * math.sin(anomaly) * math.cos(twice)
+    equation -= y * y / 2 * math.sin(2 * twice) + 1.25 * eccentric**2 * math.sin(2 * anomaly)
+    hour_angle = 15 * (utc.hour + utc.minute / 60 + utc.second / 3600) - 180 + longitude
+    hour_angle = math.radians(hour_angle + math.degrees(equation))
+    phi = math.radians(latitude)
+    sine = math.sin(phi) * math.sin(declination)
+    sine += math.cos(phi) * math.cos(declination) * math.cos(hour_angle)
+    return math.degrees(math.asin(sine))
+
+
+def months(pairs, inside):
+    """Return {month: [(local time, value)]} of the counting years' hours inside the window."""
+    table = {month: [] for month in range(1, 13)}
+    cells = counting_cells((local, None if v is None else (local, v)) for local, v in pairs)
+    for (month, _), by_year in cells.items():
+        for dated in by_year.values():
+            table[month] += [(local, value) for local, value in dated if inside(local)]
+    return table
+
+
+def spread_k(air):
+    """Return temperature minus dew point, free of binary noise in the tenths, or None."""
+    if air.temperature is None or air.dew_point is None:
+        return None
+    return max(round(air.temperature - air.dew_point, 6), 0.0)
+
+
+def near_saturation_months(hours, inside):
+    """Return {month: (n_hours, n_years, share at or below 1 K, share at or below 2.5 K)}."""
+    table = {}
+    for month, dated in months([(local, spread_k(air)) for local, air in hours], inside).items():
+        n = len(dated)
+        shares = [sum(v <= k for _, v in dated) / n if n else None for k in SPREADS_K]
+        table[month] = (n, len({local.year for local, _ in dated}), *shares)
+    return table
+
+
+def check_margins(air, aircraft, runways):
+    """Return {check: margin} of an hour, or None if it is unknown; METHODS 5.1, DESIGN 6.
+
+    Beyond a table the margin is -1; a limit has -1 where it is passed, else 0.
+    """
+    if air.density_altitude is None:
+        return None
+    mass, policy = aircraft["mass"]["planning_kg"], aircraft["margins"]
+
+    def figure(operation, name):
+        place = mass, air.pressure_altitude, air.virtual_c
+        return read_table(aircraft[operation], name, *place)
+
+    roll, over50 = figure("takeoff", "ground_roll_m"), figure("takeoff", "distance_50ft_m")
+    land, climb = figure("landing", "distance_50ft_m"), figure("climb", "rate_ft_min")
+    takeoffs, landings = [], []
+    for runway in runways:
+        slope, surface = float(runway["slope_pct"]), runway["surface"]
+        up = TAKEOFF_SURFACE[surface] * (1 + 0.05 * max(slope, 0)) * policy["takeoff_factor"]
+        down = LANDING_SURFACE[surface] * (1 + 0.05 * max(-slope, 0)) * policy["landing_factor"]
+        if runway["takeoff"] == "yes":
+            pair = (length_m(runway, "tora"), roll), (length_m(runway, "toda"), over50)
+            takeoffs.append([-1 if need is None else has / (need * up) - 1 for has, need in pair])
+        if runway["landing"] == "yes":
+            landings.append(-1 if land is None else length_m(runway, "lda") / (land * down) - 1)
+    best = max(takeoffs, key=min)
+    out = {"take-off ground roll": best[0], "take-off to 50 ft": best[1]}
+    out["landing from 50 ft"] = max(landings)
+    out["rate of climb"] = -1 if climb is None else climb / policy["climb_rate_ft_min"] - 1
+    limits = aircraft.get("limits", {})
+    if "temperature_c" in limits:
+        out["temperature limit"] = -1 if air.temperature > limits["temperature_c"] else 0
+    if "density_altitude_ft" in limits:
+        passed = air.density_altitude > limits["density_altitude_ft"]
+        out["density altitude limit"] = -1 if passed else 0
+    return out
+
+
+def check_months(hours, aircraft, runways, inside):
+    """Return {(month, check): (n_hours, share that fails, P10 and P50 of the margin)}."""
+    scored = [(local, check_margins(air, aircraft, runways)) for local, air in hours]
+    checks = next(list(m) for _, m in scored if m is not None)
+    table = {}
+    for month, dated in months(scored, inside).items():
+        for check in checks:
+            ordered = sorted(margins[check] for _, margins in dated)
+            share = sum(m < 0 for m in ordered) / len(ordered) if ordered else None
+            points = [None, None]
+            if ordered and not check.endswith("limit"):
+                points = [type8(ordered, 0.1), type8(ordered, 0.5)]
+            table[month, check] = (len(ordered), share, *points)
+    return table
+
+
 # ---- the study cases -------------------------------------------------------------------------
 
 # field: study, reader, files, station elevation m, field elevation m, UTC offset h, years
@@ -384,6 +500,23 @@ def case(field, shared):
         runways = [row for row in csv.DictReader(handle) if row["field"] == field]
     fleet = [tomllib.loads(p.read_text()) for p in sorted((folder / "aircraft").glob("*.toml"))]
     return field_hours(reports, station_m, field_m, offset, years), years, runways, fleet
+
+
+def window(field, shared):
+    """Return a function that tells of a local standard time whether its study's window has it."""
+    study, *_, offset, _ = CASES[field]
+    folder = shared / "studies" / study
+    wanted = tomllib.loads((folder / "study.toml").read_text())["hours"]["window"]
+    with (folder / "fields.csv").open(newline="") as handle:
+        place = next(row for row in csv.DictReader(handle) if row["id"] == field)
+    at = float(place["latitude"]), float(place["longitude"])
+
+    def inside(local):
+        if wanted == "daylight":
+            return sun_elevation(local - timedelta(hours=offset), *at) >= -6
+        return wanted == "all" or wanted[0] <= local.hour <= wanted[1]
+
+    return inside
 
 
 def main(output, shared):

@@ -45,6 +45,7 @@ FLOORS = {
     "transfer_error": 7,
     "pressure_kind": 7,
     "extremes": 7,
+    "near_saturation": 7,
     "trend": 7,
     "transfer": 8,
     "risk": 7,

@@ -21,9 +21,16 @@ from climarisk.pipeline import run_study
 from climarisk.results import (
     DISTRIBUTIONS_HOURLY_COLUMNS,
     DISTRIBUTIONS_MONTHLY_COLUMNS,
+    DISTRIBUTIONS_SEASONAL_COLUMNS,
+    FIELD_FRAMES,
+    MARGINS_MONTHLY_COLUMNS,
+    NEAR_SATURATION_HOURLY_COLUMNS,
+    NEAR_SATURATION_MONTHLY_COLUMNS,
+    NEAR_SATURATION_SEASONAL_COLUMNS,
     RISK_HOURLY_COLUMNS,
     RISK_MONTHLY_COLUMNS,
     RISK_SEASONAL_COLUMNS,
+    RISK_YEARLY_COLUMNS,
     STATION_USE_COLUMNS,
     VARIABLES,
 )
@@ -32,10 +39,17 @@ from climarisk.store import Store
 TABLES = {
     "distributions_monthly": DISTRIBUTIONS_MONTHLY_COLUMNS,
     "distributions_hourly": DISTRIBUTIONS_HOURLY_COLUMNS,
+    "distributions_seasonal": DISTRIBUTIONS_SEASONAL_COLUMNS,
     "risk_monthly": RISK_MONTHLY_COLUMNS,
     "risk_hourly": RISK_HOURLY_COLUMNS,
     "risk_seasonal": RISK_SEASONAL_COLUMNS,
+    "risk_yearly": RISK_YEARLY_COLUMNS,
+    "margins_monthly": MARGINS_MONTHLY_COLUMNS,
+    "near_saturation_monthly": NEAR_SATURATION_MONTHLY_COLUMNS,
+    "near_saturation_hourly": NEAR_SATURATION_HOURLY_COLUMNS,
+    "near_saturation_seasonal": NEAR_SATURATION_SEASONAL_COLUMNS,
 }
+KEYS = ["field", "aircraft", "variable", "season", "month", "hour", "year", "check"]
 
 
 @pytest.fixture(scope="module")
@@ -61,8 +75,7 @@ def tables_of(result, rename=None, **only):
         for column, names in (rename or {}).items():
             if column in table:
                 table = table.assign(**{column: table[column].replace(names)})
-        keys = ["field", "aircraft", "variable", "season", "month", "hour"]
-        tables[name] = table.sort_values([k for k in keys if k in table]).reset_index(drop=True)
+        tables[name] = table.sort_values([k for k in KEYS if k in table]).reset_index(drop=True)
     return tables
 
 
@@ -87,18 +100,25 @@ def test_tables_hold_every_row_of_the_contract_in_the_studys_order(plain):
     rows = {
         "distributions_monthly": n_fields * len(VARIABLES) * 12,
         "distributions_hourly": n_fields * len(VARIABLES) * 288,
+        "distributions_seasonal": n_fields * len(VARIABLES) * n_seasons,
         "risk_monthly": n_fields * n_aircraft * 12,
         "risk_hourly": n_fields * n_aircraft * 288,
         "risk_seasonal": n_fields * n_aircraft * n_seasons,
+        "risk_yearly": n_fields * n_aircraft * 12 * 2,
+        # Three checks of the tourer; climb and a limit besides of the trainer.
+        "margins_monthly": n_fields * 12 * (3 + 5),
+        "near_saturation_monthly": n_fields * 12,
+        "near_saturation_hourly": n_fields * 288,
+        "near_saturation_seasonal": n_fields * n_seasons,
     }
+    # Every frame of a field is held by these tests, three lists of what was used apart.
+    assert set(FIELD_FRAMES) == set(TABLES) | {"station_use", "pressure_sources", "estimates"}
     for name, columns in TABLES.items():
         table = getattr(plain, name)
         assert list(table.columns) == columns
         assert len(table) == rows[name]
         assert list(dict.fromkeys(table["field"])) == ["LOW", "MID", "TOP"]
-        keys = [
-            c for c in ("field", "aircraft", "variable", "season", "month", "hour") if c in table
-        ]
+        keys = [c for c in KEYS if c in table]
         assert not table.duplicated(keys).any()
     assert list(plain.station_use.columns) == STATION_USE_COLUMNS
     assert plain.distributions_monthly.groupby("variable")["unit"].first().to_dict() == VARIABLES
@@ -115,7 +135,7 @@ def test_every_figure_is_possible(plain, from_files):
             assert (known["days_affected"] >= known["shortfall"] - 1e-12).all()
             assert ((known["limiting"] != "") == (known["shortfall"] > 0)).all()
             assert (known["margin_p10"] <= known["margin_p50"]).all()
-        for name in ("distributions_monthly", "distributions_hourly"):
+        for name in ("distributions_monthly", "distributions_hourly", "distributions_seasonal"):
             table = getattr(result, name)
             assert table["coverage"].between(0, 1).all()
             percentiles = table[[c for c in table if re.fullmatch(r"p\d\d", c)]].dropna()
@@ -123,6 +143,11 @@ def test_every_figure_is_possible(plain, from_files):
             humidity = table[table["variable"] == "relative_humidity"]
             assert humidity["p99"].max() <= 100 + 1e-9
             assert (table["mean"].isna() == (table["n_hours"] == 0)).all()
+        for name in ("near_saturation_monthly", "near_saturation_hourly"):
+            table = getattr(result, name)
+            known = table[table["n_hours"] > 0]
+            assert known["share_1k"].between(0, 1).all() and known["share_2_5k"].between(0, 1).all()
+            assert (known["share_1k"] <= known["share_2_5k"]).all()
 
 
 def test_window_of_all_hours_pools_the_hourly_cells(study_folder):
@@ -198,9 +223,12 @@ def test_field_without_a_station_is_told_and_has_no_figures(study_folder, plain)
     assert ("reject", "no-station") in told(result, "field", "TOP")
     for name in TABLES:
         table = table_of(result, name, field="TOP")
-        assert (table["n_hours"] == 0).all() and len(table) > 0
-        figures = [c for c in ("mean", "p50", "shortfall", "ci_low", "margin_p50") if c in table]
+        assert (table["n_hours"] == 0).all() and (len(table) > 0 or name == "risk_yearly")
+        figures = ["mean", "p50", "shortfall", "ci_low", "margin_p50", "usable_hours", "share_1k"]
+        figures = [c for c in figures if c in table]
         assert table[figures].isna().all().all()
+        if "hours_offered" in table:
+            assert (table["hours_offered"] > 0).all()
     for field in ("LOW", "MID"):
         assert_same_tables(tables_of(result, field=field), tables_of(plain, field=field))
 

@@ -1,6 +1,7 @@
 """The shared studies as they stand, against a second computation from the raw files."""
 
 import json
+from datetime import datetime, timedelta
 
 import independent
 import numpy as np
@@ -8,9 +9,9 @@ import pandas as pd
 import pytest
 from study_maker import StudyFolder
 
-from climarisk.outputs.tables import write_outputs
+from climarisk.outputs.tables import OUTPUT_FILES, write_outputs
 from climarisk.pipeline import run_study
-from climarisk.results import VARIABLES
+from climarisk.results import FIELD_FRAMES, VARIABLES
 from climarisk.store import Store
 
 STUDIES = ("pernambuco", "lakeside", "high_plains")
@@ -18,16 +19,23 @@ CONTRACT = {
     "map.html",
     "distributions_monthly.csv",
     "distributions_hourly.csv",
+    "distributions_seasonal.csv",
     "risk_monthly.csv",
     "risk_hourly.csv",
     "risk_seasonal.csv",
     "risk_yearly.csv",
+    "margins_monthly.csv",
+    "near_saturation_monthly.csv",
+    "near_saturation_hourly.csv",
+    "near_saturation_seasonal.csv",
     "trends.csv",
     "extremes.csv",
     "fields.gpkg",
     "fields.geojson",
     "study.json",
 }
+#: What a run without scenarios writes: the contract, which is named here, and all that came since.
+FILES = set(OUTPUT_FILES) - {"scenarios.csv"}
 PERCENTILES = [f"p{q:02d}" for q in independent.PERCENTS]
 #: Cells (month, hour) with an hour whose only pressure is a sea-level one: the program inverts it
 #: as the station's own record shows, the second computation by the formula.
@@ -110,6 +118,65 @@ def test_shortfall_shares_equal_the_second_computation(pair):
             np.testing.assert_array_equal(own[column], second[column])
 
 
+def test_near_saturation_shares_equal_the_second_computation(pair, shared):
+    field, result, (hours, _, _, _) = pair
+    inside = independent.window(field, shared)
+    own = result.near_saturation_monthly
+    own = own[own["field"] == field].set_index("month")
+    second = pd.DataFrame.from_dict(
+        independent.near_saturation_months(hours, inside), orient="index", dtype=float
+    )
+    assert list(own.index) == list(second.index) == list(range(1, 13))
+    for place, column in enumerate(("n_hours", "n_years", "share_1k", "share_2_5k")):
+        np.testing.assert_array_equal(own[column], second[place], err_msg=column)
+    assert (second[3].dropna() > 0).any() and (second[2].dropna() < 1).all()
+
+
+def test_shares_and_margins_of_each_check_equal_the_second_computation(pair, shared):
+    field, result, (hours, _, runways, fleet) = pair
+    inside = independent.window(field, shared)
+    for aircraft in fleet:
+        own = result.margins_monthly
+        own = own[(own["field"] == field) & (own["aircraft"] == aircraft["id"])]
+        own = own.set_index(["month", "check"])
+        second = pd.DataFrame.from_dict(
+            independent.check_months(hours, aircraft, runways, inside), orient="index", dtype=float
+        )
+        assert list(own.index) == list(second.index) and len(own) == 12 * 5
+        np.testing.assert_array_equal(own["n_hours"], second[0])
+        np.testing.assert_array_equal(own["shortfall"], second[1])
+        # The same formulas; a field 0.13 m from its station's elevation differs by 1 Pa.
+        columns = ["margin_p10", "margin_p50"]
+        np.testing.assert_allclose(own[columns], second[[2, 3]], rtol=0, atol=1e-5)
+        limits = own.index.get_level_values("check").str.endswith("limit")
+        assert own.loc[limits, columns].isna().all().all()
+
+
+def test_hours_offered_and_usable_equal_the_second_computation(pair, shared):
+    field, result, (hours, years, runways, fleet) = pair
+    inside = independent.window(field, shared)
+    hour, offered = datetime(years[0], 1, 1), dict.fromkeys(range(1, 13), 0)
+    while hour.year <= years[1]:
+        offered[hour.month] += inside(hour)
+        hour += timedelta(hours=1)
+    offered = np.array(list(offered.values())) / (years[1] - years[0] + 1)
+    for aircraft in fleet:
+        own = own_months(result.risk_monthly, field=field, aircraft=aircraft["id"])
+        np.testing.assert_allclose(own["hours_offered"], offered, rtol=1e-14)
+    scored = [(t, independent.shortfall(air, fleet[0], runways)) for t, air in hours]
+    own = own_months(result.risk_monthly, field=field, aircraft=fleet[0]["id"])
+    for month, dated in independent.months(scored, inside).items():
+        fine = [not short for _, (short, _) in dated]
+        usable = offered[month - 1] * sum(fine) / len(fine) if fine else np.nan
+        assert own.loc[month, "usable_hours"] == pytest.approx(usable, rel=1e-12, nan_ok=True)
+
+
+def own_months(table, **ids):
+    for column, value in ids.items():
+        table = table[table[column] == value]
+    return table.set_index("month").sort_index()
+
+
 @pytest.mark.parametrize("study", STUDIES)
 def test_no_field_is_without_figures(results, study):
     result = results[study]
@@ -127,7 +194,7 @@ def test_no_field_is_without_figures(results, study):
 @pytest.mark.parametrize("study", STUDIES)
 def test_second_run_reads_the_store_and_gives_the_same(shared, store, results, study):
     again = run_study(shared / "studies" / study, store=store)
-    for name in ("distributions_hourly", "distributions_monthly", "risk_hourly", "risk_seasonal"):
+    for name in FIELD_FRAMES:
         pd.testing.assert_frame_equal(
             getattr(again, name), getattr(results[study], name), check_exact=True
         )
@@ -146,7 +213,7 @@ def rejects(result, subject="station"):
 
 def test_high_plains_tells_the_constant_pressure_and_the_wrong_elevation(results, tmp_path):
     files = write_outputs(results["high_plains"], tmp_path / "out")
-    assert {p.name for p in files} == CONTRACT
+    assert {p.name for p in files} == FILES >= CONTRACT
     written = json.loads((tmp_path / "out" / "study.json").read_text())
     told = {
         (f["id"], f["check"]): f["message"]

@@ -29,7 +29,9 @@ def margins_of(margin, outside=None, limiting=None):
     n = len(margin)
     outside = np.zeros(n, bool) if outside is None else outside
     limiting = np.zeros(n, np.int8) if limiting is None else limiting
-    return Margins(margin, (margin < 0) | outside, outside, limiting)
+    checks = np.full((len(CHECKS), n), np.inf, np.float32)
+    checks[0] = margin
+    return Margins(margin, (margin < 0) | outside, outside, limiting, checks)
 
 
 def hours_of(clock, margin_on_grid, window="all", confidence=0.9, **parts):

@@ -58,12 +58,12 @@ def scene(tmp_path_factory):
 
 
 def risk_of(tables, name="risk_monthly", aircraft="trainer"):
-    table = getattr(tables, name)
+    table = tables.frames[name]
     return table[table["aircraft"] == aircraft].reset_index(drop=True)
 
 
 def variable_of(tables, variable="density_altitude", name="distributions_monthly"):
-    table = getattr(tables, name)
+    table = tables.frames[name]
     return table[table["variable"] == variable].reset_index(drop=True)
 
 
@@ -71,11 +71,11 @@ def test_field_on_its_station_is_the_same_to_the_last_digit_with_any_error(scene
     tables = scene[-1]
     for name in TABLES:
         pd.testing.assert_frame_equal(
-            getattr(tables["OWN", True], name),
-            getattr(tables["OWN", False], name),
+            tables["OWN", True].frames[name],
+            tables["OWN", False].frames[name],
             check_exact=True,
         )
-    row = tables["OWN", True].estimate.iloc[0]
+    row = tables["OWN", True].frames["estimates"].iloc[0]
     assert (row["own_station"], row["transfer_error_k"], row["transfer_error_ft"]) == (1.0, 0, 0)
 
 
@@ -84,7 +84,7 @@ def test_error_never_changes_which_hours_enter(scene):
     for field in ("NEAR", "FAR"):
         for name in TABLES:
             for column in ("n_hours", "n_years", "coverage"):
-                a, b = (getattr(tables[field, e], name) for e in (True, False))
+                a, b = (tables[field, e].frames[name] for e in (True, False))
                 if column in a:
                     pd.testing.assert_series_equal(a[column], b[column], check_exact=True)
 
@@ -112,7 +112,10 @@ def test_carried_air_has_wider_percentiles_and_wider_intervals(scene, field):
 
 def test_farther_field_has_the_larger_error(scene):
     tables = scene[-1]
-    sizes = [tables[f, True].estimate["transfer_error_ft"].iloc[0] for f in ("OWN", "NEAR", "FAR")]
+    sizes = [
+        tables[f, True].frames["estimates"]["transfer_error_ft"].iloc[0]
+        for f in ("OWN", "NEAR", "FAR")
+    ]
     assert sizes[0] == 0 < sizes[1] < sizes[2]
     # Planning values: 0.9 K at no height to 1.5 K at 500 m, 108-130 ft each (METHODS 2.7).
     assert 0.9 * 108 < sizes[1] < 1.5 * 130
