@@ -26,7 +26,8 @@ import folium
 from folium.template import Template
 
 from climarisk.fields import Field
-from climarisk.outputs.map_data import drawn_longitudes, payload
+from climarisk.outputs.background import drawn_longitudes, image_sources
+from climarisk.outputs.map_data import payload
 from climarisk.results import StudyResult
 
 #: Scripts of the page in the order in which they are joined.
@@ -36,15 +37,38 @@ _SCRIPTS = (
     "format.js",
     "scale.js",
     "ground.js",
+    "tiles.js",
+    "cards.js",
+    "labels.js",
     "markers.js",
     "list.js",
+    "state.js",
+    "controls.js",
     "grid.js",
     "chart.js",
-    "cards.js",
+    "air.js",
+    "works.js",
     "evidence.js",
     "panel.js",
+    "compare.js",
     "method.js",
+    "print.js",
     "app.js",
+)
+
+#: Style of the page in the order in which it is joined, after Leaflet's.
+_STYLES = (
+    "base.css",
+    "view.css",
+    "ground.css",
+    "map.css",
+    "list.css",
+    "panel.css",
+    "grid.css",
+    "compare.css",
+    "method.css",
+    "narrow.css",
+    "print.css",
 )
 
 
@@ -60,7 +84,7 @@ class _FieldMap(folium.Map):
             center: {{ this.location|tojson }},
             ...{{ this.options|tojavascript }}
         });
-        L.control.scale({imperial: false}).addTo({{ this.get_name() }});
+        L.control.scale({imperial: false, maxWidth: 150}).addTo({{ this.get_name() }});
         {% endmacro %}
         """
     )
@@ -89,9 +113,9 @@ def render_map(result: StudyResult) -> str:
     chart = _map_script(result.fields)
     page = _page_script()
     parts = {
-        "policy": _policy(leaflet, chart, page),
+        "policy": _policy(image_sources(result.tiles), leaflet, chart, page),
         "title": html.escape(result.title),
-        "style": _leaflet_style() + _page_text("page.css"),
+        "style": _leaflet_style() + "".join(_page_text(name) for name in _STYLES),
         "data": _safe_json(payload(result)),
         "licence": _page_text("LEAFLET-LICENSE").strip(),
         "leaflet": leaflet,
@@ -156,14 +180,14 @@ def _middle(values: Sequence[float]) -> float:
     return round((min(values) + max(values)) / 2.0, 4)
 
 
-def _policy(*scripts: str) -> str:
-    """A content security policy that lets exactly these scripts run and loads nothing."""
+def _policy(images: str, *scripts: str) -> str:
+    """A content security policy that lets exactly these scripts run and loads these images."""
     hashes = " ".join(
         f"'sha256-{base64.b64encode(hashlib.sha256(s.encode()).digest()).decode('ascii')}'"
         for s in scripts
     )
     return (
-        f"default-src 'none'; script-src {hashes}; style-src 'unsafe-inline'; img-src data:; "
+        f"default-src 'none'; script-src {hashes}; style-src 'unsafe-inline'; img-src {images}; "
         "base-uri 'none'; form-action 'none'"
     )
 

@@ -22,7 +22,8 @@ def share_text(share: float) -> str:
         return "no data"
     if 0.0 < share < 0.01:
         return "< 1 %"
-    return f"{math.floor(Fraction(share) * 100 + Fraction(1, 2))} %"
+    # 0.045 is a little below 9/200 as a float; the share it stands for is not.
+    return f"{math.floor(Fraction(round(share * 10**8), 10**6) + Fraction(1, 2))} %"
 
 
 def altitude_text(feet: float) -> str:
@@ -35,6 +36,8 @@ def altitude_text(feet: float) -> str:
 def interval_text(low: float, high: float) -> str:
     if math.isnan(low):
         return "none"
+    if share_text(low) == share_text(high):
+        return share_text(low)
     return f"{share_text(low)}-{share_text(high)}".replace(" %-", "-").replace("< ", "<")
 
 
@@ -191,9 +194,14 @@ def test_markers_show_density_altitude_of_the_frames(opened, result, measure, co
     assert markers(page) == expected
 
 
-def test_season_shows_the_seasonal_shares_over_the_whole_window(opened, result):
+def test_season_shows_the_seasonal_figures_over_the_whole_window(opened, result):
     page = opened().open("#hour=14&measure=p90")
     page.select_option("#period", "s3")
+    frame = result.distributions_seasonal
+    rows = frame[frame["variable"] == "density_altitude"]
+    rows = rows[rows["season"] == "</script>summer"]
+    assert markers(page) == {r.field: altitude_text(r.p90) for r in rows.itertuples()}
+    page.select_option("#measure", "shortfall")
     frame = result.risk_seasonal
     rows = frame[(frame["aircraft"] == "aircraft-0") & (frame["season"] == "</script>summer")]
     assert markers(page) == {r.field: share_text(r.shortfall) for r in rows.itertuples()}
@@ -235,7 +243,7 @@ def test_no_data_looks_different_from_zero(opened):
     page = opened().open("#field=field-1&month=3&hour=2")
     zero, none = "td[data-month='2'][data-hour='2']", "td[data-month='1'][data-hour='2']"
     assert (page.inner_text(zero), page.inner_text(none)) == ("0", "\u2013")
-    assert page.get_attribute(none, "aria-label") == "no data"
+    assert page.get_attribute(none, "aria-label") == "no data, outside the window"
     image = "(node) => getComputedStyle(node).backgroundImage"
     assert "gradient" in page.eval_on_selector(none, image)
     assert page.eval_on_selector(zero, image) == "none"
@@ -271,7 +279,7 @@ def test_panel_shows_the_month_table_of_the_frame(opened, result):
             share_text(row.days_affected),
             share_text(row.outside_table),
             row.limiting or "none",
-            str(row.n_years),
+            f"{row.n_years}\n{share_text(row.coverage)}",
         ]
 
 
@@ -280,6 +288,8 @@ def test_panel_shows_density_altitude_and_humidity_of_the_frame(opened, result):
     frame = result.distributions_monthly
     frame = frame[frame["field"] == "field-0"].set_index("variable")
     altitude, humidity = frame.loc["density_altitude"], frame.loc["relative_humidity"]
+    near = result.near_saturation_monthly
+    near = near[near["field"] == "field-0"]
     _, high, wet = page.locator("table.months").all()
     for i, line in enumerate(high.locator("tbody tr").all()):
         columns = ["p10", "p25", "p50", "p75", "p90", "p95"]
@@ -289,6 +299,7 @@ def test_panel_shows_density_altitude_and_humidity_of_the_frame(opened, result):
     assert high.locator("xpath=following-sibling::ul[1]").inner_text() == f"a {note}"
     for i, line in enumerate(wet.locator("tbody tr").all()):
         expected = [share_text(humidity.iloc[i][c] / 100) for c in ("p10", "p50", "p90")]
+        expected += [share_text(near.iloc[i][c]) for c in ("share_2_5k", "share_1k")]
         assert line.locator("td").all_inner_texts() == expected
     assert page.locator("svg.band-chart").count() == 2
 

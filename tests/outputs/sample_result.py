@@ -18,7 +18,12 @@ from climarisk.findings import Finding
 from climarisk.results import (
     DISTRIBUTIONS_HOURLY_COLUMNS,
     DISTRIBUTIONS_MONTHLY_COLUMNS,
+    DISTRIBUTIONS_SEASONAL_COLUMNS,
     ESTIMATE_COLUMNS,
+    MARGINS_MONTHLY_COLUMNS,
+    NEAR_SATURATION_HOURLY_COLUMNS,
+    NEAR_SATURATION_MONTHLY_COLUMNS,
+    NEAR_SATURATION_SEASONAL_COLUMNS,
     PERCENTILES,
     RISK_HOURLY_COLUMNS,
     RISK_MONTHLY_COLUMNS,
@@ -78,10 +83,15 @@ def sample_result(n_fields: int = 6, n_aircraft: int = 2, seed: int = 7) -> Stud
         },
         distributions_monthly=monthly,
         distributions_hourly=_distributions(rng, fields, hourly=True),
+        distributions_seasonal=_of_seasons(monthly),
         risk_monthly=risk_monthly,
         risk_hourly=_risk(rng, fields, aircraft, "hour"),
         risk_seasonal=_risk(rng, fields, aircraft, "season"),
-        risk_yearly=pd.DataFrame(columns=RISK_YEARLY_COLUMNS),
+        risk_yearly=_yearly(risk_monthly),
+        margins_monthly=_margins(risk_monthly),
+        near_saturation_monthly=_near_saturation(fields, "month"),
+        near_saturation_hourly=_near_saturation(fields, "hour"),
+        near_saturation_seasonal=_near_saturation(fields, "season"),
         station_use=_station_use(fields),
         pressure_sources=pd.DataFrame(
             [
@@ -155,6 +165,7 @@ def _aircraft(i: int) -> AircraftProfile:
         landing=(table,),
         climb=(table,) if i != 1 else (),
         scaled=scaled,
+        limit_density_altitude_ft=7000.0 if i == 0 else None,
     )
 
 
@@ -219,11 +230,81 @@ def _risk(rng: np.random.Generator, fields, aircraft, kind: str) -> pd.DataFrame
         if empty:
             numbers, tail = [math.nan] * 4, [None, *[math.nan] * 5]
         note = interval_notes(np.array([years]))[0]
-        rows.append([*cell, 300 * years, years, *numbers, *tail, note, years / 15])
+        offered = {"month": 360.0, "hour": 30.0, "season": 1080.0}[kind]
+        rows.append(
+            [
+                *cell,
+                300 * years,
+                years,
+                *numbers,
+                *tail,
+                note,
+                years / 15,
+                offered,
+                offered * (1.0 - numbers[0]),
+            ]
+        )
+        if kind == "hour":
+            rows[-1].append(float(6 <= cell[3] <= 19))  # the whole year alike
     columns = {
         "month": RISK_MONTHLY_COLUMNS,
         "hour": RISK_HOURLY_COLUMNS,
         "season": RISK_SEASONAL_COLUMNS,
+    }[kind]
+    return pd.DataFrame(rows, columns=columns)
+
+
+def _of_seasons(monthly: pd.DataFrame) -> pd.DataFrame:
+    """The months 1, 4, 7 and 10 as the seasons, 250 moved."""
+    rows = monthly[monthly["month"].isin([1, 4, 7, 10])].copy()
+    rows["season"] = rows["month"].map(dict(zip((1, 4, 7, 10), SEASONS, strict=True)))
+    density = rows["variable"] == "density_altitude"
+    shown = [f"p{p:02d}" for p in PERCENTILES] + ["mean"]
+    rows.loc[density, shown] += 250.0
+    return rows[DISTRIBUTIONS_SEASONAL_COLUMNS].reset_index(drop=True)
+
+
+def _yearly(risk: pd.DataFrame) -> pd.DataFrame:
+    """Ten years of 30 hours each, the shares stepping up and down around that of the month."""
+    rows = []
+    for cell in risk[risk["shortfall"].notna()].itertuples():
+        for year in range(2010, 2020):
+            share = min(1.0, cell.shortfall * (0.5 + (year - 2010) / 9))
+            rows.append([cell.field, cell.aircraft, cell.month, year, 30, 30 * share])
+    return pd.DataFrame(rows, columns=RISK_YEARLY_COLUMNS)
+
+
+def _margins(risk: pd.DataFrame) -> pd.DataFrame:
+    """Three checks of every aircraft, the first aircraft with a limit as well."""
+    rows = []
+    for cell in risk.itertuples():
+        checks = list(LIMITS) + (["density altitude limit"] if cell.aircraft[-1] == "0" else [])
+        for n, check in enumerate(checks):
+            share = cell.shortfall / (n + 1)
+            margins = [0.4 - share, 0.6 - share] if check in LIMITS else [math.nan] * 2
+            rows.append([cell.field, cell.aircraft, cell.month, check, cell.n_hours, share])
+            rows[-1] += margins
+    return pd.DataFrame(rows, columns=MARGINS_MONTHLY_COLUMNS)
+
+
+def _near_saturation(fields, kind: str) -> pd.DataFrame:
+    axes: list = [[f.id for f in fields]]
+    axes += [list(SEASONS)] if kind == "season" else [range(1, 13)]
+    axes += [range(24)] if kind == "hour" else []
+    rows = []
+    for cell in itertools.product(*axes):
+        empty = cell[0] == EMPTY_FIELD or (cell[0] == "field-1" and cell[1] in (2, 4))
+        number = int(cell[0].split("-")[1])
+        month = 6 if kind == "season" else cell[1]
+        night = 0.5 + 0.5 * math.cos((cell[2] - 3) / 24 * 2 * math.pi) if kind == "hour" else 0.3
+        wide = 0.0503 * (number % 5) + 0.3011 * night * (0.5 + 0.5 * math.cos(month / 6 * math.pi))
+        years = 0 if empty else 14
+        shares = [math.nan] * 2 if empty else [wide / 3, wide]
+        rows.append([*cell, 300 * years, years, years / 15, *shares])
+    columns = {
+        "month": NEAR_SATURATION_MONTHLY_COLUMNS,
+        "hour": NEAR_SATURATION_HOURLY_COLUMNS,
+        "season": NEAR_SATURATION_SEASONAL_COLUMNS,
     }[kind]
     return pd.DataFrame(rows, columns=columns)
 

@@ -5,6 +5,7 @@ from __future__ import annotations
 import base64
 import hashlib
 import json
+import math
 import re
 from dataclasses import replace
 from fractions import Fraction
@@ -18,10 +19,11 @@ from hypothesis import given
 from hypothesis import strategies as st
 from sample_result import HOSTILE, SEASONS, sample_result
 
+from climarisk.outputs import background, packing
 from climarisk.outputs import map as map_module
-from climarisk.outputs import map_data
 from climarisk.outputs.map import render_map
-from climarisk.outputs.map_data import CAUTIONS, NO_BYTE, NO_FEET
+from climarisk.outputs.packing import NO_BYTE, NO_FEET, NO_HOURS
+from climarisk.outputs.texts import CAUTIONS
 
 # Subresource integrity value published for leaflet.js 1.9.3 (npm package leaflet 1.9.3,
 # dist/leaflet.js); the value in base64 is sha256-WBkoXOwTeyKclOHuWtc+i2uENFpDZ9YPdf5Hf+D7ewM=.
@@ -77,8 +79,22 @@ def _study(parsed: _Parsed) -> dict:
     return json.loads(parsed.all("script")[0])
 
 
-def _array(parsed: _Parsed, name: str, dtype: str) -> np.ndarray:
-    return np.frombuffer(base64.b64decode(_study(parsed)["arrays"][name]), dtype)
+def _array(parsed: _Parsed, name: str) -> np.ndarray:
+    kind, text = _study(parsed)["arrays"][name]
+    raw = base64.b64decode(text)
+    if kind == "r1":
+        return _unrolled(raw)
+    return np.frombuffer(raw, {"u1": "u1", "u2": "<u2", "i2": "<i2"}[kind])
+
+
+def _unrolled(marks: bytes) -> np.ndarray:
+    """A byte that comes twice is followed by a third that says how often more."""
+    values, i = [], 0
+    while i < len(marks):
+        twice = i + 1 < len(marks) and marks[i] == marks[i + 1]
+        values += [marks[i]] * (2 + marks[i + 2] if twice else 1)
+        i += 3 if twice else 1
+    return np.array(values, "u1")
 
 
 def test_render_map_same_result_gives_same_bytes(page):
@@ -189,7 +205,7 @@ def test_cautions_are_in_the_page(parsed):
 
 
 def test_packed_shares_are_those_of_the_frame(result, parsed):
-    packed = _array(parsed, "hour_shortfall", "u1").reshape(6, 2, 12, 24)
+    packed = _array(parsed, "hour_shortfall").reshape(6, 2, 12, 24)
     levels = _study(parsed)["levels"]
     for row in result.risk_hourly.itertuples():
         cell = packed[int(row.field[-1]), int(row.aircraft[-1]), row.month - 1, row.hour]
@@ -203,10 +219,53 @@ def test_packed_shares_are_those_of_the_frame(result, parsed):
 def test_packed_density_altitude_is_that_of_the_frame(result, parsed):
     frame = result.distributions_hourly
     frame = frame[frame["variable"] == "density_altitude"]
-    packed = _array(parsed, "altitude_hour_p90", "<i2").reshape(6, 12, 24)
+    packed = _array(parsed, "altitude_hour_p90").reshape(6, 12, 24)
+    base = _study(parsed)["altitudeBase"]
     for row in frame.itertuples():
         cell = packed[int(row.field[-1]), row.month - 1, row.hour]
-        assert cell == (NO_FEET if np.isnan(row.p90) else np.floor(row.p90))
+        hundreds = NO_BYTE if np.isnan(row.p90) else int(np.floor(row.p90 / 100 + 0.5)) - base
+        assert cell == hundreds
+
+
+def test_packed_usable_hours_are_those_of_the_frames_rounded_down(result, parsed):
+    months = _array(parsed, "month_usable").reshape(6, 2, 12)
+    offered = _array(parsed, "month_offered").reshape(6, 12)
+    for row in result.risk_monthly.itertuples():
+        cell = int(row.field[-1]), int(row.aircraft[-1]), row.month - 1
+        known = not np.isnan(row.usable_hours)
+        assert months[cell] == (int(row.usable_hours) if known else NO_HOURS)
+        assert offered[cell[0], cell[2]] == int(row.hours_offered)
+
+
+def test_window_bits_are_the_hours_of_the_window(result, parsed):
+    bits = np.unpackbits(_array(parsed, "window_bits").reshape(6, 36), axis=1)
+    for row in result.risk_hourly.itertuples():
+        place = (row.month - 1) * 24 + row.hour
+        assert bits[int(row.field[-1]), place] == (row.in_window > 0)
+
+
+def test_packed_margins_are_those_of_the_frame_rounded_down(result, parsed):
+    checks = _study(parsed)["checks"]
+    margins = _array(parsed, "check_margin_p10").reshape(6, 2, len(checks), 12)
+    shares = _array(parsed, "check_shortfall").reshape(6, 2, len(checks), 12)
+    levels = _study(parsed)["levels"]
+    seen = np.zeros(margins.shape, bool)
+    for row in result.margins_monthly.itertuples():
+        who = int(row.field[-1]), int(row.aircraft[-1])
+        cell = (*who, checks.index(row.check), row.month - 1)
+        seen[cell] = True
+        if np.isnan(row.margin_p10):
+            assert margins[cell] == NO_BYTE
+        else:
+            assert margins[cell] == np.floor(row.margin_p10 * 100.0) + 100
+        if np.isnan(row.shortfall):
+            assert shares[cell] == NO_BYTE
+        else:
+            assert 0.0 <= row.shortfall - levels[shares[cell]] < 0.01
+    # A check that a profile does not have is no data, not a pass.
+    assert not seen.all()
+    assert (margins[~seen] == NO_BYTE).all()
+    assert (shares[~seen] == NO_BYTE).all()
 
 
 def test_rows_in_another_order_give_the_same_page(result, page):
@@ -220,7 +279,7 @@ def test_rows_in_another_order_give_the_same_page(result, page):
 
 def test_missing_rows_are_no_data(result):
     fewer = replace(result, risk_hourly=result.risk_hourly.iloc[:0])
-    packed = _array(_Parsed(render_map(fewer)), "hour_shortfall", "u1")
+    packed = _array(_Parsed(render_map(fewer)), "hour_shortfall")
     assert len(packed) == 6 * 2 * 12 * 24
     assert (packed == NO_BYTE).all()
 
@@ -229,8 +288,8 @@ def test_missing_rows_are_no_data(result):
 def test_share_codes_keep_the_band_and_the_whole_per_cent(hours, edge, data):
     exact = Fraction(data.draw(st.integers(0, hours)), hours)
     band = Fraction(edge, 1000)
-    levels = map_data._share_levels([float(band)])
-    code = int(map_data._share_codes(pd.Series([float(exact)]), levels)[0])
+    levels = packing.share_levels([float(band)])
+    code = int(packing.share_codes(pd.Series([float(exact)]), levels)[0])
     level = Fraction(str(levels[code])) if code != 1 else Fraction(1, 10**9)
 
     def shown(share):
@@ -242,24 +301,44 @@ def test_share_codes_keep_the_band_and_the_whole_per_cent(hours, edge, data):
         assert shown(level) == shown(exact)
 
 
+@given(
+    hours=st.integers(1, 700), days=st.sampled_from([28.25, 28.2667, 30.0, 31.0]), data=st.data()
+)
+def test_share_codes_keep_the_whole_days_that_are_usable(hours, days, data):
+    share = data.draw(st.integers(0, hours)) / hours
+    levels = packing.share_levels([0.01, 0.05, 0.2], [days])
+    level = float(levels[int(packing.share_codes(pd.Series([share]), levels)[0])])
+    shown = math.floor(days * (1.0 - level) - (1e-9 if level > 0 else 0.0))
+    exact = Fraction(days) * (1 - Fraction(share))
+    # A share whose days are whole to within rounding may fall on either side.
+    assert shown == math.floor(exact) or abs(exact - round(exact)) < Fraction(1, 10**8)
+    assert shown <= exact + Fraction(1, 10**8)
+
+
+@given(st.lists(st.tuples(st.integers(0, 255), st.integers(1, 700)), max_size=30))
+def test_runs_unroll_to_what_was_rolled(runs):
+    values = np.concatenate([np.full(n, v, "u1") for v, n in runs] or [np.zeros(0, "u1")])
+    assert _unrolled(packing.run_lengths(values).tobytes()).tolist() == values.tolist()
+
+
 def test_codes_keep_no_data_apart():
-    levels = map_data._share_levels([0.01, 0.05, 0.2])
-    codes = map_data._share_codes(pd.Series([np.nan, 0.0, 1e-9, 1.0]), levels)
+    levels = packing.share_levels([0.01, 0.05, 0.2])
+    codes = packing.share_codes(pd.Series([np.nan, 0.0, 1e-9, 1.0]), levels)
     assert codes.tolist() == [NO_BYTE, 0, 1, len(levels) - 1]
-    assert len(levels) + map_data.MOST_EDGES < NO_BYTE
-    feet = map_data._feet(pd.Series([np.nan, 0.0, -0.5, 8449.9]))
+    every_step = packing.share_levels([0.001 * n for n in range(11, 19)], [28.25, 30.0, 31.0])
+    assert len(every_step) < NO_BYTE
+    feet = packing.feet(pd.Series([np.nan, 0.0, -0.5, 8449.9]))
     assert feet.tolist() == [NO_FEET, 0, -1, 8449]
 
 
 def test_size_of_a_large_study_stays_small():
-    large = sample_result(50, 5)
-    assert len(render_map(replace(large, scenarios=None)).encode()) < 560_000
-    assert len(render_map(large).encode()) < 620_000
+    large = replace(sample_result(500, 5), scenarios=None)
+    assert len(render_map(large).encode()) < 3_000_000
 
 
 def test_packed_trends_are_those_of_the_frame(result, parsed):
-    slopes = _array(parsed, "trend_slope_per_decade", "<i2").reshape(6, 3, 4)
-    breaks = _array(parsed, "trend_break", "u1").reshape(6, 3, 4)
+    slopes = _array(parsed, "trend_slope_per_decade").reshape(6, 3, 4)
+    breaks = _array(parsed, "trend_break").reshape(6, 3, 4)
     order = ["", "aircraft-0", "aircraft-1"]
     for row in result.trends.itertuples():
         cell = int(row.field[-1]), order.index(row.aircraft), SEASONS.index(row.season)
@@ -272,7 +351,7 @@ def test_packed_trends_are_those_of_the_frame(result, parsed):
 
 
 def test_central_share_is_sent_where_it_differs_by_a_whole_per_cent(result, parsed):
-    central = _array(parsed, "month_central", "u1").reshape(6, 2, 12)
+    central = _array(parsed, "month_central").reshape(6, 2, 12)
     levels = _study(parsed)["levels"]
     sent = 0
     for row in result.risk_monthly.itertuples():
@@ -297,7 +376,7 @@ def test_central_share_is_sent_where_it_differs_by_a_whole_per_cent(result, pars
 )
 def test_fields_on_both_sides_of_180_degrees_are_drawn_together(result, longitudes, drawn):
     fields = [replace(result.fields[0], longitude=longitude) for longitude in longitudes]
-    assert map_data.drawn_longitudes(fields) == drawn
+    assert background.drawn_longitudes(fields) == drawn
     if longitudes:
         middle = (min(drawn) + max(drawn)) / 2
         assert f", {round(middle, 4)}]" in map_module._map_script(fields)
@@ -324,4 +403,4 @@ def test_study_without_stations_or_shares_still_renders(result):
     assert study["fields"][0]["estimate"] == []
     assert study["fields"][0]["extremes"]["levels"] == []
     assert study["scenarios"] == []
-    assert study["arrays"]["trend_n_years"] == ""
+    assert study["arrays"]["trend_n_years"] == ["u1", ""]

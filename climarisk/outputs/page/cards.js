@@ -9,11 +9,24 @@ function isSteep(field) {
   return field.runways.some((runway) => runway.steep);
 }
 
+// The elevation that a field or its own station states does not fit their pressure or each other.
+const DOUBT_MARK = "elevation in doubt";
+const DOUBT_CHECKS = new Set(["station-elevation", "field-elevation"]);
+const DOUBTFUL = new Set(
+  STUDY.findings
+    .filter((finding) => finding.subject === "field" && DOUBT_CHECKS.has(finding.check))
+    .map((finding) => finding.id),
+);
+
+function isDoubtful(field) {
+  return DOUBTFUL.has(field.id);
+}
+
 function factList(facts) {
   return el(
     "dl",
     null,
-    facts.map(([term, text]) => el("div", null, el("dt", null, term), el("dd", null, text)))
+    facts.map(([term, text]) => el("div", null, el("dt", null, term), el("dd", null, text))),
   );
 }
 
@@ -50,9 +63,9 @@ function runwayCard(runway) {
       runway.undeclared ? el("span", { class: "tag" }, "undeclared distances") : null,
       runway.steep
         ? el("span", { class: "tag" }, "slope over " + STUDY.steepPct + " %: needs a site-specific procedure")
-        : null
+        : null,
     ),
-    factList(facts)
+    factList(facts),
   );
 }
 
@@ -84,9 +97,9 @@ function stationCard(use) {
       null,
       given(use.name === null ? use.station : use.name),
       " ",
-      el("small", null, given(use.station))
+      el("small", null, given(use.station)),
     ),
-    factList(facts)
+    factList(facts),
   );
 }
 

@@ -3,7 +3,9 @@
 const STUDY = JSON.parse(byId("study").textContent);
 const NO_BYTE = 255;
 const NO_FEET = -32768;
-const FEET_ARRAYS = /^(scenario_)?altitude_(p|hour)|^trend_(slope|ci)/;
+const NO_HOURS = 65535;
+const LOWEST_MARGIN = -100;
+const HIGHEST_MARGIN = LOWEST_MARGIN + NO_BYTE - 1;
 
 function decode(base64) {
   if (Uint8Array.fromBase64) return Uint8Array.fromBase64(base64);
@@ -13,17 +15,45 @@ function decode(base64) {
   return bytes;
 }
 
-const ARRAYS = {};
-for (const [name, text] of Object.entries(STUDY.arrays)) {
-  const bytes = decode(text);
-  ARRAYS[name] = FEET_ARRAYS.test(name) ? new Int16Array(bytes.buffer) : bytes;
+// Bytes with runs: a byte that comes twice is followed by a third that says how often more.
+function unrolled(marks) {
+  let length = 0;
+  for (let i = 0; i < marks.length; i += 1) {
+    length += 1;
+    if (marks[i] === marks[i + 1]) {
+      length += 1 + marks[i + 2];
+      i += 2;
+    }
+  }
+  const bytes = new Uint8Array(length);
+  let at = 0;
+  for (let i = 0; i < marks.length; i += 1) {
+    const run = marks[i] === marks[i + 1] ? 2 + marks[i + 2] : 1;
+    bytes.fill(marks[i], at, at + run);
+    at += run;
+    if (run > 1) i += 2;
+  }
+  return bytes;
 }
 
-// Rows travel without the names of their columns.
-for (const [name, columns] of Object.entries(STUDY.columns)) {
-  for (const field of STUDY.fields)
-    field[name] = field[name].map((row) => Object.fromEntries(columns.map((column, i) => [column, row[i]])));
+const KINDS = {
+  u1: (bytes) => bytes,
+  r1: unrolled,
+  u2: (bytes) => new Uint16Array(bytes.buffer),
+  i2: (bytes) => new Int16Array(bytes.buffer),
+};
+
+const ARRAYS = {};
+for (const [name, [kind, text]] of Object.entries(STUDY.arrays)) ARRAYS[name] = KINDS[kind](decode(text));
+
+// Rows travel without the names of their columns, and with numbers in place of their texts.
+function namedRow(columns, row) {
+  const value = (cell, isText) => (isText && cell !== null ? STUDY.texts[cell] : cell);
+  return Object.fromEntries(columns.map(([name, isText], i) => [name, value(row[i], isText)]));
 }
+
+for (const [name, columns] of Object.entries(STUDY.columns))
+  for (const field of STUDY.fields) field[name] = field[name].map((row) => namedRow(columns, row));
 
 // Feet, rounded down to whole ones; null where there is no data.
 function feetAt(name, position) {
@@ -37,6 +67,12 @@ function countAt(name, position) {
   return count === NO_BYTE || count === undefined ? null : count;
 }
 
+// A density altitude in feet, to the nearest hundred.
+function altitudeAt(name, position) {
+  const steps = countAt(name, position);
+  return steps === null ? null : (STUDY.altitudeBase + steps) * 100;
+}
+
 // A share 0-1, as the last level it reaches: rounded down, yet never across a band edge, a whole
 // per cent as shown, or zero. Null where there is no data.
 function shareAt(name, position) {
@@ -44,7 +80,25 @@ function shareAt(name, position) {
   return level === null ? null : STUDY.levels[level];
 }
 
+// Whole hours, rounded down.
+function hoursAt(name, position) {
+  const hours = ARRAYS[name][position];
+  return hours === NO_HOURS || hours === undefined ? null : hours;
+}
+
 // A period is {season: false, index: 0-11} or {season: true, index: place in STUDY.seasons}.
+// With an hour of -1 it means the whole window; seasons have no hours of their own.
+function timeOf(period, hour) {
+  if (period.season) return "season";
+  return hour < 0 ? "month" : "hour";
+}
+
+function airPlace(field, period, hour) {
+  if (period.season) return field * STUDY.seasons.length + period.index;
+  const month = field * 12 + period.index;
+  return hour < 0 ? month : month * 24 + hour;
+}
+
 function riskPlace(field, aircraft, period) {
   const length = period.season ? STUDY.seasons.length : 12;
   return (field * STUDY.aircraft.length + aircraft) * length + period.index;
@@ -77,31 +131,60 @@ function intervalNote(field, aircraft, period) {
   return word === null ? null : STUDY.notes[word];
 }
 
+function hourShare(field, aircraft, month, hour) {
+  return shareAt("hour_shortfall", riskPlace(field, aircraft, { season: false, index: month }) * 24 + hour);
+}
+
+// Hours of the window in a month or season of a year, by the calendar.
+function offeredHours(field, period) {
+  return hoursAt(riskArray("offered", period), airPlace(field, period, -1));
+}
+
+function usableHours(field, aircraft, period, hour) {
+  if (period.season || hour < 0)
+    return hoursAt(riskArray("usable", period), riskPlace(field, aircraft, period));
+  const share = hourShare(field, aircraft, period.index, hour);
+  if (share === null) return null;
+  const days = STUDY.daysOffered[period.index];
+  // A share above zero stands for one a little above its level.
+  return Math.max(0, Math.floor(days * (1 - share) - (share > 0 ? 1e-9 : 0)));
+}
+
+// Whether an hour lies inside the hours window on any day of the month.
+function inWindow(field, month, hour) {
+  const bit = month * 24 + hour;
+  return ((ARRAYS.window_bits[field * 36 + (bit >> 3)] >> (7 - (bit & 7))) & 1) === 1;
+}
+
 // A field of which nothing at all is known, whatever the aircraft, month or hour.
 function isEmpty(field) {
-  const none = (name, from, count, missing) =>
-    ARRAYS[name].subarray(from, from + count).every((value) => value === missing);
-  const cells = STUDY.aircraft.length * 12 * 24;
+  const none = (name, from, count) =>
+    ARRAYS[name].subarray(from, from + count).every((value) => value === NO_BYTE);
+  const cells = STUDY.aircraft.length * 12;
   return (
-    none("altitude_hour_p50", field * 12 * 24, 12 * 24, NO_FEET) &&
-    none("hour_shortfall", field * cells, cells, NO_BYTE) &&
-    MONTHS.every((_, index) =>
-      STUDY.aircraft.every((_, a) => riskShare("shortfall", field, a, { season: false, index }) === null)
-    )
+    none("altitude_hour_p50", field * 12 * 24, 12 * 24) &&
+    none("hour_shortfall", field * cells * 24, cells * 24) &&
+    none("month_shortfall", field * cells, cells)
   );
 }
 
 // The value of a measure for a field; hour -1 is the whole window.
 function measured(measure, field, aircraft, period, hour) {
-  const month = field * 12 + period.index;
-  if (measure === "shortfall") {
-    if (period.season || hour < 0) return riskShare("shortfall", field, aircraft, period);
-    return shareAt("hour_shortfall", riskPlace(field, aircraft, period) * 24 + hour);
+  const time = timeOf(period, hour);
+  const place = airPlace(field, period, hour);
+  switch (measure) {
+    case "shortfall":
+      if (time === "hour") return hourShare(field, aircraft, period.index, hour);
+      return riskShare("shortfall", field, aircraft, period);
+    case "usable":
+      return usableHours(field, aircraft, period, hour);
+    case "humidity":
+      return shareAt("humidity_" + time + "_p50", place);
+    case "near-saturation":
+      return shareAt("near_" + time + "_2_5k", place);
+    default:
+      return altitudeAt("altitude_" + time + (measure === "median" ? "_p50" : "_p90"), place);
   }
-  if (period.season) return null;
-  const percentile = measure === "median" ? "p50" : "p90";
-  if (hour < 0) return feetAt("altitude_" + percentile, month);
-  return feetAt("altitude_hour_" + percentile, month * 24 + hour);
 }
 
 function feetOf(metres) {

@@ -28,9 +28,18 @@ function given(text) {
   return el("bdi", { class: "given" }, String(text));
 }
 
+// The same, cut after a few lines where it is far too long for its place.
+function clamped(text) {
+  return el("bdi", { class: "given clamped", title: text }, String(text));
+}
+
 // The same for places that take a string only (option, aria-label, title): isolate characters.
 function givenString(text) {
   return "\u2068" + text + "\u2069";
+}
+
+function section(heading, ...content) {
+  return el("section", { class: "part" }, el("h3", null, heading), ...content);
 }
 
 function dataCell(content) {
@@ -49,8 +58,8 @@ function table(caption, heads, rows, kind) {
       el(
         "tr",
         null,
-        heads.map((head) => el("th", { scope: "col" }, head))
-      )
+        heads.map((head) => el("th", { scope: "col" }, head)),
+      ),
     ),
     el(
       "tbody",
@@ -59,9 +68,9 @@ function table(caption, heads, rows, kind) {
         el(
           "tr",
           null,
-          row.map((cell, i) => (i ? dataCell(cell) : el("th", { scope: "row" }, cell)))
-        )
-      )
-    )
+          row.map((cell, i) => (i ? dataCell(cell) : el("th", { scope: "row" }, cell))),
+        ),
+      ),
+    ),
   );
 }

@@ -4,7 +4,12 @@
 const opened = new Set();
 
 function collapsed(name, summary, content) {
-  const details = el("details", { open: opened.has(name) ? "" : null }, el("summary", null, summary), content);
+  const details = el(
+    "details",
+    { open: opened.has(name) ? "" : null },
+    el("summary", null, summary),
+    content,
+  );
   details.addEventListener("toggle", () => (details.open ? opened.add(name) : opened.delete(name)));
   return details;
 }
@@ -30,7 +35,9 @@ function estimateText(estimate) {
     ", " +
     errorText(estimate.transfer_error_ft) +
     " of density altitude (1 sd), " +
-    (hidden ? "error learned by hiding " + count(hidden) : "error from planning values, no station could be hidden")
+    (hidden
+      ? "error learned by hiding " + count(hidden)
+      : "error from planning values, no station could be hidden")
   );
 }
 
@@ -70,7 +77,8 @@ function trendRow(field, aircraft, season) {
 
 function trendCells(row, text) {
   const name = given(STUDY.trendSeasons[row.season]);
-  if (row.slope === null) return [name, NO_DATA, NO_DATA, String(row.years), "fewer than " + STUDY.trendYears + " years"];
+  if (row.slope === null)
+    return [name, NO_DATA, NO_DATA, String(row.years), "fewer than " + STUDY.trendYears + " years"];
   const verdict = row.significant ? "significant" : "not significant";
   return [
     name,
@@ -91,7 +99,7 @@ function trendTable(caption, rows, text) {
     caption,
     heads,
     rows.map((row) => trendCells(row, text)),
-    "plain-table trends"
+    "plain-table trends",
   );
 }
 
@@ -101,17 +109,15 @@ function trendTables(state) {
   const all = [...air, ...shares];
   if (all.every((row) => row.slope === null)) {
     const most = Math.max(0, ...all.map((row) => row.years));
-    return { why: "No trend: it needs " + STUDY.trendYears + " years of a season, at most " + most + " count." };
+    return {
+      why: "No trend: it needs " + STUDY.trendYears + " years of a season, at most " + most + " count.",
+    };
   }
   const profile = STUDY.aircraft[state.aircraft];
   return {
     tables: [
       trendTable("Density altitude, 90th percentile, ft per decade", air, tens),
-      trendTable(
-        ["Shortfall, percentage points per decade, ", given(profile.name)],
-        shares,
-        tenths
-      ),
+      trendTable(["Shortfall, percentage points per decade, ", given(profile.name)], shares, tenths),
     ],
   };
 }
@@ -121,7 +127,7 @@ function trendTables(state) {
 function extremesTable(field) {
   const { years, levels } = field.extremes;
   const found = STUDY.findings.find(
-    (finding) => finding.subject === "field" && finding.id === field.id && finding.check === "extremes"
+    (finding) => finding.subject === "field" && finding.id === field.id && finding.check === "extremes",
   );
   if (!levels.length)
     return { why: ["No return levels", found ? [": ", given(found.message)] : null, "."].flat() };
@@ -135,7 +141,7 @@ function extremesTable(field) {
       table(
         "Highest density altitude of a year, from " + years + " annual maxima",
         ["Years that exceed it", "Level", confidenceText()],
-        rows
+        rows,
       ),
     ],
   };
@@ -147,7 +153,7 @@ function evidencePart(state) {
   const whys = parts.filter((part) => part.why).map((part) => el("p", { class: "empty" }, part.why));
   return section(
     "Trends and extremes",
-    tables.length ? collapsed("evidence", "Trends by season and return levels", [...tables, ...whys]) : whys
+    tables.length ? collapsed("evidence", "Trends by season and return levels", [...tables, ...whys]) : whys,
   );
 }
 
@@ -170,10 +176,15 @@ function scenarioRow(state, name, number) {
   const field = number * STUDY.fields.length + state.field;
   const place = (field * STUDY.aircraft.length + state.aircraft) * 12 + state.period.index;
   const month = field * 12 + state.period.index;
-  const [share, low, high] = ["shortfall", "ci_low", "ci_high"].map((column) => shareAt("scenario_" + column, place));
+  const [share, low, high] = ["shortfall", "ci_low", "ci_high"].map((column) =>
+    shareAt("scenario_" + column, place),
+  );
   const air = (p) => {
     const moved = feetAt("scenario_altitude_" + p + "_change", month);
-    return [altitude(feetAt("scenario_altitude_" + p, month)), change(moved === null ? null : tens(moved) + " ft")];
+    return [
+      altitude(feetAt("scenario_altitude_" + p, month)),
+      change(moved === null ? null : tens(moved) + " ft"),
+    ];
   };
   return [
     given(name),
@@ -191,8 +202,8 @@ function studyRow(state) {
     "the study",
     percent(risk("shortfall")),
     risk("shortfall") === null ? NO_DATA : interval(risk("ci_low"), risk("ci_high")),
-    altitude(feetAt("altitude_p50", month)),
-    altitude(feetAt("altitude_p90", month)),
+    altitude(altitudeAt("altitude_month_p50", month)),
+    altitude(altitudeAt("altitude_month_p90", month)),
   ];
 }
 
@@ -211,8 +222,8 @@ function scenarioPart(state) {
         [periodText(state.period) + ", whole window (" + windowText() + "), ", given(profile.name)],
         ["Variant", "Shortfall", "Interval", "Density altitude, median", "90th percentile"],
         [studyRow(state), ...STUDY.scenarios.map((name, number) => scenarioRow(state, name, number))],
-        "plain-table scenarios"
-      )
-    )
+        "plain-table scenarios",
+      ),
+    ),
   );
 }

@@ -18,10 +18,59 @@ const MONTH_NAMES = [
 const MINUS = "\u2212";
 const NO_DATA = "no data";
 
+// What the page can show. `ofAircraft`: whether it depends on the aircraft profile.
 const MEASURES = {
-  shortfall: { name: "Shortfall share", sentence: "Share of hours that fall short" },
-  median: { name: "Density altitude, median", sentence: "Density altitude, median" },
-  p90: { name: "Density altitude, 90th percentile", sentence: "Density altitude exceeded in 1 hour of 10" },
+  shortfall: {
+    name: "Shortfall share",
+    short: "Shortfall",
+    sentence: () => "Share of hours that fall short",
+    unit: () => "per cent",
+    ofAircraft: true,
+    text: percent,
+    cell: percentNumber,
+  },
+  usable: {
+    name: "Usable hours",
+    short: "Usable hours",
+    sentence: (time) =>
+      time === "hour" ? "Days of the month on which the hour is usable" : "Usable hours of a " + time,
+    unit: (time) => (time === "hour" ? "days of the month" : "hours"),
+    ofAircraft: true,
+    text: (value, time) => grouped(value) + (time === "hour" ? " days" : " h"),
+    cell: grouped,
+  },
+  median: {
+    name: "Density altitude, median",
+    short: "DA, median",
+    sentence: () => "Density altitude, median",
+    unit: () => "hundreds of feet",
+    text: altitude,
+    cell: (value) => grouped(hundreds(value)),
+  },
+  p90: {
+    name: "Density altitude, 90th percentile",
+    short: "DA, P90",
+    sentence: () => "Density altitude exceeded in 1 hour of 10",
+    unit: () => "hundreds of feet",
+    text: altitude,
+    cell: (value) => grouped(hundreds(value)),
+  },
+  humidity: {
+    name: "Relative humidity, median",
+    short: "Humidity",
+    sentence: () => "Relative humidity, median",
+    unit: () => "per cent",
+    text: percent,
+    cell: percentNumber,
+  },
+  "near-saturation": {
+    name: "Near-saturation share",
+    short: "Near saturation",
+    sentence: () => "Share of hours at most 2.5 K above the dew point",
+    unit: () => "per cent",
+    text: percent,
+    cell: percentNumber,
+  },
 };
 
 function grouped(whole) {
@@ -48,19 +97,20 @@ function altitude(feet) {
   return feet === null ? NO_DATA : grouped(hundreds(feet) * 100) + " ft";
 }
 
-function measureText(measure, value) {
-  return measure === "shortfall" ? percent(value) : altitude(value);
+// `time` is "month" (the default), "season" or "hour".
+function measureText(measure, value, time) {
+  return value === null ? NO_DATA : MEASURES[measure].text(value, time || "month");
 }
 
-// Short form for a grid cell: per cent without the sign, or hundreds of feet.
+// Short form for a grid cell, in the unit that the caption names.
 function cellText(measure, value) {
-  if (value === null) return "\u2013";
-  return measure === "shortfall" ? percentNumber(value) : grouped(hundreds(value));
+  return value === null ? "\u2013" : MEASURES[measure].cell(value);
 }
 
 function interval(low, high) {
   if (low === null || high === null) return "none";
-  return percentNumber(low) + "-" + percentNumber(high) + " %";
+  const [first, last] = [percentNumber(low), percentNumber(high)];
+  return first === last ? percent(low) : first + "-" + last + " %";
 }
 
 // Feet per decade and the like: the nearest ten.
@@ -120,4 +170,21 @@ function signed(value, digits) {
   const text = Math.abs(value).toFixed(digits);
   if (Number(text) === 0) return text;
   return (value < 0 ? MINUS : "+") + text;
+}
+
+// Whole per cent of a margin, rounded down when it was packed.
+function marginText(margin) {
+  if (margin === null) return "\u2013";
+  return margin >= HIGHEST_MARGIN ? ">" + (HIGHEST_MARGIN - 1) : signedWhole(margin);
+}
+
+// Hours that follow one another, as "06:00-10:00"; the label of an hour is its full hour.
+function hourRanges(hours) {
+  const runs = [];
+  for (const hour of hours) {
+    const run = runs[runs.length - 1];
+    if (run && run[1] === hour - 1) run[1] = hour;
+    else runs.push([hour, hour]);
+  }
+  return runs.map(([first, last]) => hourText(first) + (last > first ? "-" + hourText(last) : "")).join(", ");
 }

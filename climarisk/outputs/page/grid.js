@@ -1,20 +1,31 @@
 // grid.js: the month by hour grid of a field. One tab stop; arrow keys move, Enter or Space chooses.
 
+// Lines along the first and the last hour of the window in each month.
+function windowEdges(field, month, hour) {
+  if (!inWindow(field, month, hour)) return " outside";
+  const before = hour > 0 && !inWindow(field, month, hour - 1);
+  const after = hour < 23 && !inWindow(field, month, hour + 1);
+  return (before ? " first-hour" : "") + (after ? " last-hour" : "");
+}
+
 function gridCell(state, month, hour) {
   const value = measured(state.measure, state.field, state.aircraft, { season: false, index: month }, hour);
+  const scale = scaleOf(state.measure, "hour");
+  const text = measureText(state.measure, value, "hour");
   const chosen = !state.period.season && state.period.index === month && state.hour === hour;
   return el(
     "td",
     {
-      class: className(classOf(state.measure, value)) + (chosen ? " chosen" : ""),
+      class:
+        className(classIn(scale, value)) + windowEdges(state.field, month, hour) + (chosen ? " chosen" : ""),
       tabindex: "-1",
       "data-month": month,
       "data-hour": hour,
-      "aria-label": value === null ? NO_DATA : measureText(state.measure, value),
+      "aria-label": text + (inWindow(state.field, month, hour) ? "" : ", outside the window"),
       "aria-selected": String(chosen),
-      title: MONTH_NAMES[month] + ", " + hourText(hour) + ": " + measureText(state.measure, value),
+      title: MONTH_NAMES[month] + ", " + hourText(hour) + ": " + text,
     },
-    cellText(state.measure, value)
+    cellText(state.measure, value),
   );
 }
 
@@ -33,13 +44,14 @@ function gridMove(grid, event) {
 
 function makeGrid(state, chooseCell) {
   const caption =
-    MEASURES[state.measure].sentence +
-    (state.measure === "shortfall" ? ", per cent" : ", hundreds of feet") +
-    "; rows: hour, local standard time";
+    MEASURES[state.measure].sentence("hour") +
+    ", " +
+    MEASURES[state.measure].unit("hour") +
+    "; rows: hour, local standard time. Thick lines: the hours window.";
   const hours = Array.from({ length: 24 }, (_, hour) => hour);
   const grid = el(
     "table",
-    { class: "grid", role: "grid" },
+    { class: "grid own-scale", role: "grid" },
     el("caption", null, caption),
     el(
       "thead",
@@ -52,10 +64,10 @@ function makeGrid(state, chooseCell) {
           el(
             "th",
             { scope: "col", class: !state.period.season && month === state.period.index ? "chosen" : null },
-            name
-          )
-        )
-      )
+            name,
+          ),
+        ),
+      ),
     ),
     el(
       "tbody",
@@ -67,17 +79,17 @@ function makeGrid(state, chooseCell) {
           el(
             "th",
             { scope: "row", class: hour === state.hour ? "chosen" : null },
-            String(hour).padStart(2, "0")
+            String(hour).padStart(2, "0"),
           ),
-          MONTHS.map((_, month) => gridCell(state, month, hour))
-        )
-      )
-    )
+          MONTHS.map((_, month) => gridCell(state, month, hour)),
+        ),
+      ),
+    ),
   );
   const first =
     grid.querySelector("td.chosen") ||
     grid.querySelector(
-      'td[data-month="' + (state.period.season ? 0 : state.period.index) + '"][data-hour="12"]'
+      'td[data-month="' + (state.period.season ? 0 : state.period.index) + '"][data-hour="12"]',
     );
   first.tabIndex = 0;
   const choose = (cell) => chooseCell(Number(cell.dataset.month), Number(cell.dataset.hour));

@@ -1,34 +1,11 @@
 // scale.js: classes of a measure, their colours and their shapes.
 //
-// Colours: the sequential scheme "YlOrBr" of ColorBrewer 2.0 by Cynthia Brewer and Mark Harrower
-// (Pennsylvania State University), which its authors mark as safe for colour-blind readers.
-// On a dark ground the scheme runs the other way, so that the highest class stands out most there too.
+// Colours and shapes come with the study (climarisk/outputs/colours.py). On a dark ground the scheme runs the other way, so that the highest class stands out most there too.
 // Each class also has its own shape, and the number stands beside it.
 
-const YLORBR = {
-  1: ["#fec44f"],
-  2: ["#fff7bc", "#fe9929"],
-  3: ["#fff7bc", "#fec44f", "#d95f0e"],
-  4: ["#ffffd4", "#fed98e", "#fe9929", "#cc4c02"],
-  5: ["#ffffd4", "#fed98e", "#fe9929", "#d95f0e", "#993404"],
-  6: ["#ffffd4", "#fee391", "#fec44f", "#fe9929", "#d95f0e", "#993404"],
-  7: ["#ffffd4", "#fee391", "#fec44f", "#fe9929", "#ec7014", "#cc4c02", "#8c2d04"],
-  8: ["#ffffe5", "#fff7bc", "#fee391", "#fec44f", "#fe9929", "#ec7014", "#cc4c02", "#8c2d04"],
-  9: ["#ffffe5", "#fff7bc", "#fee391", "#fec44f", "#fe9929", "#ec7014", "#cc4c02", "#993404", "#662506"],
-};
+const { classes: YLORBR, shapes: SHAPES, noData: NO_DATA_SHAPE } = STUDY.palette;
 const MOST_CLASSES = 9;
 const DARK_GROUND = "#1a2024";
-
-// Outlines around (0, 0) in a square of 26; the last one serves every further class.
-const SHAPES = [
-  "M0,-10.5A10.5,10.5 0 1 1 0,10.5A10.5,10.5 0 1 1 0,-10.5Z",
-  "M-9.5,-9.5H9.5V9.5H-9.5Z",
-  "M0,-13L13,0L0,13L-13,0Z",
-  "M0,-12L13,10.5H-13Z",
-  "M0,12L13,-10.5H-13Z",
-  "M-6.5,-11.3H6.5L13,0L6.5,11.3H-6.5L-13,0Z",
-];
-const NO_DATA_SHAPE = "M-11,-11L11,11M-11,11L11,-11";
 
 function luminance(colour) {
   const [r, g, b] = [1, 3, 5].map((at) => {
@@ -51,7 +28,7 @@ function mix(one, other) {
       .map((at) =>
         Math.round((part(one, at) + part(other, at)) / 2)
           .toString(16)
-          .padStart(2, "0")
+          .padStart(2, "0"),
       )
       .join("")
   );
@@ -63,26 +40,26 @@ function colours(count, dark) {
   const steps = YLORBR[MOST_CLASSES].slice(count > MOST_CLASSES - 2 ? 0 : 2).reverse();
   const chosen = Array.from(
     { length: count },
-    (_, i) => steps[count === 1 ? 4 : Math.round((i * (steps.length - 1)) / (count - 1))]
+    (_, i) => steps[count === 1 ? 4 : Math.round((i * (steps.length - 1)) / (count - 1))],
   );
   // Half way to the ground: a whole grid of the lowest class must not glow.
   if (count > 1) chosen[0] = mix(chosen[0], DARK_GROUND);
   return chosen;
 }
 
-function colourRules(count, dark) {
+function colourRules(scope, count, dark) {
   const rules = colours(count, dark).map((c, i) => "--fill-" + i + ":" + c + ";--ink-" + i + ":" + inkOn(c));
-  return ":root{" + rules.join(";") + "}";
+  return scope + "{" + rules.join(";") + "}";
 }
 
 const scaleStyle = document.head.appendChild(el("style", null));
 
-function applyColours(count) {
+// The colours of the map and the list, and those of the grid of a field, whose scale may have
+// another number of classes.
+function applyColours(count, gridCount) {
+  const rules = (dark) => colourRules(":root", count, dark) + colourRules(".own-scale", gridCount, dark);
   scaleStyle.textContent =
-    colourRules(count, false) +
-    "@media screen and (prefers-color-scheme:dark){" +
-    colourRules(count, true) +
-    "}";
+    rules(false) + "@media screen and (prefers-color-scheme:dark){" + rules(true) + "}";
 }
 
 function edgeText(share) {
@@ -99,34 +76,72 @@ function classLabels(edges, text, unit) {
   ];
 }
 
-// Density altitude: round steps over all months and hours, so that a colour keeps its meaning.
-function altitudeScale() {
-  let [low, high] = [Infinity, -Infinity];
-  for (const name of ["altitude_hour_p50", "altitude_hour_p90", "altitude_p50", "altitude_p90"]) {
-    for (const value of ARRAYS[name]) {
-      if (value === NO_FEET) continue;
-      low = Math.min(low, value);
-      high = Math.max(high, value);
-    }
-  }
-  if (low > high) return { edges: [], labels: ["any value"] };
-  const step = [500, 1000, 2000, 3000, 4000, 5000].find((size) => (high - low) / size <= 5) || 10000;
+// Round edges over the range of all values, so that a colour keeps its meaning from view to view.
+function steppedEdges(values, steps) {
+  const [low, high] = [Math.min(...values), Math.max(...values)];
+  if (!values.length) return [];
+  const step = steps.find((size) => (high - low) / size <= 5) || steps[steps.length - 1];
   const edges = [];
   for (let edge = (Math.floor(low / step) + 1) * step; edge <= high; edge += step) edges.push(edge);
+  return edges.slice(-(MOST_CLASSES - 1));
+}
+
+function altitudeScale() {
+  const seen = new Set();
+  for (const name of ["hour_p50", "hour_p90", "month_p50", "month_p90", "season_p50", "season_p90"])
+    for (const steps of ARRAYS["altitude_" + name]) if (steps !== NO_BYTE) seen.add(steps);
+  const feet = [...seen].map((steps) => (STUDY.altitudeBase + steps) * 100);
+  const edges = steppedEdges(feet, [500, 1000, 2000, 3000, 4000, 5000, 10000]);
   return { edges, labels: classLabels(edges, grouped, " ft") };
+}
+
+// Of usable hours few are bad: the classes run the other way, so that the worst stands out.
+function usableScale(values, unit) {
+  const edges = steppedEdges([0, ...values], [2, 5, 10, 25, 50, 100, 250, 500, 1000, 2500]);
+  return { edges, labels: classLabels(edges, grouped, unit).reverse(), fewIsWorse: true };
+}
+
+function shareScale(edges) {
+  return { edges, labels: classLabels(edges, edgeText, " %") };
+}
+
+function knownHours(name) {
+  return [...new Set(ARRAYS[name])].filter((hours) => hours !== NO_HOURS);
 }
 
 const ALTITUDE_SCALE = altitudeScale();
 const SCALES = {
-  shortfall: { edges: STUDY.bands, labels: classLabels(STUDY.bands, edgeText, " %") },
+  shortfall: shareScale(STUDY.bands),
+  "usable month": usableScale(knownHours("month_offered"), " h"),
+  "usable season": usableScale(knownHours("season_offered"), " h"),
+  "usable hour": usableScale(STUDY.daysOffered, " days"),
   median: ALTITUDE_SCALE,
   p90: ALTITUDE_SCALE,
+  humidity: shareScale([0.4, 0.6, 0.8, 0.9]),
+  "near-saturation": shareScale([0.01, 0.05, 0.1, 0.25, 0.5]),
 };
 
-// The class of a value: its place among the edges, or -1 for no data.
-function classOf(measure, value) {
+function scaleOf(measure, time) {
+  return SCALES[measure === "usable" ? "usable " + time : measure];
+}
+
+// The scale of the map and the list; each drawing sets it.
+let shownScale = SCALES.shortfall;
+
+function showScale(measure, time, gridTime) {
+  shownScale = scaleOf(measure, time);
+  applyColours(shownScale.labels.length, scaleOf(measure, gridTime).labels.length);
+}
+
+// The class of a value: its place among the edges, the worst highest, or -1 for no data.
+function classIn(scale, value) {
   if (value === null) return -1;
-  return SCALES[measure].edges.filter((edge) => value >= edge).length;
+  const place = scale.edges.filter((edge) => value >= edge).length;
+  return scale.fewIsWorse ? scale.edges.length - place : place;
+}
+
+function classOf(measure, value) {
+  return classIn(shownScale, value);
 }
 
 function className(number) {
@@ -145,7 +160,7 @@ function symbol(number, steep) {
     "svg",
     { viewBox: "-15 -15 30 30", class: "symbol " + className(number), "aria-hidden": "true" },
     svg("path", { d: shapePath(number), class: "shape" }),
-    steep ? wedge() : null
+    steep ? wedge() : null,
   );
 }
 

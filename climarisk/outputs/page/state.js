@@ -1,0 +1,110 @@
+// state.js: what the page shows, and how the address fragment keeps it.
+
+const state = {
+  aircraft: 0,
+  period: { season: false, index: 0 },
+  hour: -1,
+  measure: "shortfall",
+  field: -1,
+  compare: [],
+  comparing: false,
+  sort: "value",
+  direction: -1,
+};
+
+// The page opens on the month with the most shortfall of the first aircraft.
+function worstMonth() {
+  let [worst, most] = [0, -1];
+  for (let index = 0; index < 12; index += 1) {
+    const sum = STUDY.fields.reduce(
+      (total, _, field) => total + (riskShare("shortfall", field, 0, { season: false, index }) || 0),
+      0,
+    );
+    if (sum > most) [worst, most] = [index, sum];
+  }
+  return { season: false, index: worst };
+}
+
+function shownTime() {
+  return timeOf(state.period, state.hour);
+}
+
+// The scale of a grid is that of its hours, whatever the map shows.
+function gridTime() {
+  return "hour";
+}
+
+function whenText(view) {
+  const hour =
+    view.period.season || view.hour < 0
+      ? "whole window (" + windowText() + ")"
+      : hourText(view.hour) + " local standard time";
+  return periodText(view.period) + ", " + hour;
+}
+
+function viewText(view) {
+  return MEASURES[view.measure].sentence(timeOf(view.period, view.hour)) + ", " + whenText(view);
+}
+
+function indexOfId(list, id) {
+  return list.findIndex((item) => item.id === id);
+}
+
+function wholeNumber(text, low, high) {
+  const number = text === null || text.trim() === "" ? NaN : Number(text);
+  return Number.isInteger(number) && number >= low && number <= high ? number : null;
+}
+
+function readPeriod(words) {
+  const season = STUDY.seasons.indexOf(words.get("season"));
+  if (season >= 0) return { season: true, index: season };
+  const month = wholeNumber(words.get("month"), 1, 12);
+  return month === null ? worstMonth() : { season: false, index: month - 1 };
+}
+
+// The direction in which the worst value leads the list.
+function worstFirst(measure) {
+  return measure === "usable" ? 1 : -1;
+}
+
+function readSort(words) {
+  const [column, way] = (words.get("sort") || "").split(".");
+  const known = LIST_COLUMNS.find((item) => item.key === column && item.first);
+  state.sort = known ? column : "value";
+  state.direction = known ? (way === "up" ? 1 : -1) : worstFirst(state.measure);
+}
+
+function readFragment() {
+  const words = new URLSearchParams(location.hash.slice(1));
+  state.aircraft = Math.max(0, indexOfId(STUDY.aircraft, words.get("aircraft")));
+  state.field = indexOfId(STUDY.fields, words.get("field"));
+  state.period = readPeriod(words);
+  const hour = wholeNumber(words.get("hour"), 0, 23);
+  state.hour = hour === null ? -1 : hour;
+  state.measure = Object.hasOwn(MEASURES, words.get("measure")) ? words.get("measure") : "shortfall";
+  const compared = (words.get("compare") || "").split(" ").map((id) => indexOfId(STUDY.fields, id));
+  const known = [...new Set(compared)].filter((index) => index >= 0).slice(0, MOST_COMPARED);
+  state.comparing = state.field < 0 && known.length > 1;
+  if (state.comparing) state.compare = known;
+  readSort(words);
+  settle();
+}
+
+// Seasons have figures over the whole window only.
+function settle() {
+  if (state.period.season) state.hour = -1;
+}
+
+function writeFragment() {
+  const words = new URLSearchParams();
+  words.set("aircraft", STUDY.aircraft[state.aircraft].id);
+  if (state.period.season) words.set("season", STUDY.seasons[state.period.index]);
+  else words.set("month", state.period.index + 1);
+  if (state.hour >= 0) words.set("hour", state.hour);
+  words.set("measure", state.measure);
+  if (state.field >= 0) words.set("field", STUDY.fields[state.field].id);
+  if (state.comparing) words.set("compare", state.compare.map((index) => STUDY.fields[index].id).join(" "));
+  if (state.sort !== "value" || state.direction !== worstFirst(state.measure))
+    words.set("sort", state.sort + "." + (state.direction > 0 ? "up" : "down"));
+  history.replaceState(null, "", "#" + words);
+}

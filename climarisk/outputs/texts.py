@@ -1,0 +1,126 @@
+"""Words and numbers as people read them: the same in the map, the workbook and the report."""
+
+from __future__ import annotations
+
+import math
+from collections.abc import Sequence
+from fractions import Fraction
+
+#: What every output says about its own limits; the first one stands at the top.
+CAUTIONS = (
+    "Planning and comparison aid based on past weather. It is not a take-off or landing "
+    "calculation and is not approved by any authority. The approved flight manual of the "
+    "individual aeroplane, current weather and the judgement of the pilot in command always "
+    "govern; local rules and licensed practice apply.",
+    "Shares and percentiles describe the record used, not a forecast; a rare hot day can "
+    "exceed every value shown. An hour without data is left out: it is never counted as "
+    "an hour without risk.",
+    "Distances come from the figures supplied with the study. Profiles without a table are "
+    "scaled by generic rules and marked; nothing is calculated beyond the last row of a table.",
+    "Weather at a field without a station of its own is estimated from stations nearby; the "
+    "error may be larger in closed valleys and at night.",
+    "Runway data may be incomplete or out of date; verify them in the current aeronautical "
+    "publication and with the operator. Strips steeper than 2 % need a site-specific "
+    "procedure and instruction.",
+    "Commercial, instructional or insurance decisions should be reviewed by a suitably "
+    "qualified person.",
+)
+
+#: How the figures come about, in the order of the work.
+METHOD = (
+    "Every hour of the record gives one value of the air at the field and, for each aircraft,"
+    " one margin per check: distance or climb available against required times the operator’s"
+    " factors, in still air, in the most favourable direction that may be used. An hour falls"
+    " short when a margin is negative, a stated limit is passed, or the air is hotter or "
+    "higher than the table (“outside table”).",
+    "Density altitude is the altitude of the International Standard Atmosphere with the same "
+    "air density, moisture included. It is computed hour by hour and only then ordered into "
+    "percentiles (Hyndman and Fan type 8), by month and hour of local standard time; clock "
+    "changes are not applied. An hour is the nearest full hour.",
+    "A year counts for a cell when at least 80 % of its days have a value there; the number "
+    "of years is shown. A cell below the rule is “no data”: it does not mean no risk. "
+    "Intervals come from resampling whole years; from too few years there is none.",
+    "Air estimated from stations nearby carries an error, learned by hiding stations that are"
+    " near the fields and estimating them from the others. Percentiles, shares and intervals "
+    "include it; the central share does not.",
+    "Trends by season are Theil-Sen slopes with the Mann-Kendall test, corrected for "
+    "autocorrelation; a step beside the trend may be a station move. Return levels are a "
+    "generalised extreme-value distribution fitted to annual maxima by L-moments, to twice "
+    "the length of the record at most.",
+    "Shown here: density altitude to the nearest 100 ft, shares to the whole per cent, “< 1 "
+    "%” for anything above zero and below one. The CSV files hold the unrounded values.",
+)
+
+MONTHS = ("Jan", "Feb", "Mar", "Apr", "May", "Jun", "Jul", "Aug", "Sep", "Oct", "Nov", "Dec")
+MONTH_NAMES = (
+    "January",
+    "February",
+    "March",
+    "April",
+    "May",
+    "June",
+    "July",
+    "August",
+    "September",
+    "October",
+    "November",
+    "December",
+)
+NO_DATA = "no data"
+_MINUS = "\N{MINUS SIGN}"
+
+
+def share_text(share: float) -> str:
+    """A share 0-1 in whole per cent; ``< 1 %`` for anything above zero and below one."""
+    if math.isnan(share):
+        return NO_DATA
+    if 0.0 < share < 0.01:
+        return "< 1 %"
+    # 0.045 is a little below 9/200 as a float; the share it stands for is not.
+    return f"{math.floor(Fraction(round(share * 10**8), 10**6) + Fraction(1, 2))} %"
+
+
+def interval_text(low: float, high: float) -> str:
+    """An interval of a share, as ``4-12 %`` or ``0 %``; ``none`` where there is none."""
+    if math.isnan(low) or math.isnan(high):
+        return "none"
+    first, last = (share_text(share).replace("< ", "<") for share in (low, high))
+    if first == last:
+        return share_text(low)
+    return f"{first.removesuffix(' %')}-{last}"
+
+
+def altitude_text(feet: float) -> str:
+    """A density altitude to the nearest 100 ft, with its unit."""
+    if math.isnan(feet):
+        return NO_DATA
+    return f"{grouped(math.floor(Fraction(feet) / 100 + Fraction(1, 2)) * 100)} ft"
+
+
+def grouped(whole: int) -> str:
+    """A whole number with commas between the thousands and a proper minus sign."""
+    return f"{whole:,}".replace("-", _MINUS)
+
+
+def hour_text(hour: int) -> str:
+    """An hour of the day, as ``07:00``."""
+    return f"{hour:02d}:00"
+
+
+def window_text(window: str | Sequence[int]) -> str:
+    """The hours window of a study, as in its settings."""
+    if isinstance(window, str):
+        return "all hours" if window == "all" else window
+    return " to ".join(hour_text(int(hour)) for hour in window)
+
+
+def band_labels(edges: Sequence[float]) -> list[str]:
+    """Names of the shortfall bands by their numbers: ``< 1 %``, ``1-5 %``, ``20 % or more``."""
+    words = [f"{round(edge * 100, 2):g}" for edge in edges]
+    between = [f"{low}-{high} %" for low, high in zip(words, words[1:], strict=False)]
+    return [f"< {words[0]} %", *between, f"{words[-1]} % or more"]
+
+
+def band_of(share: float, edges: Sequence[float]) -> int:
+    """The number of the band a share lies in, 0 being the lowest; -1 without a share."""
+    return -1 if math.isnan(share) else sum(share >= edge for edge in edges)

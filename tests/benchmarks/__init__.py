@@ -1,0 +1,1 @@
+"""Scripts that measure; none of them is a test."""
