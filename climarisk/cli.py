@@ -33,6 +33,8 @@ app = typer.Typer(
     rich_markup_mode=None,
     pretty_exceptions_enable=False,
 )
+#: Findings that a run prints; study.json and `climarisk check` have them all.
+_MOST_FINDINGS = 20
 _notes = Console(stderr=True, soft_wrap=True, highlight=False)
 _results = Console(soft_wrap=True, highlight=False)
 
@@ -180,6 +182,7 @@ class _Asked:
 def _run(
     study: Path, out: Path | None, store: Path | None, offline: bool, asked: _Asked = _Asked()
 ) -> None:
+    from climarisk.outputs.summary import summary_lines
     from climarisk.outputs.tables import write_outputs
     from climarisk.pipeline import evaluate
     from climarisk.scenarios import compare, scenarios
@@ -202,9 +205,8 @@ def _run(
     if kept is not None and kept.damaged:
         _notes.print(f"note: {len(kept.damaged)} damaged entries of the store were rebuilt.")
     _print_findings(result.findings)
-    _results.print(_escaped(_coverage_line(result)))
-    _results.print(_escaped(f"Map: {folder / 'map.html'}"))
-    _results.print(_escaped(f"Tables: {len(files) - 1} files in {folder}"))
+    for line in summary_lines(result, folder, files):
+        _results.print(_escaped(line))
 
 
 def _demo_study() -> Path:
@@ -279,10 +281,13 @@ def _escaped(text: str) -> str:
 
 
 def _print_findings(findings: list[Finding] | tuple[Finding, ...]) -> None:
-    for finding in findings:
-        if finding.severity != "note":
-            _notes.print(_escaped(str(finding)))
-    notes = sum(f.severity == "note" for f in findings)
+    """The findings that are more than notes, on stderr; of very many the first."""
+    serious = [finding for finding in findings if finding.severity != "note"]
+    for finding in serious[:_MOST_FINDINGS]:
+        _notes.print(_escaped(str(finding)))
+    if len(serious) > _MOST_FINDINGS:
+        _notes.print(f"{len(serious) - _MOST_FINDINGS} cautions and rejections more in study.json.")
+    notes = len(findings) - len(serious)
     if notes:
         _notes.print(f"{notes} notes more in study.json.")
 

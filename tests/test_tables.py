@@ -27,20 +27,29 @@ STATISTICS = (
 )
 RISK = (
     "n_hours,n_years,shortfall,ci_low,ci_high,outside_table,limiting,margin_p10,margin_p50,"
-    "days_affected,shortfall_central,transfer_error_ft,interval_note,coverage"
+    "days_affected,shortfall_central,transfer_error_ft,interval_note,coverage,"
+    "hours_offered,usable_hours"
 )
+NEAR_SATURATION = "n_hours,n_years,coverage,share_1k,share_2_5k"
 COLUMNS = {
     "distributions_monthly.csv": f"field,variable,unit,month,{STATISTICS}",
     "distributions_hourly.csv": f"field,variable,unit,month,hour,{STATISTICS}",
+    "distributions_seasonal.csv": f"field,variable,unit,season,{STATISTICS}",
     "risk_monthly.csv": f"field,aircraft,month,{RISK}",
-    "risk_hourly.csv": f"field,aircraft,month,hour,{RISK}",
+    "risk_hourly.csv": f"field,aircraft,month,hour,{RISK},in_window",
     "risk_seasonal.csv": f"field,aircraft,season,{RISK}",
     "risk_yearly.csv": "field,aircraft,month,year,n_hours,shortfall_hours",
+    "margins_monthly.csv": "field,aircraft,month,check,n_hours,shortfall,margin_p10,margin_p50",
+    "near_saturation_monthly.csv": f"field,month,{NEAR_SATURATION}",
+    "near_saturation_hourly.csv": f"field,month,hour,{NEAR_SATURATION}",
+    "near_saturation_seasonal.csv": f"field,season,{NEAR_SATURATION}",
     "trends.csv": "field,aircraft,season,statistic,unit,n_years,first_year,last_year,"
     "slope_per_decade,ci_low,ci_high,p_value,significant,break_year,break_p_value",
     "extremes.csv": "field,n_years,return_period_years,density_altitude_ft,ci_low,ci_high",
 }
-FILES = {*COLUMNS, "map.html", "fields.gpkg", "fields.geojson", "study.json"}
+CONTRACT = {*COLUMNS, "map.html", "fields.gpkg", "fields.geojson", "study.json"}
+#: What a run without scenarios writes: the contract, which is named here, and all that came since.
+FILES = set(tables.OUTPUT_FILES) - {"scenarios.csv"}
 UNITS = {
     "density_altitude": "ft",
     "pressure_altitude": "ft",
@@ -50,6 +59,7 @@ UNITS = {
     "vapour_pressure": "hPa",
 }
 SHARES = ("shortfall", "ci_low", "ci_high", "outside_table", "days_affected")
+SEASONS = ("flying summer", "deep winter")
 # The spoilt cells of the study: March at 05 UTC is 06 h local standard time (Europe/Rome).
 EMPTY_MONTH, EMPTY_HOUR = 3, 6
 
@@ -99,7 +109,7 @@ def rows(written: Path, name: str) -> list[dict[str, str]]:
 
 
 def test_every_file_of_the_contract_is_there_and_no_other(written):
-    assert set(contents(written)) == FILES
+    assert set(contents(written)) == FILES >= CONTRACT
     assert [p.name for p in written.parent.iterdir()] == ["out"], "no staging folder is left"
 
 
@@ -120,6 +130,60 @@ def test_distributions_have_a_row_for_every_cell_in_the_order_of_the_study(writt
     hourly = rows(written, "distributions_hourly.csv")
     assert len(hourly) == 3 * 6 * 12 * 24
     assert {int(r["hour"]) for r in hourly} == set(range(24)), "all hours, no window"
+    seasonal = rows(written, "distributions_seasonal.csv")
+    assert [(r["field"], r["variable"], r["season"]) for r in seasonal] == [
+        (f, v, s) for f in ("LOW", "MID", "TOP") for v in UNITS for s in SEASONS
+    ]
+    assert all(r["unit"] == UNITS[r["variable"]] for r in seasonal)
+
+
+def test_near_saturation_has_a_row_for_every_cell_in_the_order_of_the_study(written):
+    fields, months = ("LOW", "MID", "TOP"), range(1, 13)
+    monthly, hourly, seasonal = (
+        rows(written, f"near_saturation_{kind}.csv") for kind in ("monthly", "hourly", "seasonal")
+    )
+    assert [(r["field"], int(r["month"])) for r in monthly] == [
+        (f, m) for f in fields for m in months
+    ]
+    assert [(r["field"], int(r["month"]), int(r["hour"])) for r in hourly] == [
+        (f, m, h) for f in fields for m in months for h in range(24)
+    ]
+    assert [(r["field"], r["season"]) for r in seasonal] == [
+        (f, s) for f in fields for s in SEASONS
+    ]
+    for row in monthly + hourly + seasonal:
+        if row["share_1k"]:
+            assert 0.0 <= float(row["share_1k"]) <= float(row["share_2_5k"]) <= 1.0
+        assert (row["share_1k"] == "") == (row["share_2_5k"] == "") == (row["n_hours"] == "0")
+
+
+def test_margins_have_a_row_for_every_check_of_an_aircraft(written):
+    always = ("take-off ground roll", "take-off to 50 ft", "landing from 50 ft")
+    checks = {"tourer": always, "trainer": (*always, "rate of climb", "temperature limit")}
+    margins = rows(written, "margins_monthly.csv")
+    assert [(r["field"], r["aircraft"], int(r["month"]), r["check"]) for r in margins] == [
+        (f, a, m, c)
+        for f in ("LOW", "MID", "TOP")
+        for a in ("tourer", "trainer")
+        for m in range(1, 13)
+        for c in checks[a]
+    ]
+    for row in margins:
+        assert 0.0 <= float(row["shortfall"]) <= 1.0
+        figures = (row["margin_p10"], row["margin_p50"])
+        if row["check"] == "temperature limit":
+            assert figures == ("", ""), "a limit has no margin"
+        else:
+            assert -1.0 <= float(figures[0]) <= float(figures[1])
+
+
+def test_usable_hours_are_written_beside_the_hours_offered(written):
+    for row in rows(written, "risk_monthly.csv"):
+        # 15 full hours a day from 6 to 20, both included; no leap year in 2021-2022.
+        days = (31, 28, 31, 30, 31, 30, 31, 31, 30, 31, 30, 31)[int(row["month"]) - 1]
+        assert float(row["hours_offered"]) == 15 * days
+        usable = 15 * days * (1 - float(row["shortfall"]))
+        assert float(row["usable_hours"]) == pytest.approx(usable, abs=5.1e-5)
 
 
 def test_risk_has_a_row_for_every_cell(written):
@@ -127,10 +191,7 @@ def test_risk_has_a_row_for_every_cell(written):
     assert [(r["field"], r["aircraft"]) for r in rows(written, "risk_seasonal.csv")] == [
         c for c in cells for _ in range(2)
     ]
-    assert {r["season"] for r in rows(written, "risk_seasonal.csv")} == {
-        "flying summer",
-        "deep winter",
-    }
+    assert {r["season"] for r in rows(written, "risk_seasonal.csv")} == set(SEASONS)
     assert len(rows(written, "risk_monthly.csv")) == 6 * 12
     assert len(rows(written, "risk_hourly.csv")) == 6 * 12 * 24
 
@@ -142,7 +203,10 @@ def test_shares_are_shares_and_percentiles_rise(written):
                 if row[column]:
                     assert 0.0 <= float(row[column]) <= 1.0, (name, row)
             assert (row["limiting"] == "") == (row["shortfall"] in ("", "0.0")), row
-    for row in rows(written, "distributions_monthly.csv"):
+    for row in (
+        *rows(written, "distributions_monthly.csv"),
+        *rows(written, "distributions_seasonal.csv"),
+    ):
         values = [float(row[c]) for c in STATISTICS.split(",")[4:13] if row[c]]
         assert values == sorted(values)
         assert 0.0 <= float(row["coverage"]) <= 1.0
@@ -155,7 +219,8 @@ def test_a_cell_that_fails_the_completeness_rule_is_empty_not_zero(written):
     # DESIGN 6: no year has 80 % of March's days at this hour, so the cell has no figure.
     for name, columns in (
         ("distributions_hourly.csv", STATISTICS.split(",")[3:]),
-        ("risk_hourly.csv", RISK.split(",")[2:-1]),
+        ("risk_hourly.csv", [*RISK.split(",")[2:-3], "usable_hours"]),
+        ("near_saturation_hourly.csv", ["share_1k", "share_2_5k"]),
     ):
         cells = [
             r
@@ -167,6 +232,10 @@ def test_a_cell_that_fails_the_completeness_rule_is_empty_not_zero(written):
         for row in cells:
             assert {row[c] for c in columns} == {""}, row
             assert row["n_years"] == "0"
+            assert row["coverage"] == "0.0"
+            # The calendar offers the hours whether or not they were recorded.
+            assert row.get("hours_offered") in (None, "31.0")
+            assert row.get("in_window") in (None, "1.0")
 
 
 def test_a_year_that_fails_the_rule_does_not_count(written):
@@ -342,7 +411,7 @@ def assert_untouched(folder: Path) -> None:
     assert [p.name for p in folder.parent.iterdir()] == ["out"], "no staging folder is left"
 
 
-@pytest.mark.parametrize("broken", ["_write_layers", "render_map", "csv_text"])
+@pytest.mark.parametrize("broken", ["write_layers", "render_map", "csv_text"])
 def test_a_failure_while_writing_leaves_the_old_results(result, old_results, monkeypatch, broken):
     monkeypatch.setattr(tables, broken, refuse)
     with pytest.raises(OutputError, match="cannot be written .No space left on device"):

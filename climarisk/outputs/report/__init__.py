@@ -1,0 +1,1 @@
+"""The print-ready report of a study: one HTML document without a script."""

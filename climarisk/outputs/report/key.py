@@ -1,0 +1,44 @@
+"""Legends and chart cards of the report."""
+
+from __future__ import annotations
+
+from climarisk.fields import STEEP_SLOPE_PCT
+from climarisk.outputs.colours import NO_DATA_SHAPE, SHAPES
+from climarisk.outputs.report.charts import band_sample
+from climarisk.outputs.report.tables import STEEP_MARK, Sheet, few_years, is_steep
+from climarisk.outputs.report.words import Html, el, given
+from climarisk.outputs.texts import NO_DATA, band_labels
+from climarisk.rules import YEARS
+
+
+def band_key(sheet: Sheet, samples: bool = False) -> Html:
+    """What the colours mean; with the bars of the strips and the shapes of the sketch too."""
+    items = []
+    for band, label in enumerate(band_labels(sheet.edges)):
+        shape = SHAPES[min(band, len(SHAPES) - 1)]
+        mark = (
+            band_sample(band, len(sheet.edges), shape)
+            if samples
+            else el("span", class_=f"swatch b{band}")
+        )
+        items.append(el("li", mark, " ", label))
+    mark = (
+        band_sample(-1, len(sheet.edges), NO_DATA_SHAPE)
+        if samples
+        else el("span", class_="swatch none")
+    )
+    items.append(el("li", mark, f" {NO_DATA}: not the same as no risk"))
+    if few_years(sheet.figures):
+        items.append(el("li", f"* interval from fewer than {YEARS.settled_interval} years"))
+    if any(is_steep(field) for field in sheet.result.fields):
+        steep = el("span", STEEP_MARK, class_="mark")
+        text = f" slope over {STEEP_SLOPE_PCT:g} %: needs a site-specific procedure"
+        items.append(el("li", steep, text))
+    return el("ul", items, class_="key")
+
+
+def chart_card(sheet: Sheet, field: int, *pictures: Html) -> Html:
+    """A chart with the number and the name of its field over it."""
+    n = el("span", str(sheet.figures.numbers[field]), class_="no")
+    name = el("span", given(sheet.result.fields[field].name), class_="name")
+    return el("figure", el("figcaption", n, " ", name), pictures, class_="card")

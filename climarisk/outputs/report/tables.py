@@ -1,0 +1,409 @@
+"""Tables of the report by month and season; they run on over pages with their headings."""
+
+from __future__ import annotations
+
+import math
+from collections.abc import Callable, Sequence
+from dataclasses import dataclass
+
+import numpy as np
+
+from climarisk.fields import STEEP_SLOPE_PCT, Field
+from climarisk.outputs.colours import MOST_EDGES
+from climarisk.outputs.report.data import N_MONTHS, PERCENTILES, Figures, worst
+from climarisk.outputs.report.words import (
+    Html,
+    count_text,
+    el,
+    elevation_text,
+    error_text,
+    given,
+    hours_text,
+    number,
+    own_share_text,
+    scroll,
+)
+from climarisk.outputs.texts import (
+    MONTH_NAMES,
+    MONTHS,
+    NO_DATA,
+    altitude_text,
+    band_of,
+    interval_text,
+    share_text,
+)
+from climarisk.results import StudyResult
+from climarisk.rules import YEARS
+
+#: Seasons that find room beside the months, and in a table of their own.
+_BESIDE_MONTHS, _ALONE = 5, 12
+#: A table of so many fields stays on one page.
+_WHOLE = 16
+#: A share of hours outside the table is told beside the limiting check from here on.
+_TOLD_OUTSIDE = 0.01
+#: Beside the name of a field with a runway that needs a site-specific procedure.
+STEEP_MARK = "steep"
+NO_CELL = el("td", NO_DATA, class_="none")
+
+
+@dataclass(frozen=True)
+class Sheet:
+    """What every table of a report needs.
+
+    Parameters
+    ----------
+    result : StudyResult
+    figures : Figures
+    """
+
+    result: StudyResult
+    figures: Figures
+
+    @property
+    def edges(self) -> Sequence[float]:
+        """Edges of the bands, as many as there are colours for."""
+        return [float(edge) for edge in self.result.settings["bands"]][:MOST_EDGES]
+
+    @property
+    def confidence(self) -> str:
+        """The confidence of the intervals, as ``90 %``."""
+        return f"{round(float(self.result.settings['confidence']) * 100, 2):g} %"
+
+
+def is_steep(field: Field) -> bool:
+    """Whether any runway direction needs a site-specific procedure."""
+    return any(abs(way.slope_pct) > STEEP_SLOPE_PCT for way in field.runways)
+
+
+def field_head(sheet: Sheet, place: int, *lines: object, slope: bool = True) -> Html:
+    """The head of a field's row: its number, its name and what else is to be said.
+
+    Parameters
+    ----------
+    sheet : Sheet
+    place : int
+    *lines : str or Html
+    slope : bool
+        Mark a runway that needs a site-specific procedure.
+    """
+    field = sheet.result.fields[place]
+    rest = [(" ", el("small", line)) for line in lines]
+    if slope and is_steep(field):
+        rest.append((" ", el("small", STEEP_MARK, class_="mark")))
+    n = el("span", str(sheet.figures.numbers[place]), class_="no")
+    label = el("span", n, " ", given(field.name), class_="label")
+    return el("th", label, rest, scope="row", class_="place")
+
+
+def sure_text(own_station: float, stations: int, error_ft: float) -> str:
+    """How sure the air of a field is, in a few words."""
+    if own_station >= 1.0:
+        return "own station"
+    if own_station <= 0.0 and not stations:
+        return "no station"
+    estimated = f"estimated {error_text(error_ft)}"
+    if own_station <= 0.0:
+        return estimated
+    return f"own station {own_share_text(own_station)} of hours, else {estimated}"
+
+
+def sure_texts(result: StudyResult) -> dict[str, str]:
+    """How sure the air of each field is, by its id."""
+    table = result.estimates
+    columns = (table[c] for c in ("field", "own_station", "stations", "transfer_error_ft"))
+    return {
+        str(field): sure_text(float(own), int(stations), float(error_ft))
+        for field, own, stations, error_ft in zip(*columns, strict=True)
+    }
+
+
+def _column_groups(seasons: int) -> list[list[int]]:
+    """Periods of each table: the months with the first seasons, then the other seasons."""
+    first = [*range(N_MONTHS + min(seasons, _BESIDE_MONTHS))]
+    rest = [*range(len(first), N_MONTHS + seasons)]
+    return [first, *(rest[at : at + _ALONE] for at in range(0, len(rest), _ALONE))]
+
+
+def period_tables(
+    sheet: Sheet,
+    order: Sequence[int],
+    cell: Callable[[int, int], Html],
+    heads: tuple[object, object, object],
+    last: tuple[str, Callable[[int], Html]] | None = None,
+) -> list[Html]:
+    """Tables of fields by months and seasons.
+
+    Parameters
+    ----------
+    sheet : Sheet
+    order : sequence of int
+        Places of the fields, a row each.
+    cell : callable
+        The cell of a field's place and a period's.
+    heads : tuple
+        Caption, heading over the months, heading over the seasons.
+    last : tuple of str and callable, optional
+        Heading and cell of a last column of the first table.
+    """
+    tables = []
+    for periods in _column_groups(len(sheet.figures.seasons)):
+        end = last if periods[0] == 0 else None
+        rows = [
+            el(
+                "tr",
+                field_head(sheet, f, slope=last is not None),
+                [cell(f, p) for p in periods],
+                end and end[1](f),
+            )
+            for f in order
+        ]
+        caption = heads[0] if periods[0] == 0 else (heads[0], ", further seasons")
+        table = el(
+            "table",
+            el("caption", caption),
+            _columns(periods, end is not None),
+            _head(sheet, periods, heads[1:], end and end[0]),
+            el("tbody", rows),
+            class_="periods whole" if len(order) <= _WHOLE else "periods",
+        )
+        tables.append(scroll(table, "Table by month and season"))
+    return tables
+
+
+def _columns(periods: Sequence[int], last: bool) -> Html:
+    """The widths of the columns."""
+    kinds = ["month" if p < N_MONTHS else "season" for p in periods]
+    names = ["field", *kinds, *(["last"] if last else [])]
+    return el("colgroup", [el("col", class_=name) for name in names])
+
+
+def _head(
+    sheet: Sheet, periods: Sequence[int], groups: tuple[object, ...], last: str | None
+) -> Html:
+    months = [p for p in periods if p < N_MONTHS]
+    seasons = [sheet.figures.seasons[p - N_MONTHS] for p in periods if p >= N_MONTHS]
+    top = [el("th", "Field", scope="col", rowspan="2", class_="name")]
+    if months:
+        top.append(el("th", groups[0], scope="colgroup", colspan=len(months)))
+    if seasons:
+        top.append(el("th", groups[1], scope="colgroup", colspan=len(seasons), class_="first"))
+    if last:
+        top.append(el("th", last, scope="col", rowspan="2", class_="end"))
+    heads = [el("th", MONTHS[m], scope="col", abbr=MONTH_NAMES[m]) for m in months]
+    heads += [
+        el("th", given(name), scope="col", class_="season first" if n == 0 else "season")
+        for n, name in enumerate(seasons)
+    ]
+    return el("thead", el("tr", top), el("tr", heads))
+
+
+# Shortfall
+
+
+def interval_mark(low: float, high: float, years: float) -> str:
+    """An interval with a star where it rests on few years."""
+    if math.isnan(low) or math.isnan(high):
+        return "no interval"
+    return interval_text(low, high) + ("*" if years < YEARS.settled_interval else "")
+
+
+def few_years(figures: Figures) -> bool:
+    """Whether any interval rests on few years."""
+    few = figures.risk["n_years"] < YEARS.settled_interval
+    return bool((few & ~np.isnan(figures.risk["ci_low"])).any())
+
+
+def interval_at(figures: Figures, field: int, aircraft: int, period: int) -> str:
+    """The interval of one cell."""
+    at = (field, aircraft, period)
+    return interval_mark(*(float(figures.risk[c][at]) for c in ("ci_low", "ci_high", "n_years")))
+
+
+def shortfall_tables(sheet: Sheet, aircraft: int, order: Sequence[int]) -> list[Html]:
+    """Shares of an aircraft by month and season, coloured by band, the number in each cell."""
+    figures = sheet.figures
+    shares = figures.risk["shortfall"][:, aircraft].tolist()
+    usable = figures.risk["usable_hours"][:, aircraft].tolist()
+
+    def cell(field: int, period: int) -> Html:
+        share = shares[field][period]
+        if math.isnan(share):
+            return NO_CELL
+        below = (
+            hours_text(usable[field][period])
+            if period < N_MONTHS
+            else interval_at(figures, field, aircraft, period).replace(" %", "")
+        )
+        kind = f"b{band_of(share, sheet.edges)}" + (" first" if period == N_MONTHS else "")
+        return el("td", number(share), " ", el("small", below), class_=kind)
+
+    def last(field: int) -> Html:
+        return _worst_cell(sheet, aircraft, field)
+
+    heads = (
+        "Share of hours that fall short, fields ranked by their worst month",
+        (given(sheet.result.aircraft[aircraft].name), ": share short in %, usable hours"),
+        f"Season: share in %, {sheet.confidence} interval",
+    )
+    return period_tables(sheet, order, cell, heads, ("Worst month, limited by", last))
+
+
+def _worst_cell(sheet: Sheet, aircraft: int, field: int) -> Html:
+    figures = sheet.figures
+    month = worst(figures.shares[field, aircraft])
+    if month is None:
+        return el("td", NO_DATA, class_="none end")
+    if figures.shares[field, aircraft, month] == 0.0:
+        return el("td", "none falls short", class_="end")
+    limit = str(figures.limiting[field, aircraft, month])
+    outside = float(figures.risk["outside_table"][field, aircraft, month])
+    beyond = f"{share_text(outside)} outside table" if outside >= _TOLD_OUTSIDE else None
+    what = ", ".join(text for text in (limit, beyond) if text)
+    share = share_text(float(figures.shares[field, aircraft, month]))
+    interval = interval_at(figures, field, aircraft, month)
+    return el(
+        "td",
+        f"{MONTHS[month]} {share} ",
+        el("small", interval),
+        " ",
+        el("small", what),
+        class_="end",
+    )
+
+
+# Air
+
+
+def altitude_tables(sheet: Sheet, order: Sequence[int]) -> list[Html]:
+    """Density altitude by month and season: 90th percentile above, median below."""
+    high, middle = (sheet.figures.altitude[p].tolist() for p in ("p90", "p50"))
+
+    def cell(field: int, period: int) -> Html:
+        if math.isnan(high[field][period]):
+            return NO_CELL
+        upper, lower = (altitude_text(v[field][period]).removesuffix(" ft") for v in (high, middle))
+        return el("td", upper, " ", el("small", lower), class_=_edge(period))
+
+    heads = (
+        "Density altitude, ft: 90th percentile, below it the median",
+        "Month: exceeded in 1 hour of 10; median",
+        "Season",
+    )
+    return period_tables(sheet, order, cell, heads)
+
+
+def humidity_tables(sheet: Sheet, order: Sequence[int]) -> list[Html]:
+    """Relative humidity by month and season: median above, 10th and 90th percentile below."""
+    low, middle, high = (sheet.figures.humidity[p].tolist() for p in PERCENTILES)
+
+    def cell(field: int, period: int) -> Html:
+        if math.isnan(middle[field][period]):
+            return NO_CELL
+        text, *ends = (number(v[field][period] / 100.0) for v in (middle, low, high))
+        return el("td", text, " ", el("small", "-".join(ends)), class_=_edge(period))
+
+    heads = (
+        "Relative humidity, %: median, below it the 10th and 90th percentile",
+        "Month: median; 1 hour in 10 is below, 1 in 10 above",
+        "Season",
+    )
+    return period_tables(sheet, order, cell, heads)
+
+
+def saturation_tables(sheet: Sheet, order: Sequence[int]) -> list[Html]:
+    """Shares of hours near saturation by month and season."""
+    near, nearest = (sheet.figures.saturation[s].tolist() for s in ("share_2_5k", "share_1k"))
+
+    def cell(field: int, period: int) -> Html:
+        if math.isnan(near[field][period]):
+            return NO_CELL
+        below = el("small", number(nearest[field][period]))
+        return el("td", number(near[field][period]), " ", below, class_=_edge(period))
+
+    heads = (
+        "Near saturation, % of hours: within 2.5 K of the dew point, below it within 1 K",
+        "Month: within 2.5 K; 1 K",
+        "Season",
+    )
+    return period_tables(sheet, order, cell, heads)
+
+
+def _edge(period: int) -> str | None:
+    return "first" if period == N_MONTHS else None
+
+
+# Overview
+
+
+def overview_tables(sheet: Sheet, per_table: int, strip: Callable[[int, int], Html], head: Html):
+    """Fields by aircraft: worst month and the picture of the year, so many aircraft to a table.
+
+    Parameters
+    ----------
+    sheet : Sheet
+    per_table : int
+    strip : callable
+        The picture of a field's place and an aircraft's.
+    head : Html
+        The months over the pictures.
+    """
+    aircraft = range(len(sheet.result.aircraft))
+    parts = [aircraft[at : at + per_table] for at in range(0, len(aircraft), per_table)]
+    return [_overview_table(sheet, part, strip, head, n) for n, part in enumerate(parts)]
+
+
+def _overview_table(
+    sheet: Sheet, aircraft: Sequence[int], strip: Callable[[int, int], Html], head: Html, n: int
+) -> Html:
+    result, sure = sheet.result, sure_texts(sheet.result)
+    heads = [el("th", "Field", scope="col", class_="field")]
+    heads += [
+        el("th", given(result.aircraft[a].name), head, scope="col", class_="plane")
+        for a in aircraft
+    ]
+    heads.append(el("th", "How sure is the air", scope="col", class_="sure"))
+    rows = []
+    for f in sheet.figures.order.tolist():
+        cells = [_overview_cell(sheet, f, a, strip) for a in aircraft]
+        field = result.fields[f]
+        known = el("td", sure.get(field.id, NO_DATA), _years(sheet.figures, f), class_="sure")
+        rows.append(el("tr", field_head(sheet, f, elevation_text(field.elevation_m)), cells, known))
+    caption = "Worst month and the year’s picture: fields by aircraft, worst first"
+    table = el(
+        "table",
+        el("caption", caption if n == 0 else f"{caption}, further aircraft"),
+        el("thead", el("tr", heads)),
+        el("tbody", rows),
+        class_="overview",
+    )
+    return scroll(table, "Table of fields by aircraft")
+
+
+def _years(figures: Figures, field: int) -> list[object]:
+    """The fewest and the most counting years of the field's months with data."""
+    months = (field, slice(None), slice(N_MONTHS))
+    years = figures.risk["n_years"][months][~np.isnan(figures.risk["shortfall"][months])]
+    if not years.size:
+        return []
+    least, most = int(years.min()), int(years.max())
+    text = count_text(most, "year") if least == most else f"{least}-{most} years"
+    return [" ", el("small", text)]
+
+
+def _overview_cell(
+    sheet: Sheet, field: int, aircraft: int, strip: Callable[[int, int], Html]
+) -> Html:
+    shares = sheet.figures.shares[field, aircraft]
+    month = worst(shares)
+    if month is None:
+        return el("td", NO_DATA, class_="none")
+    share = float(shares[month])
+    when = f"{MONTHS[month]} " if share > 0 else ""
+    gone = int(np.isnan(shares).sum())
+    head = el(
+        "span", when, el("b", number(share), " %"), class_=f"worst b{band_of(share, sheet.edges)}"
+    )
+    interval = interval_at(sheet.figures, field, aircraft, month) if share > 0 else None
+    missing = f"{count_text(gone, 'month')} no data" if gone else None
+    small = el("small", ", ".join(t for t in (interval, missing) if t))
+    return el("td", head, " ", small, strip(field, aircraft))

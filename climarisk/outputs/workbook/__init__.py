@@ -1,0 +1,1 @@
+"""The workbook of a study: sheets made for people, in one file."""
