@@ -32,7 +32,9 @@ function usableText(field, aircraft, period) {
 function usableInterval(field, aircraft, period) {
   const [low, high] = ["ci_low", "ci_high"].map((column) => riskShare(column, field, aircraft, period));
   if (low === null || high === null) return "none";
-  const hours = (share) => grouped(Math.floor(offeredHours(field, period) * (1 - share)));
+  // A share above zero stands for one a little above its level.
+  const hours = (share) =>
+    grouped(Math.max(0, Math.floor(offeredHours(field, period) * (1 - share) - (share > 0 ? 1e-9 : 0))));
   return hours(high) + "-" + hours(low);
 }
 
