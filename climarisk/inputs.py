@@ -55,6 +55,11 @@ def _identifier(text: str) -> str:
     text = _name(text)
     if any(c.isspace() for c in text) or len(text) > 80:
         raise ValueError("must have no spaces and at most 80 characters")
+    return _label(text)
+
+
+def _label(text: str) -> str:
+    text = _name(text)
     if text[0] in "=+-@":
         raise ValueError("begins with = + - or @, which a spreadsheet takes for a formula")
     return text
@@ -64,6 +69,8 @@ def _identifier(text: str) -> str:
 Text = Annotated[str, AfterValidator(_printable)]
 #: One line of text that is not empty.
 Name = Annotated[str, AfterValidator(_name)]
+#: A name that stands in the CSV files.
+Label = Annotated[str, AfterValidator(_label)]
 #: An identifier: one word.
 Identifier = Annotated[str, AfterValidator(_identifier)]
 

@@ -14,12 +14,13 @@ from pydantic import field_validator, model_validator
 from climarisk.aircraft import AircraftProfile, read_aircraft
 from climarisk.errors import InputError
 from climarisk.fields import Field, read_fields, read_runways
-from climarisk.inputs import Name, Strict, load_toml, matching, nearest, repeated, validate
+from climarisk.inputs import Label, Name, Strict, load_toml, matching, nearest, repeated, validate
 from climarisk.results import Tiles
 from climarisk.stations import Station, read_stations
 
 _Year = Annotated[int, Ge(1800), Le(2200)]
-_Share = Annotated[float, Gt(0), Lt(1)]
+#: Of a band: one in ten thousand is less than any record can tell apart.
+_Edge = Annotated[float, Ge(0.0001), Lt(1)]
 
 #: Meteorological seasons, used where a study names none: month numbers.
 DEFAULT_SEASONS: dict[str, tuple[int, ...]] = {
@@ -66,7 +67,7 @@ class _Hours(Strict):
 
 
 class _Risk(Strict):
-    bands: Annotated[list[_Share], MinLen(1)] = [0.01, 0.05, 0.20]
+    bands: Annotated[list[_Edge], Len(1, 8)] = [0.01, 0.05, 0.20]
     confidence: Annotated[float, Ge(0.5), Lt(1)] = 0.90
     humidity_in_tables: bool = True
 
@@ -131,7 +132,7 @@ class _StudyFile(Strict):
     period: _Period
     weather: _Weather = _Weather()
     hours: _Hours = _Hours()
-    seasons: dict[Name, Annotated[list[str], Len(2, 2)]] = {}
+    seasons: dict[Label, Annotated[list[str], Len(2, 2)]] = {}
     risk: _Risk = _Risk()
     map: _Map = _Map()
 

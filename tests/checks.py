@@ -12,7 +12,8 @@ CHECKS = [
     ["-m", "ruff", "check", "."],
     ["-m", "ruff", "format", "--check", "."],
     ["-m", "mypy", "climarisk"],
-    ["-m", "pytest"],
+    # Each file in one process, so that what its tests share is made once.
+    ["-m", "pytest", "-n", "auto", "--dist", "loadfile"],
 ]
 
 

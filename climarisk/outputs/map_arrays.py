@@ -13,6 +13,7 @@ import numpy as np
 import pandas as pd
 
 from climarisk.outputs.packing import (
+    NO_BYTE,
     above,
     counts,
     feet,
@@ -20,7 +21,7 @@ from climarisk.outputs.packing import (
     hundreds,
     packed,
     share_codes,
-    whole_hours,
+    words,
 )
 from climarisk.results import StudyResult
 
@@ -108,7 +109,10 @@ def _distributions(result: StudyResult, variable: str) -> dict[str, pd.DataFrame
 
 
 def _altitude_arrays(result: StudyResult, notes: Sequence[str]) -> tuple[_Arrays, int]:
-    """Density altitude to the nearest 100 ft, in bytes above the lowest of the study."""
+    """Density altitude to the nearest 100 ft, in steps above the lowest of the study.
+
+    In bytes, or in words where the study spans more than bytes can say.
+    """
     tables = _distributions(result, "density_altitude")
     wanted = {"month": _ALTITUDE_PERCENTILES, "hour": ("p50", "p90"), "season": ("p50", "p90")}
     values = {
@@ -118,7 +122,12 @@ def _altitude_arrays(result: StudyResult, notes: Sequence[str]) -> tuple[_Arrays
     base = int(min(known, default=0))
     month, season = tables["month"], tables["season"]
     note = {text: number for number, text in enumerate(notes)}
-    made = {name: packed(above(v, base)) for name, v in values.items()}
+    highest = max((np.nanmax(v) for v in values.values() if np.isfinite(v).any()), default=0.0)
+    as_bytes = highest - base < NO_BYTE
+    made = {
+        name: packed(above(v, base) if as_bytes else words(pd.Series(v - base)))
+        for name, v in values.items()
+    }
     made["altitude_month_years"] = packed(counts(month["n_years"]))
     made["altitude_season_years"] = packed(counts(season["n_years"]))
     made["altitude_month_note"] = packed(counts(month["years_note"].map(note)))
@@ -156,7 +165,7 @@ def _risk_arrays(
         "season": result.risk_seasonal,
     }
     tables = _by_time(frames, {**_field_ids(result), **_aircraft_ids(result)})
-    limit, note = ({w: n for n, w in enumerate(words)} for words in (limits, notes))
+    limit, note = ({w: n for n, w in enumerate(of)} for of in (limits, notes))
     made: _Arrays = {}
     for time in ("month", "season"):
         table = tables[time]
@@ -165,10 +174,10 @@ def _risk_arrays(
         made[f"{time}_n_years"] = packed(counts(table["n_years"]))
         made[f"{time}_limiting"] = packed(counts(table["limiting"].map(limit)))
         made[f"{time}_note"] = packed(counts(table["interval_note"].map(note)))
-        offered = whole_hours(table["hours_offered"])  # the same for every aircraft
+        offered = words(table["hours_offered"])  # the same for every aircraft
         shape = (len(result.fields), len(result.aircraft), -1)
         made[f"{time}_offered"] = packed(offered.reshape(shape)[:, 0].copy())
-        made[f"{time}_usable"] = packed(whole_hours(table["usable_hours"]))
+        made[f"{time}_usable"] = packed(words(table["usable_hours"]))
         central = floats(table["shortfall_central"])
         apart = (floats(table["shortfall"]) - central).abs() >= _CENTRAL_DIFFERENCE
         made[f"{time}_central"] = packed(share_codes(central.where(apart), levels))

@@ -20,6 +20,12 @@ from climarisk.results import StudyResult
 from climarisk.trend import STATION_MOVE, TREND_YEARS
 from climarisk.units import METRES_PER_FOOT
 
+#: Class edges of the measures that have none of their own: relative humidity, near saturation.
+HUMIDITY_EDGES = (0.4, 0.6, 0.8, 0.9)
+NEAR_SATURATION_EDGES = (0.01, 0.05, 0.1, 0.25, 0.5)
+#: A field works in an hour of a month in which less than this share falls short.
+WORKS_SHARE = 0.05
+
 #: Significant digits of the numbers that travel as text: more than the page shows of any.
 _DIGITS = 8
 
@@ -54,7 +60,7 @@ def payload(result: StudyResult) -> dict[str, Any]:
     notes += _words(result.distributions_monthly, column="years_note")
     bands = [float(edge) for edge in result.settings["bands"]][:MOST_EDGES]
     days = _days_offered(result.risk_hourly)
-    levels = share_levels(bands, days)
+    levels = share_levels([*bands, *HUMIDITY_EDGES, *NEAR_SATURATION_EDGES, WORKS_SHARE], days)
     packed, base = arrays(result, levels, limits, notes)
     texts = _Texts()
     fields = _field_entries(result, texts)
@@ -66,6 +72,8 @@ def payload(result: StudyResult) -> dict[str, Any]:
         "levels": levels.tolist(),
         "daysOffered": days,
         "altitudeBase": base,
+        "edges": {"humidity": HUMIDITY_EDGES, "nearSaturation": NEAR_SATURATION_EDGES},
+        "worksShare": WORKS_SHARE,
         "seasons": axis_values(result.risk_seasonal, "season"),
         "checks": axis_values(result.margins_monthly, "check"),
         "limits": limits,
@@ -100,9 +108,7 @@ def _aircraft_entry(profile: AircraftProfile) -> dict[str, Any]:
         "name": profile.name,
         "source": profile.source,
         "scaled": profile.is_scaled,
-        "planning": profile.planning_kg,
         "limitAltitude": profile.limit_density_altitude_ft,
-        "limitTemperature": profile.limit_temperature_c,
     }
 
 

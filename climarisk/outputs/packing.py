@@ -16,7 +16,7 @@ import pandas as pd
 #: Stand for "no value" in the packed arrays.
 NO_BYTE = 255
 NO_FEET = -32768
-NO_HOURS = 65535
+NO_WORD = 65535
 #: The longest run that one mark of a run can say.
 _LONGEST_RUN = 257
 
@@ -122,8 +122,8 @@ def counts(values: pd.Series) -> np.ndarray:
     return np.where(np.isnan(exact), NO_BYTE, np.minimum(exact, NO_BYTE - 1)).astype("u1")
 
 
-def whole_hours(values: pd.Series) -> np.ndarray:
-    """Whole hours, rounded down; `NO_HOURS` without a value."""
+def words(values: pd.Series) -> np.ndarray:
+    """Whole numbers of hours or steps as words, rounded down; `NO_WORD` without a value."""
     exact = floats(values).to_numpy()
-    whole = np.clip(np.floor(np.where(np.isnan(exact), 0.0, exact)), 0, NO_HOURS - 1)
-    return np.where(np.isnan(exact), NO_HOURS, whole).astype("<u2")
+    whole = np.clip(np.floor(np.where(np.isnan(exact), 0.0, exact)), 0, NO_WORD - 1)
+    return np.where(np.isnan(exact), NO_WORD, whole).astype("<u2")

@@ -3,8 +3,12 @@
 from __future__ import annotations
 
 import math
+import unicodedata
+from collections import Counter
 from collections.abc import Sequence
 from fractions import Fraction
+
+from climarisk.results import StudyResult
 
 #: What every output says about its own limits; the first one stands at the top.
 CAUTIONS = (
@@ -124,3 +128,50 @@ def band_labels(edges: Sequence[float]) -> list[str]:
 def band_of(share: float, edges: Sequence[float]) -> int:
     """The number of the band a share lies in, 0 being the lowest; -1 without a share."""
     return -1 if math.isnan(share) else sum(share >= edge for edge in edges)
+
+
+def worst_months(shares: Sequence[float]) -> list[int]:
+    """Places (0-11) of the months whose share is the largest; none without any share."""
+    known = [(share, month) for month, share in enumerate(shares) if not math.isnan(share)]
+    worst = max(known, default=(math.nan, 0))[0]
+    return [month for share, month in known if share == worst]
+
+
+def months_text(months: Sequence[int]) -> str:
+    """Months in words, those that tie told: ``July``, ``June, July``, ``every month``."""
+    if len(months) == len(MONTH_NAMES):
+        return "every month"
+    if len(months) > 2:
+        return f"{MONTH_NAMES[months[0]]} and {len(months) - 1} months more"
+    return ", ".join(MONTH_NAMES[month] for month in months)
+
+
+def field_labels(result: StudyResult) -> list[str]:
+    """How the fields are called: by name, and by id too where names look the same."""
+    return unique_labels([f.name for f in result.fields], [f.id for f in result.fields])
+
+
+def aircraft_labels(result: StudyResult) -> list[str]:
+    """How the aircraft are called, in the same way."""
+    return unique_labels([a.name for a in result.aircraft], [a.id for a in result.aircraft])
+
+
+def unique_labels(names: Sequence[str], ids: Sequence[str]) -> list[str]:
+    """The names, each followed by its id where another one looks the same."""
+    plain = [" ".join(name.split()) for name in names]
+    looks = Counter(_look(name) for name in plain)
+    return [
+        name if _look(name) and looks[_look(name)] == 1 else f"{name} ({key})".strip()
+        for name, key in zip(plain, ids, strict=True)
+    ]
+
+
+def _look(name: str) -> str:
+    """A name without what no reader sees: case, composition, characters without width."""
+    seen = "".join(c for c in unicodedata.normalize("NFC", name) if not invisible(c))
+    return seen.casefold()
+
+
+def invisible(character: str) -> bool:
+    """Whether a character is a format mark: no width, or a direction for what follows it."""
+    return unicodedata.category(character) == "Cf"

@@ -143,7 +143,7 @@ def test_hostile_texts_are_shown_as_text(opened, result):
     page = opened().open("#field=field-2")
     names = [field.name for field in result.fields]
     assert page.inner_text("#study-title") == result.title
-    assert page.title() == result.title
+    assert page.title() == f"{names[2]}: {result.title}"
     shown = page.locator(".marker-box .label bdi").all_text_contents()
     assert shown == names
     assert page.locator("#field-heading").text_content() == names[2]
@@ -207,7 +207,7 @@ def test_season_shows_the_seasonal_figures_over_the_whole_window(opened, result)
     assert markers(page) == {r.field: share_text(r.shortfall) for r in rows.itertuples()}
     assert page.is_disabled("#hour")
     assert page.input_value("#hour") == "-1"
-    assert "</script>summer, whole window" in page.inner_text("#caption")
+    assert "\u2068</script>summer\u2069, whole window" in page.inner_text("#caption")
 
 
 @pytest.mark.parametrize(("field", "aircraft"), [("field-0", 0), ("field-1", 1), ("field-4", 0)])
@@ -243,7 +243,9 @@ def test_no_data_looks_different_from_zero(opened):
     page = opened().open("#field=field-1&month=3&hour=2")
     zero, none = "td[data-month='2'][data-hour='2']", "td[data-month='1'][data-hour='2']"
     assert (page.inner_text(zero), page.inner_text(none)) == ("0", "\u2013")
-    assert page.get_attribute(none, "aria-label") == "no data, outside the window"
+    assert page.get_attribute(none, "aria-label") == (
+        "February, 02:00: no data, outside the window"
+    )
     image = "(node) => getComputedStyle(node).backgroundImage"
     assert "gradient" in page.eval_on_selector(none, image)
     assert page.eval_on_selector(zero, image) == "none"
@@ -380,7 +382,7 @@ def test_panel_and_list_say_how_the_air_is_known(opened):
     assert marks == {
         "field-0": steep,
         "field-1": "partly estimated \u00b1120 ft",
-        "field-2": "estimated \u00b1170 ft",
+        "field-2": "estimated \u00b1170 ft, pressure \u00b166 ft",
         "field-3": f"estimated \u00b199 ft \u00b7 {steep}",
         "field-4": "estimated \u00b1130 ft",
         EMPTY_FIELD: None,

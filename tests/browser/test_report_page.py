@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import importlib.util
+from dataclasses import replace
 from pathlib import Path
 
 import pytest
@@ -95,6 +96,81 @@ def test_axe_finds_no_violation_of_level_a_or_aa(open_report, view):
     ]
     assert broken == []
     assert {"color-contrast", "svg-img-alt"} <= {rule["id"] for rule in outcome["passes"]}
+
+
+def with_few_years(result, seasons: int):
+    """A year or two of figures far up, and so many of the seasons."""
+    names = list(dict.fromkeys(result.risk_seasonal["season"]))[:seasons]
+
+    def kept(frame):
+        return frame[frame["season"].isin(names)]
+
+    def poor(risk):
+        return risk.assign(ci_low=float("nan"), ci_high=float("nan"), n_years=2, coverage=0.07)
+
+    def high(air):
+        up = air["variable"] == "density_altitude"
+        return air.assign(p50=air["p50"] + 10000.0 * up, p90=air["p90"] + 10000.0 * up)
+
+    return replace(
+        result,
+        risk_monthly=poor(result.risk_monthly),
+        risk_seasonal=poor(kept(result.risk_seasonal)),
+        distributions_monthly=high(result.distributions_monthly),
+        distributions_seasonal=high(kept(result.distributions_seasonal)),
+        near_saturation_seasonal=kept(result.near_saturation_seasonal),
+    )
+
+
+#: Cells whose text is wider than they are, and numbers and short headings that break.
+_SPOILT = """() => {
+  const found = [];
+  const walk = (cell, number) => {
+    const texts = document.createTreeWalker(cell, NodeFilter.SHOW_TEXT);
+    while (texts.nextNode()) {
+      const words = texts.currentNode.data.trim();
+      if (!words) continue;
+      const range = document.createRange();
+      range.selectNodeContents(texts.currentNode);
+      const boxes = [...range.getClientRects()].filter((box) => box.width > 0);
+      const edge = cell.getBoundingClientRect();
+      const wide = boxes.some((b) => b.right > edge.right + 0.6 || b.left < edge.left - 0.6);
+      if (wide) found.push(`wide: ${words}`);
+      if (number && new Set(boxes.map((b) => Math.round(b.top))).size > 1) {
+        found.push(`broken: ${words}`);
+      }
+    }
+  };
+  for (const cell of document.querySelectorAll(".periods tbody td")) {
+    walk(cell, !cell.matches(".end, .none"));
+  }
+  for (const head of document.querySelectorAll(".periods thead tr:first-child th.first")) {
+    walk(head, head.textContent === "Season");
+  }
+  return found;
+}"""
+
+
+@pytest.mark.parametrize("seasons", [1, 2, 4])
+@pytest.mark.parametrize("fonts", ["as they are", "wide"])
+def test_no_cell_overprints_its_neighbour_and_no_number_breaks(
+    browser, result, tmp_path, seasons, fonts
+):
+    path = tmp_path / "report.html"
+    path.write_text(render_report(with_few_years(result, seasons)), encoding="utf-8")
+    # The width of A4 without its margins at 96 pixels to the inch, CSS Values 4 section 6.2.
+    width = round((210 - 24) / 25.4 * 96)
+    context = browser.new_context(
+        offline=True, viewport={"width": width, "height": 1000}, bypass_csp=True
+    )
+    page = context.new_page()
+    page.goto(path.as_uri())
+    page.emulate_media(media="print")
+    if fonts == "wide":
+        page.add_style_tag(content="body { font-family: 'DejaVu Sans', sans-serif !important; }")
+    spoilt = page.evaluate(_SPOILT)
+    context.close()
+    assert spoilt == []
 
 
 @pytest.fixture(scope="session")

@@ -139,10 +139,12 @@ def test_panel_says_when_the_field_works(opened, result):
         assert line[2] == f"{math.floor(row.usable_hours)} of {math.floor(row.hours_offered)}"
         if math.isnan(row.ci_low):
             assert line[3] == "none"
-        else:  # from the shares as shown, so within an hour in a hundred
+        else:  # as wide as whole hours and the levels of the shares leave it, never narrower
             low, high = (int(part) for part in line[3].split("-"))
-            assert abs(low - row.hours_offered * (1 - row.ci_high)) < 0.011 * row.hours_offered
-            assert abs(high - row.hours_offered * (1 - row.ci_low)) < 0.011 * row.hours_offered
+            exact = [row.hours_offered * (1 - share) for share in (row.ci_high, row.ci_low)]
+            assert exact[0] - 0.011 * row.hours_offered - 1 <= low <= exact[0]
+            assert exact[1] <= high <= exact[1] + 0.011 * row.hours_offered + 2
+            assert low <= math.floor(row.usable_hours) <= high
 
 
 def _hours(text: str) -> list[int]:
@@ -171,7 +173,10 @@ def test_panel_shows_the_margins_of_each_check(opened, result):
         assert lines[-1] == ["fails", *shares]
         if rows["margin_p10"].notna().any():
             floors = [math.floor(v * 100) for v in rows["margin_p10"]]
-            texts = [f"{v:+d}".replace("-", "\u2212") if v else "0" for v in floors]
+            texts = [
+                str(min(v, 154)) if v >= 100 else f"{v:+d}".replace("-", "\u2212") if v else "0"
+                for v in floors
+            ]
             assert lines[0] == ["margin", *texts]
         else:
             assert len(lines) == 1  # a limit has no margin
@@ -185,13 +190,18 @@ def test_chart_draws_the_limit_of_the_aircraft_that_has_one(opened):
     assert page.locator(".band-chart .limit").count() == 0
 
 
-def test_grid_marks_the_hours_of_the_window(opened):
+def test_grid_sets_the_hours_outside_the_window_apart(opened):
     page = opened().open("#field=field-0")
     hours = page.eval_on_selector_all(
-        ".grid td.first-hour, .grid td.last-hour", "(all) => all.map((td) => td.dataset.hour)"
+        ".grid td.outside", "(all) => all.map((td) => Number(td.dataset.hour))"
     )
-    assert sorted(set(hours)) == ["19", "6"]
-    assert len(hours) == 24
+    assert sorted(set(hours)) == [*range(6), *range(20, 24)]
+    assert len(hours) == 12 * 10
+    shadow = "(td) => getComputedStyle(td).boxShadow"
+    assert page.eval_on_selector(".grid td.outside", shadow) != "none"
+    assert page.eval_on_selector(".grid td:not(.outside)", shadow) == "none"
+    cell = page.locator("td[data-month='0'][data-hour='2']")
+    assert cell.get_attribute("aria-label").startswith("January, 02:00: ")
 
 
 @pytest.mark.parametrize("view", ["desktop", "phone"])
@@ -209,6 +219,47 @@ def test_field_without_figures_has_only_what_is_known(opened):
     page = opened().open(f"#field={EMPTY_FIELD}")
     assert page.locator(".works, .check-table, .grid").count() == 0
     assert "Runways" in page.locator("#jump option").all_inner_texts()
+
+
+# History and links
+
+
+def test_back_leads_from_a_field_to_the_list(opened):
+    page = opened().open()
+    page.select_option("#period", "m3")
+    page.click("#fields button[data-field=field-2]")
+    page.select_option("#hour", "9")
+    page.go_back()
+    page.wait_for_selector("#fields tbody button", state="visible")
+    assert page.input_value("#period") == "m3"
+    assert page.evaluate("document.activeElement !== document.body")
+    page.go_forward()
+    page.wait_for_selector("#field-heading")
+    assert "field=field-2" in page.url
+    assert page.title().startswith("{{7*7}}") or page.title().startswith("</script>")
+
+
+@pytest.mark.parametrize(
+    ("fragment", "told"),
+    [
+        ("#aircraft=nobody", "an aircraft"),
+        ("#field=nowhere", "a field"),
+        ("#season=never", "a season"),
+        ("#compare=field-0+nowhere", "a field to compare"),
+        ("#month=7", None),
+    ],
+)
+def test_link_to_what_the_study_does_not_have_says_so(opened, fragment, told):
+    page = opened().open(fragment)
+    notice = page.inner_text("#notice")
+    assert told in notice if told else notice == ""
+
+
+def test_escape_in_a_choice_does_not_close_the_field(opened):
+    page = opened().open("#field=field-0")
+    page.focus("#measure")
+    page.keyboard.press("Escape")
+    assert page.is_visible("#field-heading")
 
 
 # Comparison

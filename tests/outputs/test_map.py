@@ -22,7 +22,7 @@ from sample_result import HOSTILE, SEASONS, sample_result
 from climarisk.outputs import background, packing
 from climarisk.outputs import map as map_module
 from climarisk.outputs.map import render_map
-from climarisk.outputs.packing import NO_BYTE, NO_FEET, NO_HOURS
+from climarisk.outputs.packing import NO_BYTE, NO_FEET, NO_WORD
 from climarisk.outputs.texts import CAUTIONS
 
 # Subresource integrity value published for leaflet.js 1.9.3 (npm package leaflet 1.9.3,
@@ -233,7 +233,7 @@ def test_packed_usable_hours_are_those_of_the_frames_rounded_down(result, parsed
     for row in result.risk_monthly.itertuples():
         cell = int(row.field[-1]), int(row.aircraft[-1]), row.month - 1
         known = not np.isnan(row.usable_hours)
-        assert months[cell] == (int(row.usable_hours) if known else NO_HOURS)
+        assert months[cell] == (int(row.usable_hours) if known else NO_WORD)
         assert offered[cell[0], cell[2]] == int(row.hours_offered)
 
 

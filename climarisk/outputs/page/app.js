@@ -75,6 +75,19 @@ const actions = {
 
 let showMarkers = null;
 
+function showNotice() {
+  byId("notice").textContent = unknown.length
+    ? "The link asks for " +
+      unknown.join(" and ") +
+      " that this study does not have; the page shows what it has."
+    : "";
+}
+
+function pageTitle() {
+  if (state.field >= 0) return STUDY.fields[state.field].name + ": " + STUDY.title;
+  return STUDY.title;
+}
+
 function shownHeading() {
   if (state.field >= 0) return "field-heading";
   return state.comparing ? "compare-heading" : "fields-heading";
@@ -96,6 +109,8 @@ function draw() {
   byId("list-part").hidden = open || state.comparing;
   showPart("field-part", open, () => fieldPanel(state, actions));
   showPart("compare-part", state.comparing, () => comparePanel(state, actions));
+  showNotice();
+  document.title = pageTitle();
   byId("skip").href = "#" + shownHeading();
   document.documentElement.classList.toggle("one-part", open || state.comparing);
   showMarkers(state);
@@ -123,10 +138,13 @@ function listen() {
   });
   window.addEventListener("hashchange", () => {
     readFragment();
+    fromHistory = true;
     draw();
+    fromHistory = false;
+    if (document.activeElement === document.body) moveTo(byId(shownHeading()));
   });
   window.addEventListener("keydown", (event) => {
-    if (event.key !== "Escape" || event.defaultPrevented) return;
+    if (event.key !== "Escape" || event.defaultPrevented || event.target.closest("select, input")) return;
     if (state.field >= 0) actions.close();
     else if (state.comparing) actions.closeCompare();
   });

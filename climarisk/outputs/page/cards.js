@@ -76,7 +76,9 @@ function stationCard(use) {
     ["Distance", use.distance_km === null ? NO_DATA : use.distance_km.toFixed(1) + " km"],
     [
       "Field above station",
-      height === null ? NO_DATA : signed(height, 0) + " m (" + signed(feetOf(height), 0) + " ft)",
+      height === null
+        ? NO_DATA
+        : signedWhole(Math.round(height)) + " m (" + signedWhole(Math.round(feetOf(height))) + " ft)",
     ],
     [
       "Record",
@@ -84,8 +86,8 @@ function stationCard(use) {
         ? NO_DATA
         : [given(day(use.first)), " to ", given(day(use.last))],
     ],
-    ["Coverage", percent(use.coverage)],
-    ["Share of the field\u2019s hours", percent(use.share_of_hours)],
+    ["Coverage", shareBelowAll(use.coverage)],
+    ["Share of the field\u2019s hours", shareBelowAll(use.share_of_hours)],
     ["Pressure", given(day(use.pressure_kind))],
     ["Archive", given(day(use.archive))],
   ];

@@ -15,7 +15,7 @@ function showCompareBar() {
   byId("compare-note").textContent =
     count < 2
       ? "Tick two to " + MOST_COMPARED + " fields to see them on one chart."
-      : state.compare.map((index) => STUDY.fields[index].name).join(", ");
+      : state.compare.map((index) => givenString(STUDY.fields[index].name)).join(", ");
 }
 
 // Values in the unit of an axis, with their interval where the measure has one.

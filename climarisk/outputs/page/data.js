@@ -3,7 +3,7 @@
 const STUDY = JSON.parse(byId("study").textContent);
 const NO_BYTE = 255;
 const NO_FEET = -32768;
-const NO_HOURS = 65535;
+const NO_WORD = 65535;
 const LOWEST_MARGIN = -100;
 const HIGHEST_MARGIN = LOWEST_MARGIN + NO_BYTE - 1;
 
@@ -69,8 +69,9 @@ function countAt(name, position) {
 
 // A density altitude in feet, to the nearest hundred.
 function altitudeAt(name, position) {
-  const steps = countAt(name, position);
-  return steps === null ? null : (STUDY.altitudeBase + steps) * 100;
+  const steps = ARRAYS[name][position];
+  const none = ARRAYS[name] instanceof Uint16Array ? NO_WORD : NO_BYTE;
+  return steps === none || steps === undefined ? null : (STUDY.altitudeBase + steps) * 100;
 }
 
 // A share 0-1, as the last level it reaches: rounded down, yet never across a band edge, a whole
@@ -80,10 +81,16 @@ function shareAt(name, position) {
   return level === null ? null : STUDY.levels[level];
 }
 
+// The share up to which a share shown by this level may go.
+function nextLevel(share) {
+  const place = STUDY.levels.indexOf(share);
+  return share === 0 || place === STUDY.levels.length - 1 ? share : STUDY.levels[place + 1];
+}
+
 // Whole hours, rounded down.
 function hoursAt(name, position) {
   const hours = ARRAYS[name][position];
-  return hours === NO_HOURS || hours === undefined ? null : hours;
+  return hours === NO_WORD || hours === undefined ? null : hours;
 }
 
 // A period is {season: false, index: 0-11} or {season: true, index: place in STUDY.seasons}.
@@ -158,8 +165,10 @@ function inWindow(field, month, hour) {
 
 // A field of which nothing at all is known, whatever the aircraft, month or hour.
 function isEmpty(field) {
-  const none = (name, from, count) =>
-    ARRAYS[name].subarray(from, from + count).every((value) => value === NO_BYTE);
+  const none = (name, from, count) => {
+    const missing = ARRAYS[name] instanceof Uint16Array ? NO_WORD : NO_BYTE;
+    return ARRAYS[name].subarray(from, from + count).every((value) => value === missing);
+  };
   const cells = STUDY.aircraft.length * 12;
   return (
     none("altitude_hour_p50", field * 12 * 24, 12 * 24) &&

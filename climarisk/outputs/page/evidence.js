@@ -16,11 +16,6 @@ function collapsed(name, summary, content) {
 
 // Air
 
-// Nothing below "all of them" is shown as all of them.
-function ownShareText(share) {
-  return share > 0.99 ? "over 99 %" : percent(share);
-}
-
 function isKnown(estimate) {
   return Boolean(estimate) && (estimate.own_station > 0 || estimate.stations > 0);
 }
@@ -47,16 +42,25 @@ function airText(field) {
   const own = estimate.own_station;
   let how = "measured at its own station";
   if (own <= 0) how = estimateText(estimate);
-  else if (own < 1) how += " in " + ownShareText(own) + " of the hours, otherwise " + estimateText(estimate);
+  else if (own < 1) how += " in " + shareBelowAll(own) + " of the hours, otherwise " + estimateText(estimate);
   return "Air " + how + "; pressure " + errorText(estimate.pressure_error_ft) + " (1 sd).";
 }
 
-// The short form for the list; null where the air is the station's own in every hour.
+// From this many feet on the doubt about the pressure is told in the list as well.
+const PRESSURE_TOLD_FT = 20;
+
+// The short form for the list; null where everything is the station's own.
 function estimateMark(field) {
   const [estimate] = field.estimate;
-  if (!isKnown(estimate) || estimate.own_station >= 1) return null;
-  const how = estimate.own_station > 0 ? "partly estimated " : "estimated ";
-  return el("span", { class: "estimated" }, how + errorText(estimate.transfer_error_ft));
+  if (!isKnown(estimate)) return null;
+  const parts = [];
+  if (estimate.own_station < 1)
+    parts.push(
+      (estimate.own_station > 0 ? "partly estimated " : "estimated ") + errorText(estimate.transfer_error_ft),
+    );
+  if (estimate.pressure_error_ft >= PRESSURE_TOLD_FT)
+    parts.push("pressure " + errorText(estimate.pressure_error_ft));
+  return parts.length ? el("span", { class: "estimated" }, parts.join(", ")) : null;
 }
 
 // Trends
@@ -90,7 +94,7 @@ function trendCells(row, text) {
 }
 
 function confidenceText() {
-  return Math.round(STUDY.settings.confidence * 100) + " % interval";
+  return Number((STUDY.settings.confidence * 100).toFixed(1)) + " % interval";
 }
 
 function trendTable(caption, rows, text) {

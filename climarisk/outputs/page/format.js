@@ -89,6 +89,11 @@ function percent(share) {
   return percentNumber(share).replace("<", "< ") + " %";
 }
 
+// Nothing below "all of them" is shown as all of them.
+function shareBelowAll(share) {
+  return share !== null && share > 0.99 && share < 1 ? "over 99 %" : percent(share);
+}
+
 function hundreds(feet) {
   return Math.floor((feet + 50) / 100);
 }
@@ -125,6 +130,7 @@ function tenths(hundredths) {
 
 // One standard deviation: two digits say enough.
 function errorText(feet) {
+  if (feet === null) return "unknown";
   if (feet < 0.5) return "< 1 ft";
   return "\u00b1" + grouped(feet < 10 ? Math.round(feet) : Number(feet.toPrecision(2))) + " ft";
 }
@@ -141,7 +147,7 @@ function windowText() {
 }
 
 function periodText(period) {
-  return period.season ? STUDY.seasons[period.index] : MONTH_NAMES[period.index];
+  return period.season ? givenString(STUDY.seasons[period.index]) : MONTH_NAMES[period.index];
 }
 
 function elevationText(metres) {
@@ -175,7 +181,8 @@ function signed(value, digits) {
 // Whole per cent of a margin, rounded down when it was packed.
 function marginText(margin) {
   if (margin === null) return "\u2013";
-  return margin >= HIGHEST_MARGIN ? ">" + (HIGHEST_MARGIN - 1) : signedWhole(margin);
+  if (margin >= HIGHEST_MARGIN) return ">" + (HIGHEST_MARGIN - 1);
+  return margin < 100 ? signedWhole(margin) : grouped(margin); // three digits leave no room for a sign
 }
 
 // Hours that follow one another, as "06:00-10:00"; the label of an hour is its full hour.
@@ -186,5 +193,10 @@ function hourRanges(hours) {
     if (run && run[1] === hour - 1) run[1] = hour;
     else runs.push([hour, hour]);
   }
-  return runs.map(([first, last]) => hourText(first) + (last > first ? "-" + hourText(last) : "")).join(", ");
+  // Across midnight.
+  if (runs.length > 1 && runs[0][0] === 0 && runs[runs.length - 1][1] === 23)
+    runs[runs.length - 1][1] = runs.shift()[1];
+  return runs
+    .map(([first, last]) => hourText(first) + (last === first ? "" : "-" + hourText(last)))
+    .join(", ");
 }

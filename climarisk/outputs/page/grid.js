@@ -1,29 +1,23 @@
 // grid.js: the month by hour grid of a field. One tab stop; arrow keys move, Enter or Space chooses.
 
-// Lines along the first and the last hour of the window in each month.
-function windowEdges(field, month, hour) {
-  if (!inWindow(field, month, hour)) return " outside";
-  const before = hour > 0 && !inWindow(field, month, hour - 1);
-  const after = hour < 23 && !inWindow(field, month, hour + 1);
-  return (before ? " first-hour" : "") + (after ? " last-hour" : "");
-}
-
 function gridCell(state, month, hour) {
   const value = measured(state.measure, state.field, state.aircraft, { season: false, index: month }, hour);
   const scale = scaleOf(state.measure, "hour");
   const text = measureText(state.measure, value, "hour");
+  const inside = inWindow(state.field, month, hour);
+  const told =
+    MONTH_NAMES[month] + ", " + hourText(hour) + ": " + text + (inside ? "" : ", outside the window");
   const chosen = !state.period.season && state.period.index === month && state.hour === hour;
   return el(
     "td",
     {
-      class:
-        className(classIn(scale, value)) + windowEdges(state.field, month, hour) + (chosen ? " chosen" : ""),
+      class: className(classIn(scale, value)) + (inside ? "" : " outside") + (chosen ? " chosen" : ""),
       tabindex: "-1",
       "data-month": month,
       "data-hour": hour,
-      "aria-label": text + (inWindow(state.field, month, hour) ? "" : ", outside the window"),
+      "aria-label": told,
       "aria-selected": String(chosen),
-      title: MONTH_NAMES[month] + ", " + hourText(hour) + ": " + text,
+      title: told,
     },
     cellText(state.measure, value),
   );
@@ -47,7 +41,7 @@ function makeGrid(state, chooseCell) {
     MEASURES[state.measure].sentence("hour") +
     ", " +
     MEASURES[state.measure].unit("hour") +
-    "; rows: hour, local standard time. Thick lines: the hours window.";
+    "; rows: hour, local standard time. Small cells: hours outside the window.";
   const hours = Array.from({ length: 24 }, (_, hour) => hour);
   const grid = el(
     "table",

@@ -70,15 +70,25 @@ function boxGrid() {
   };
 }
 
+// A function from a marker to how far the symbols at its place reach: those of fields at the same
+// place lie on each other, and the label of the one on top has to clear them all.
+function furthestReach(entries, view) {
+  const place = ({ index }) => Math.round(view.points[index].x) + " " + Math.round(view.points[index].y);
+  const reach = new Map();
+  for (const entry of entries) reach.set(place(entry), Math.max(entry.reach, reach.get(place(entry)) || 0));
+  return (entry) => reach.get(place(entry));
+}
+
 // The first place where a label covers no other marker or label: with its name, else the number
 // alone, else not at all (the list and the tip still have it). Dots carry numbers only.
 function placeLabels(entries, view, ruler) {
   const grid = boxGrid();
   view.taken.forEach(grid.add);
   const shown = entries.filter((entry) => view.inside[entry.index]);
+  const reachAt = furthestReach(shown, view);
   for (const entry of shown) {
     const { x, y } = view.points[entry.index];
-    const reach = entry.reach;
+    const reach = reachAt(entry);
     entry.square = { left: x - reach, top: y - reach, right: x + reach, bottom: y + reach };
     grid.add(entry.square);
   }
@@ -90,7 +100,7 @@ function placeLabels(entries, view, ruler) {
     const kinds = view.dots && !entry.chosen ? LABEL_KINDS.slice(-1) : LABEL_KINDS;
     for (const kind of kinds) {
       const size = labelSize(entry, kind, ruler);
-      const boxOn = (side) => labelBox(view.points[entry.index], entry.reach, size, side);
+      const boxOn = (side) => labelBox(view.points[entry.index], reachAt(entry), size, side);
       const side = LABEL_PLACES.find((one) => fits(boxOn(one)) && grid.isFree(boxOn(one), entry.square));
       if (!side) continue;
       grid.add(boxOn(side));

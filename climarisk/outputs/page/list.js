@@ -144,7 +144,8 @@ function listRow(field, index, choose) {
 
 // The interval of a share belongs to the whole window; hours have none.
 function hasIntervals(state) {
-  return WIDE.matches && state.measure === "shortfall" && (state.hour < 0 || state.period.season);
+  const wide = WIDE.matches || document.documentElement.classList.contains("printing");
+  return wide && state.measure === "shortfall" && (state.hour < 0 || state.period.season);
 }
 
 function readRow(row, state) {

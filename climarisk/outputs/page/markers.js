@@ -30,14 +30,16 @@ const RING_PX = 5;
 // Room around the fields: for names, or for numbers alone where there are many fields.
 const NAME_ROOM = 76;
 const NUMBER_ROOM = 40;
+const LOW_PX = 220;
 
 function fitFields(map) {
   const places = STUDY.fields.map((field) => [field.latitude, field.drawn]);
-  const room = places.length > MOST_TAB_STOPS ? NUMBER_ROOM : NAME_ROOM;
+  const low = map.getSize().y < LOW_PX; // on the sheet of a field
+  const room = low || places.length > MOST_TAB_STOPS ? NUMBER_ROOM : NAME_ROOM;
   if (places.length)
     map.fitBounds(places, {
-      paddingTopLeft: [room, 44],
-      paddingBottomRight: [room, room - 4],
+      paddingTopLeft: [room, low ? 16 : 44],
+      paddingBottomRight: [room, low ? 16 : room - 4],
       maxZoom: 10,
       animate: false,
     });

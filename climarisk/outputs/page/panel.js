@@ -18,7 +18,10 @@ function headlineFacts(state) {
     ...(central === null ? [] : [["Central share", percent(central) + " with the air as estimated"]]),
     [confidenceText(), intervalText(state)],
     ["Usable hours", usableText(state.field, state.aircraft, state.period)],
-    ["Years, coverage", (years || 0) + " years that count, " + percent(risk("coverage")) + " of the period"],
+    [
+      "Years, coverage",
+      (years || 0) + " years that count, " + shareBelowAll(risk("coverage")) + " of the period",
+    ],
     ["Days affected", shareOf(risk("days_affected"), " of days have at least one such hour")],
     ["Outside table", shareOf(risk("outside_table"), " of hours")],
     ["Limiting check", limit || (risk("shortfall") === null ? NO_DATA : "none")],
@@ -90,7 +93,7 @@ function riskByMonth(state) {
       limitingCheck(state.field, state.aircraft, period) || (value === null ? NO_DATA : "none"),
       [
         String(riskYears(state.field, state.aircraft, period) || 0),
-        risk("coverage") === null ? null : el("small", null, percent(risk("coverage"))),
+        risk("coverage") === null ? null : el("small", null, shareBelowAll(risk("coverage"))),
       ],
     ];
   });

@@ -71,7 +71,7 @@ function classLabels(edges, text, unit) {
   if (!words.length) return ["any value"];
   return [
     "< " + words[0] + unit,
-    ...words.slice(1).map((word, i) => words[i] + "-" + word + unit),
+    ...words.slice(1).map((word, i) => words[i] + (edges[i] < 0 ? " to " : "-") + word + unit),
     words[words.length - 1] + unit + " or more",
   ];
 }
@@ -89,15 +89,18 @@ function steppedEdges(values, steps) {
 function altitudeScale() {
   const seen = new Set();
   for (const name of ["hour_p50", "hour_p90", "month_p50", "month_p90", "season_p50", "season_p90"])
-    for (const steps of ARRAYS["altitude_" + name]) if (steps !== NO_BYTE) seen.add(steps);
-  const feet = [...seen].map((steps) => (STUDY.altitudeBase + steps) * 100);
+    ARRAYS["altitude_" + name].forEach((_, place) => seen.add(altitudeAt("altitude_" + name, place)));
+  const feet = [...seen].filter((value) => value !== null);
   const edges = steppedEdges(feet, [500, 1000, 2000, 3000, 4000, 5000, 10000]);
   return { edges, labels: classLabels(edges, grouped, " ft") };
 }
 
 // Of usable hours few are bad: the classes run the other way, so that the worst stands out.
 function usableScale(values, unit) {
-  const edges = steppedEdges([0, ...values], [2, 5, 10, 25, 50, 100, 250, 500, 1000, 2500]);
+  return fewIsWorse(steppedEdges([0, ...values], [25, 50, 100, 250, 500, 1000, 2500]), unit);
+}
+
+function fewIsWorse(edges, unit) {
   return { edges, labels: classLabels(edges, grouped, unit).reverse(), fewIsWorse: true };
 }
 
@@ -106,7 +109,7 @@ function shareScale(edges) {
 }
 
 function knownHours(name) {
-  return [...new Set(ARRAYS[name])].filter((hours) => hours !== NO_HOURS);
+  return [...new Set(ARRAYS[name])].filter((hours) => hours !== NO_WORD);
 }
 
 const ALTITUDE_SCALE = altitudeScale();
@@ -114,11 +117,11 @@ const SCALES = {
   shortfall: shareScale(STUDY.bands),
   "usable month": usableScale(knownHours("month_offered"), " h"),
   "usable season": usableScale(knownHours("season_offered"), " h"),
-  "usable hour": usableScale(STUDY.daysOffered, " days"),
+  "usable hour": fewIsWorse([7, 14, 21, 28], " days") /* weeks: a whole February is a whole month */,
   median: ALTITUDE_SCALE,
   p90: ALTITUDE_SCALE,
-  humidity: shareScale([0.4, 0.6, 0.8, 0.9]),
-  "near-saturation": shareScale([0.01, 0.05, 0.1, 0.25, 0.5]),
+  humidity: shareScale(STUDY.edges.humidity),
+  "near-saturation": shareScale(STUDY.edges.nearSaturation),
 };
 
 function scaleOf(measure, time) {

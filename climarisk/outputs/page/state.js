@@ -58,6 +58,7 @@ function wholeNumber(text, low, high) {
 function readPeriod(words) {
   const season = STUDY.seasons.indexOf(words.get("season"));
   if (season >= 0) return { season: true, index: season };
+  if (words.has("season")) unknown.push("a season");
   const month = wholeNumber(words.get("month"), 1, 12);
   return month === null ? worstMonth() : { season: false, index: month - 1 };
 }
@@ -74,16 +75,27 @@ function readSort(words) {
   state.direction = known ? (way === "up" ? 1 : -1) : worstFirst(state.measure);
 }
 
+// What a link asked for and this study does not have; told to the reader.
+let unknown = [];
+
+function wanted(words, key, list, what) {
+  const index = indexOfId(list, words.get(key));
+  if (words.has(key) && index < 0) unknown.push(what);
+  return index;
+}
+
 function readFragment() {
+  unknown = [];
   const words = new URLSearchParams(location.hash.slice(1));
-  state.aircraft = Math.max(0, indexOfId(STUDY.aircraft, words.get("aircraft")));
-  state.field = indexOfId(STUDY.fields, words.get("field"));
+  state.aircraft = Math.max(0, wanted(words, "aircraft", STUDY.aircraft, "an aircraft"));
+  state.field = wanted(words, "field", STUDY.fields, "a field");
   state.period = readPeriod(words);
   const hour = wholeNumber(words.get("hour"), 0, 23);
   state.hour = hour === null ? -1 : hour;
   state.measure = Object.hasOwn(MEASURES, words.get("measure")) ? words.get("measure") : "shortfall";
   const compared = (words.get("compare") || "").split(" ").map((id) => indexOfId(STUDY.fields, id));
   const known = [...new Set(compared)].filter((index) => index >= 0).slice(0, MOST_COMPARED);
+  if (words.has("compare") && compared.includes(-1)) unknown.push("a field to compare");
   state.comparing = state.field < 0 && known.length > 1;
   if (state.comparing) state.compare = known;
   readSort(words);
@@ -94,6 +106,9 @@ function readFragment() {
 function settle() {
   if (state.period.season) state.hour = -1;
 }
+
+let writtenPart = null;
+let fromHistory = false;
 
 function writeFragment() {
   const words = new URLSearchParams();
@@ -106,5 +121,9 @@ function writeFragment() {
   if (state.comparing) words.set("compare", state.compare.map((index) => STUDY.fields[index].id).join(" "));
   if (state.sort !== "value" || state.direction !== worstFirst(state.measure))
     words.set("sort", state.sort + "." + (state.direction > 0 ? "up" : "down"));
-  history.replaceState(null, "", "#" + words);
+  // Opening a field or a comparison is a step that Back takes back; a choice is not.
+  const part = state.field + " " + state.comparing;
+  const step = writtenPart !== null && part !== writtenPart && !fromHistory;
+  history[step ? "pushState" : "replaceState"](null, "", "#" + words);
+  writtenPart = part;
 }

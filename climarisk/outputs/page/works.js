@@ -1,17 +1,11 @@
 // works.js: when a field works for the aircraft, and what limits it: months, hours, margins.
 
-// The target of "works": the highest band edge up to 5 %, or the lowest edge.
-function worksEdge() {
-  const below = STUDY.bands.filter((edge) => edge <= 0.05);
-  return below.length ? below[below.length - 1] : STUDY.bands[0];
-}
-
 // Hours of the window with a share below the edge; null where no hour has a figure.
 function workingHours(field, aircraft, month) {
   const inside = Array.from({ length: 24 }, (_, hour) => hour).filter((hour) => inWindow(field, month, hour));
   const shares = inside.map((hour) => hourShare(field, aircraft, month, hour));
   if (shares.every((share) => share === null)) return null;
-  const hours = inside.filter((_, i) => shares[i] !== null && shares[i] < worksEdge());
+  const hours = inside.filter((_, i) => shares[i] !== null && shares[i] < STUDY.worksShare);
   return { hours, inside: inside.length };
 }
 
@@ -32,14 +26,16 @@ function usableText(field, aircraft, period) {
 function usableInterval(field, aircraft, period) {
   const [low, high] = ["ci_low", "ci_high"].map((column) => riskShare(column, field, aircraft, period));
   if (low === null || high === null) return "none";
-  // A share above zero stands for one a little above its level.
-  const hours = (share) =>
-    grouped(Math.max(0, Math.floor(offeredHours(field, period) * (1 - share) - (share > 0 ? 1e-9 : 0))));
-  return hours(high) + "-" + hours(low);
+  // Shares and hours are known to their levels and to whole hours: the interval is taken as wide as
+  // they leave it, so that it never looks better than it is.
+  const offered = offeredHours(field, period);
+  const least = Math.floor(offered * (1 - nextLevel(high)));
+  const most = Math.min(offered, Math.ceil((offered + 1) * (1 - low)));
+  return grouped(least) + "-" + grouped(most);
 }
 
 function worksPart(state) {
-  const limit = edgeText(worksEdge()) + " %";
+  const limit = edgeText(STUDY.worksShare) + " %";
   const rows = MONTH_NAMES.map((name, index) => {
     const period = { season: false, index };
     return [
@@ -54,10 +50,10 @@ function worksPart(state) {
     el(
       "p",
       { class: "key" },
-      "Hours of the window, local standard time, in which less than " +
+      "Hours of the window, first to last full hour of local standard time, in which less than " +
         limit +
         " of the days fall short. " +
-        "Usable hours a month: hours of the window that do not fall short.",
+        "Usable hours a month: hours of the window that do not fall short. Colours and hours go by the unrounded share.",
     ),
     table(
       ["When ", given(STUDY.aircraft[state.aircraft].name), " works here"],
@@ -108,8 +104,8 @@ function marginsPart(state) {
       { class: "key" },
       "Margin: available over required with the factors, less one, in the window; 9 hours of 10 have more. " +
         "Fails: hours in which this check falls short. Both per cent, margins rounded down; " +
-        LOWEST_MARGIN.toString().replace("-", MINUS) +
-        " is beyond the table.",
+        grouped(LOWEST_MARGIN) +
+        " stands for that and less: beyond the table, or no climb at all.",
     ),
     el(
       "table",
