@@ -71,6 +71,11 @@ class RunwayDirection:
     landing: bool
     undeclared: bool = False
 
+    @property
+    def is_steep(self) -> bool:
+        """Whether it is steeper than the published factors hold for."""
+        return abs(self.slope_pct) > STEEP_SLOPE_PCT
+
 
 @dataclass(frozen=True)
 class Field:
@@ -98,6 +103,11 @@ class Field:
     timezone: str
     stations: tuple[str, ...] = ()
     runways: tuple[RunwayDirection, ...] = ()
+
+    @property
+    def is_steep(self) -> bool:
+        """Whether a runway is steeper than the published factors hold for."""
+        return any(way.is_steep for way in self.runways)
 
 
 class _FieldRow(Row):

@@ -213,7 +213,7 @@ def _slope_texts(field: Field) -> list[str]:
         f"runway direction {d.runway} slopes {abs(d.slope_pct):g} %: published factors do not "
         f"hold above {STEEP_SLOPE_PCT:g} %, it needs a site-specific procedure."
         for d in field.runways
-        if abs(d.slope_pct) > STEEP_SLOPE_PCT
+        if d.is_steep
     ]
 
 

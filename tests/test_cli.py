@@ -275,7 +275,7 @@ def test_check_and_run_find_the_same(study_folder, command):
     cautions = [line for line in ran.err.splitlines() if not line.endswith("study.json.")]
     assert [x for x in checked.err.splitlines() if not x.startswith("note:")] == cautions
     assert "1728 of 1728 month x hour cells have figures" in checked.out
-    assert "1,728 of 1,728 month x hour cells have figures" in ran.out
+    assert "1,728 of 1,728 month x hour cells, from" in ran.out
 
 
 def test_check_tells_every_problem_at_once(study_folder, command, tmp_path):

@@ -153,6 +153,12 @@ def test_a_title_and_a_season_have_a_name(study_folder, old):
     only_problem(changed(study_folder, f'"{old}"', '" "'))
 
 
+@pytest.mark.parametrize("name", ["=1+1", "+summer", "-summer", "@summer"])
+def test_a_season_whose_name_a_spreadsheet_takes_for_a_formula_is_told(study_folder, name):
+    told = only_problem(changed(study_folder, '"flying summer"', f'"{name}"'))
+    assert "takes for a formula" in told
+
+
 # ---------------------------------------------------------------- hours, bands, period
 
 
@@ -208,6 +214,8 @@ def test_another_window_is_one_plain_sentence(study_folder, text):
         "[0.1, nan]",
         "0.05",
         "[-1]",
+        "[0.00001, 0.5]",
+        "[0.01, 0.02, 0.03, 0.04, 0.05, 0.06, 0.07, 0.08, 0.09]",
     ],
 )
 def test_band_edges_rise_between_zero_and_one(study_folder, bands):

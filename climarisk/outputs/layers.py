@@ -13,6 +13,7 @@ section 6.1 (foreign members).
 from __future__ import annotations
 
 import json
+import math
 import sqlite3
 from collections import Counter
 from contextlib import closing
@@ -22,7 +23,7 @@ from typing import Any
 
 import pandas as pd
 
-from climarisk.fields import STEEP_SLOPE_PCT
+from climarisk.fields import STEEP_SLOPE_PCT, Field
 from climarisk.outputs.texts import CAUTIONS, window_text
 from climarisk.results import StudyResult
 
@@ -99,7 +100,8 @@ COLUMNS = tuple(
             "Int64",
             "Worst month",
             "month 1-12",
-            "Month with the largest shortfall share of that aircraft.",
+            "Month with the largest shortfall share of that aircraft, the first of equal ones: "
+            "worst_months says how many there are.",
         ),
         (
             "worst_shortfall",
@@ -115,14 +117,15 @@ COLUMNS = tuple(
             "Error of estimated air, ft",
             "ft",
             "One standard deviation of the density altitude in hours estimated from stations "
-            "nearby; 0 where all are measured on the spot.",
+            "nearby, rounded up; 0 where all are measured on the spot, empty without data.",
         ),
         (
             "pressure_error_ft",
             "Int64",
             "Error of the pressure, ft",
             "ft",
-            "One standard deviation of the pressure, as density altitude.",
+            "One standard deviation of the pressure, as density altitude, rounded up; empty "
+            "without data.",
         ),
         (
             "cautions",
@@ -166,8 +169,8 @@ COLUMNS = tuple(
             "string",
             "Limiting check",
             "",
-            f"{_WORST}: the check that most often has the smallest margin; empty where no hour "
-            "falls short.",
+            f"{_WORST}: the check that has the smallest margin in most of the hours that fall "
+            "short; empty where none does, and without data.",
         ),
         (
             "ci_low",
@@ -198,7 +201,7 @@ COLUMNS = tuple(
             "Steep runway",
             "true or false",
             f"A runway slopes more than {STEEP_SLOPE_PCT:g} %: published factors do not hold, it "
-            "needs a site-specific procedure.",
+            "needs a site-specific procedure. Empty where the study names no runway.",
         ),
         (
             "own_station",
@@ -206,7 +209,15 @@ COLUMNS = tuple(
             "Hours measured on the spot, 0-1",
             "share 0-1",
             "Share of the field's hours from a station on the spot; the others are estimated "
-            "from stations nearby.",
+            "from stations nearby. Empty without data.",
+        ),
+        (
+            "worst_months",
+            "Int64",
+            "Months as bad as the worst",
+            "count 1-12",
+            "Months in which that aircraft has the share of its worst one; above 1 that month "
+            "is only the first of them.",
         ),
     )
 )
@@ -235,11 +246,13 @@ def headline(result: StudyResult) -> list[dict[str, Any]]:
     known = risk.groupby(["field", "aircraft"])["shortfall"].count().groupby("field").min()
     damp = humidity.groupby("field")["p50"].mean()
     dampest = result.near_saturation_monthly.groupby("field")["share_2_5k"].max()
+    equal = _equal_months(risk, worst)
     sure = result.estimates.set_index("field").to_dict("index")
     told = Counter(f.id for f in result.findings if f.subject == "field" and f.severity != "note")
     rows = []
     for field in result.fields:
         hot, bad, errors = hottest.get(field.id, {}), worst.get(field.id, {}), sure[field.id]
+        measured = errors["own_station"] > 0 or errors["stations"] > 0
         values = {
             "id": field.id,
             "name": field.name,
@@ -250,8 +263,8 @@ def headline(result: StudyResult) -> list[dict[str, Any]]:
             "worst_aircraft": bad.get("aircraft"),
             "worst_month": _whole(bad.get("month")),
             "worst_shortfall": _rounded(bad.get("shortfall"), 6),
-            "transfer_error_ft": _whole(errors["transfer_error_ft"]),
-            "pressure_error_ft": _whole(errors["pressure_error_ft"]),
+            "transfer_error_ft": _error(errors["transfer_error_ft"]) if measured else None,
+            "pressure_error_ft": _error(errors["pressure_error_ft"]) if measured else None,
             "cautions": told[field.id],
             "da_p50_ft": _whole(hot.get("p50")),
             "near_saturation_pct": _rounded(dampest.get(field.id), 3, 100.0),
@@ -261,8 +274,9 @@ def headline(result: StudyResult) -> list[dict[str, Any]]:
             "ci_low": _rounded(bad.get("ci_low"), 6),
             "ci_high": _rounded(bad.get("ci_high"), 6),
             "months_known": int(known.get(field.id, 0)),
-            "steep": any(abs(d.slope_pct) > STEEP_SLOPE_PCT for d in field.runways),
-            "own_station": _rounded(errors["own_station"], 4) if bad or hot else None,
+            "steep": _steep(field),
+            "own_station": _rounded(errors["own_station"], 4) if measured else None,
+            "worst_months": equal.get(field.id),
         }
         rows.append({column.name: values[column.name] for column in COLUMNS})
     return rows
@@ -299,6 +313,28 @@ def _worst(table: pd.DataFrame, column: str) -> dict[str, dict[str, Any]]:
     known = table[table[column].notna()]
     largest = known.loc[known.groupby("field")[column].idxmax()]
     return largest.set_index("field").to_dict("index")
+
+
+def _equal_months(risk: pd.DataFrame, worst: dict[str, dict[str, Any]]) -> dict[str, int]:
+    """How many months of the worst aircraft have the share of its worst one; by field."""
+    told = pd.DataFrame(
+        [(field, bad["aircraft"], bad["shortfall"]) for field, bad in worst.items()],
+        columns=["field", "aircraft", "most"],
+    )
+    both = risk.merge(told, on=["field", "aircraft"])
+    count = both[both["shortfall"] == both["most"]].groupby("field").size()
+    return {str(field): int(n) for field, n in count.items()}
+
+
+def _steep(field: Field) -> bool | None:
+    if not field.runways:
+        return None
+    return field.is_steep
+
+
+def _error(feet: float) -> int | None:
+    """Whole feet, rounded up: an error is never told as smaller, nor as none."""
+    return None if pd.isna(feet) else math.ceil(round(float(feet), 6))
 
 
 def _rounded(value: float | None, digits: int, factor: float = 1.0) -> float | None:

@@ -15,7 +15,7 @@ from climarisk.outputs.background import drawn_longitudes, outlines_for
 from climarisk.outputs.colours import MOST_EDGES, NO_DATA_SHAPE, SHAPES, YLORBR
 from climarisk.outputs.map_arrays import arrays, axis_values, scenario_names
 from climarisk.outputs.packing import feet, share_levels
-from climarisk.outputs.texts import CAUTIONS, METHOD
+from climarisk.outputs.texts import CAUTIONS, METHOD, PRESSURE_TOLD_FT
 from climarisk.results import StudyResult
 from climarisk.trend import STATION_MOVE, TREND_YEARS
 from climarisk.units import METRES_PER_FOOT
@@ -35,7 +35,7 @@ _RUNWAY: dict[str, Callable[[RunwayDirection], Any]] = {
     "heading": lambda way: way.heading_deg,
     "lengths": lambda way: [way.tora_m, way.toda_m, way.asda_m, way.lda_m],
     "slope": lambda way: way.slope_pct,
-    "steep": lambda way: abs(way.slope_pct) > STEEP_SLOPE_PCT,
+    "steep": lambda way: way.is_steep,
     "surface": lambda way: way.surface,
     "takeoff": lambda way: way.takeoff,
     "landing": lambda way: way.landing,
@@ -83,6 +83,7 @@ def payload(result: StudyResult) -> dict[str, Any]:
         "stationMove": STATION_MOVE,
         "scenarios": scenario_names(result),
         "steepPct": STEEP_SLOPE_PCT,
+        "pressureToldFt": PRESSURE_TOLD_FT,
         "metresPerFoot": METRES_PER_FOOT,
         "columns": {
             "runways": [[name, False] for name in _RUNWAY],

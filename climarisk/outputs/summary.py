@@ -6,33 +6,39 @@ console may take for a command is for the caller to escape.
 
 from __future__ import annotations
 
+import math
+import textwrap
 import unicodedata
 from collections.abc import Iterable, Sequence
+from dataclasses import dataclass
 from pathlib import Path
 
 import pandas as pd
 
-from climarisk.findings import Finding, sort_findings
+from climarisk.findings import Finding
 from climarisk.outputs.texts import (
     MONTH_NAMES,
     band_labels,
     grouped,
     interval_text,
     share_text,
+    short_months,
+    unique_labels,
     window_text,
+    worst_months,
 )
 from climarisk.results import StudyResult
+from climarisk.rules import YEARS
 
 WIDTH = 80
 #: Fields shown of each aircraft by the number of aircraft, one among more.
 _WORST_FIELDS = {1: 3, 2: 3, 3: 2}
 _MOST_AIRCRAFT = 5
-_MOST_FINDINGS = 3
 #: A name is never cut below this width.
 _LEAST_NAME = 12
 _ELLIPSIS = "\N{HORIZONTAL ELLIPSIS}"
 _WORDS = {"reject": "rejection", "caution": "caution", "note": "note"}
-#: What the files made for people are; every other file is a table.
+#: What the files made for people are.
 _FOR_PEOPLE = {"tables.xlsx": "workbook", "report.html": "to print"}
 _MAP = "map.html"
 
@@ -53,24 +59,60 @@ def summary_lines(result: StudyResult, folder: Path, files: Sequence[Path]) -> l
     list of str
         About 18 lines of at most 80 columns; only the path of the folder is never cut.
     """
-    worst = _worst_cells(result)
+    names = _Names(
+        _labels([(f.name, f.id) for f in result.fields]),
+        _labels([(a.name, a.id) for a in result.aircraft]),
+    )
     settings = result.settings
     about = (
-        f": {len(result.fields)} fields x {len(result.aircraft)} aircraft, "
+        f": {_counted(len(result.fields), 'field')} x {len(result.aircraft)} aircraft, "
         f"{settings['first_year']}-{settings['last_year']}, {window_text(settings['window'])}"
     )
     sure = f"{settings['confidence'] * 100:.4g}"
     return [
         cut(result.title, max(_LEAST_NAME, WIDTH - columns(about))) + about,
         f"Share of hours that fall short ({sure} % interval), worst month of the worst fields:",
-        *_aircraft_lines(result, worst),
-        *_data_lines(result),
-        *_finding_lines(result.findings, worst),
+        *_aircraft_lines(result, names),
+        *_steep_lines(result),
+        *_data_lines(result, names),
+        *_finding_lines(result.findings),
         *_file_lines(folder, files),
     ]
 
 
 # Names
+
+
+@dataclass(frozen=True)
+class _Label:
+    """What something is called: its name, and its id behind it where names look the same."""
+
+    name: str
+    tail: str
+
+    def within(self, width: int, more: str = "") -> str:
+        """The label with what follows it; of what is too wide only the name is cut."""
+        end = (f" {cut(self.tail, WIDTH // 2)}" if self.tail else "") + more
+        return cut(self.name, max(_LEAST_NAME, width - columns(end))) + end
+
+
+@dataclass(frozen=True)
+class _Names:
+    """The labels of the fields and the aircraft, by id."""
+
+    fields: dict[str, _Label]
+    aircraft: dict[str, _Label]
+
+
+def _labels(called: Sequence[tuple[str, str]]) -> dict[str, _Label]:
+    """Labels that stay apart in a terminal, which shows less than a name may hold."""
+    names = [_plain(name) for name, _ in called]
+    ids = [key for _, key in called]
+    told = unique_labels(names, ids)
+    return {
+        key: _Label(name, "" if label == name else f"({key})")
+        for key, name, label in zip(ids, names, told, strict=True)
+    }
 
 
 def columns(text: str) -> int:
@@ -90,7 +132,7 @@ def cut(text: str, width: int) -> str:
     Control, format and bidirectional characters are left out, line ends become spaces, and
     what no font has becomes a replacement character.
     """
-    clean = " ".join("".join(_cleaned(c) for c in text).split())
+    clean = _plain(text)
     # Marks that take no column of their own cannot make a line endless.
     if columns(clean) <= width and len(clean) <= 2 * width:
         return clean
@@ -103,6 +145,10 @@ def cut(text: str, width: int) -> str:
     return kept.rstrip() + _ELLIPSIS
 
 
+def _plain(text: str) -> str:
+    return " ".join("".join(_cleaned(c) for c in text).split())
+
+
 def _cleaned(character: str) -> str:
     category = unicodedata.category(character)
     if character.isspace() or category in ("Zl", "Zp"):
@@ -112,14 +158,17 @@ def _cleaned(character: str) -> str:
     return "" if category[0] == "C" else character
 
 
-def _listed(names: Sequence[str], width: int) -> str:
-    """As many names as fit, then how many more there are; at least one."""
-    for shown in range(len(names), 0, -1):
-        more = f" and {len(names) - shown} more" if shown < len(names) else ""
-        text = ", ".join(cut(name, 30) for name in names[:shown]) + more
+def _listed(labels: Sequence[tuple[_Label, str]], width: int) -> str:
+    """As many labels with what follows each as fit, then how many more; at least one."""
+    for shown in range(len(labels), 0, -1):
+        more = f" and {len(labels) - shown} more" if shown < len(labels) else ""
+        text = (
+            ", ".join(label.within(30 + columns(end), end) for label, end in labels[:shown]) + more
+        )
         if columns(text) <= width:
             return text
-    return cut(names[0], max(_LEAST_NAME, width - len(more))) + more
+    label, end = labels[0]
+    return label.within(width - len(more), end) + more
 
 
 def _counted(number: int, word: str) -> str:
@@ -140,8 +189,8 @@ def _worst_cells(result: StudyResult) -> pd.DataFrame:
     return cells[cells["aircraft"].isin(shown)]
 
 
-def _aircraft_lines(result: StudyResult, worst: pd.DataFrame) -> list[str]:
-    names = {field.id: field.name for field in result.fields}
+def _aircraft_lines(result: StudyResult, names: _Names) -> list[str]:
+    worst = _worst_cells(result)
     shown = result.aircraft
     if len(shown) > _MOST_AIRCRAFT:
         first = [*dict.fromkeys(worst["aircraft"]), *(a.id for a in shown)]
@@ -151,13 +200,13 @@ def _aircraft_lines(result: StudyResult, worst: pd.DataFrame) -> list[str]:
     for profile in shown:
         risk = result.risk_monthly[result.risk_monthly["aircraft"] == profile.id]
         scaled = " (scaled, no table)" if profile.is_scaled else ""
-        head = cut(profile.name, 40 - len(scaled)) + scaled + ": "
+        head = names.aircraft[profile.id].within(40, scaled) + ": "
         if not risk["shortfall"].notna().any():
             lines.append(f"{head}no data at any field")
             continue
         lines.append(head + _usable_text(result, risk, names, WIDTH - columns(head)))
         cells = worst[worst["aircraft"] == profile.id]
-        lines += [_cell_line(cell, names) for cell in cells.itertuples()]
+        lines += [_cell_line(cell, risk, names) for cell in cells.itertuples()]
         if cells.empty:
             lines.append("  no hour falls short where there are data")
     if more := len(result.aircraft) - len(shown):
@@ -165,69 +214,105 @@ def _aircraft_lines(result: StudyResult, worst: pd.DataFrame) -> list[str]:
     return lines
 
 
-def _usable_text(result: StudyResult, risk: pd.DataFrame, names: dict[str, str], width: int) -> str:
+def _steep(result: StudyResult) -> list[str]:
+    """Fields with a runway that needs a procedure of its own; never counted as usable."""
+    return [field.id for field in result.fields if field.is_steep]
+
+
+def _steep_lines(result: StudyResult) -> list[str]:
+    steep = len(_steep(result))
+    if not steep:
+        return []
+    need = "needs a procedure of its own" if steep == 1 else "need a procedure of their own"
+    return [f"Never counted as usable: {_counted(steep, 'steep field')}, which {need}."]
+
+
+def _usable_text(result: StudyResult, risk: pd.DataFrame, names: _Names, width: int) -> str:
     """Where the share of every month of the year is known and in the lowest band."""
     edges = result.settings["bands"]
     months = risk.groupby("field", sort=False)["shortfall"]
     good = (months.count() == len(MONTH_NAMES)) & (months.max() < edges[0])
-    ids = [field for field, usable in good.items() if usable]
+    steep = set(_steep(result))
+    ids = [field for field, usable in good.items() if usable and field not in steep]
     text = f"{band_labels(edges)[0]} all year at "
-    if len(ids) == len(names):
-        return f"{text}all {_counted(len(ids), 'field')}"
-    return text + (_listed([names[i] for i in ids], width - len(text)) if ids else "no field")
+    if ids and len(ids) == len(result.fields) - len(steep):
+        others = " not steep" if steep else ""
+        return f"{text}all {_counted(len(ids), 'field')}{others}"
+    labels = [(names.fields[str(i)], "") for i in ids]
+    return text + (_listed(labels, width - len(text)) if ids else "no field")
 
 
-def _cell_line(cell, names: dict[str, str]) -> str:
-    interval = interval_text(cell.ci_low, cell.ci_high)
-    sure = "(no interval)" if interval == "none" else f"({interval})"
-    when = MONTH_NAMES[cell.month - 1]
-    start = f"  {share_text(cell.shortfall):>6}  {sure:<13} {when} at "
-    end = f": {cell.limiting}" if cell.limiting else ""
-    return start + cut(names[cell.field], max(_LEAST_NAME, WIDTH - len(start + end))) + end
+def _cell_line(cell, risk: pd.DataFrame, names: _Names) -> str:
+    own = risk[risk["field"] == cell.field].set_index("month")["shortfall"]
+    months = worst_months(own.reindex(range(1, len(MONTH_NAMES) + 1)).tolist())
+    equal = risk[(risk["field"] == cell.field) & risk["month"].isin([m + 1 for m in months])]
+    when = MONTH_NAMES[months[0]] if len(months) == 1 else short_months(months)
+    limits = list(dict.fromkeys(text for text in equal["limiting"] if text))
+    start = f"  {share_text(cell.shortfall):>6}  {_sure(equal):<15} {when} at "
+    end = f": {limits[0] if len(limits) == 1 else 'several checks'}" if limits else ""
+    return start + names.fields[cell.field].within(WIDTH - len(start + end)) + end
+
+
+def _sure(equal: pd.DataFrame) -> str:
+    """The widest interval of the worst months, or why there is none."""
+    low, high = (equal[end].to_numpy(dtype=float) for end in ("ci_low", "ci_high"))
+    interval = interval_text(float(low.min()), float(high.max()))
+    if interval != "none":
+        return f"({interval})"
+    return "(too few years)" if equal["n_years"].min() < YEARS.interval else "(no interval)"
 
 
 # Data
 
 
-def _data_lines(result: StudyResult) -> list[str]:
+def _data_lines(result: StudyResult, names: _Names) -> list[str]:
     known = result.risk_hourly["shortfall"].notna()
     cells, have = len(known), int(known.sum())
-    line = f"Data: {grouped(have)} of {grouped(cells)} month x hour cells have figures"
-    lines = [f"{line}; {grouped(cells - have)} have none." if have < cells else f"{line}."]
-    counts = result.risk_monthly.groupby("field", sort=False)["shortfall"].count()
-    empty = [field.name for field in result.fields if not counts.get(field.id, 0)]
+    line = f"Data: {grouped(have)} of {grouped(cells)} month x hour cells"
+    line += _years_text(result) if have else ""
+    line += f"; {grouped(cells - have)} empty." if have < cells else "."
+    lines = textwrap.wrap(line, WIDTH, subsequent_indent="  ")
+    by_aircraft = result.risk_monthly.groupby(["field", "aircraft"])["shortfall"].count()
+    least = by_aircraft.groupby("field").min()
+    most = by_aircraft.groupby("field").max()
+    months = {f.id: (int(least.get(f.id, 0)), int(most.get(f.id, 0))) for f in result.fields}
+    empty = [(names.fields[key], "") for key, (_, top) in months.items() if not top]
     if empty:
         end = ". That does not mean no risk."
         start = "No data at all: "
         lines.append(start + _listed(empty, WIDTH - len(start + end)) + end)
+    part = [
+        (names.fields[key], f" ({low} of {len(MONTH_NAMES)})")
+        for key, (low, top) in months.items()
+        if top and low < len(MONTH_NAMES)
+    ]
+    if part:
+        start = "Some months only: "
+        lines.append(start + _listed(part, WIDTH - len(start) - 1) + ".")
     return lines
+
+
+def _years_text(result: StudyResult) -> str:
+    """The years behind the cells with figures, of those of the study's period."""
+    risk = result.risk_hourly
+    years = risk["n_years"][risk["shortfall"].notna()]
+    least, most = math.floor(years.min()), math.floor(years.max())
+    period = int(result.settings["last_year"]) - int(result.settings["first_year"]) + 1
+    if least == most == period:
+        return f", from all {_counted(period, 'year')}" if period > 1 else ", from its one year"
+    span = _counted(most, "year") if least == most else f"{least} to {_counted(most, 'year')}"
+    return f", from {span} of the {period}"
 
 
 # Findings
 
 
-def _finding_lines(findings: Iterable[Finding], worst: pd.DataFrame) -> list[str]:
-    told = sort_findings(findings)
-    if not told:
-        return ["Findings: none."]
+def _finding_lines(findings: Iterable[Finding]) -> list[str]:
+    """How many of each kind; the run has told the serious ones on its other stream."""
+    told = list(findings)
     counts = {s: sum(f.severity == s for f in told) for s in _WORDS}
     words = [_counted(n, _WORDS[s]) for s, n in counts.items() if n]
-    serious = [f for f in told if f.severity != "note"]
-    concerned = {*worst["field"], *worst["aircraft"]}
-    order = {"reject": 0, "caution": 1}
-    serious.sort(key=lambda f: (order[f.severity], f.id not in concerned))
-    # One line for each kind: forty stations refused for one reason would hide the rest.
-    kinds: dict[tuple[str, str], list[Finding]] = {}
-    for finding in serious:
-        kinds.setdefault((finding.severity, finding.check), []).append(finding)
-    shown = list(kinds.values())[:_MOST_FINDINGS]
-    head = f"Findings, all in study.json: {', '.join(words)}"
-    return [head + ("; most serious:" if shown else "."), *map(_finding_line, shown)]
-
-
-def _finding_line(alike: Sequence[Finding]) -> str:
-    more = f" (and {len(alike) - 1} alike)" if len(alike) > 1 else ""
-    return f"  {cut(str(alike[0]), WIDTH - 2 - len(more))}{more}"
+    return [f"Findings, all in study.json: {', '.join(words)}." if words else "Findings: none."]
 
 
 # Files
@@ -236,7 +321,7 @@ def _finding_line(alike: Sequence[Finding]) -> str:
 def _file_lines(folder: Path, files: Sequence[Path]) -> list[str]:
     names = [path.name for path in files]
     parts = [f"{name} ({what})" for name, what in _FOR_PEOPLE.items() if name in names]
-    tables = len([n for n in names if n != _MAP and n not in _FOR_PEOPLE])
-    parts += [_counted(tables, "table")] if tables else []
+    tables = sum(name.endswith(".csv") for name in names)
+    parts += [_counted(tables, "CSV table")] if tables else []
     first = f"Map: {folder / _MAP}" if _MAP in names else f"Files: {folder}"
     return [first, f"Beside it: {', '.join(parts)}."] if parts else [first]

@@ -41,9 +41,10 @@ METHOD = (
     "air density, moisture included. It is computed hour by hour and only then ordered into "
     "percentiles (Hyndman and Fan type 8), by month and hour of local standard time; clock "
     "changes are not applied. An hour is the nearest full hour.",
-    "A year counts for a cell when at least 80 % of its days have a value there; the number "
-    "of years is shown. A cell below the rule is “no data”: it does not mean no risk. "
-    "Intervals come from resampling whole years; from too few years there is none.",
+    "A year counts for a month and hour when at least 80 % of its days have a value there; of a "
+    "month or a season the number of years with any such hour is shown, and beside it the share "
+    "of the period’s cells that count. A cell below the rule is “no data”: it does not mean no "
+    "risk. Intervals come from resampling whole years; from too few years there is none.",
     "Air estimated from stations nearby carries an error, learned by hiding stations that are"
     " near the fields and estimating them from the others. Percentiles, shares and intervals "
     "include it; the central share does not.",
@@ -71,6 +72,9 @@ MONTH_NAMES = (
     "December",
 )
 NO_DATA = "no data"
+#: From this many feet on (one standard deviation) the doubt about the pressure is told wherever the
+#: doubt about the air is: the pressure is then not measured well, or not at all.
+PRESSURE_TOLD_FT = 20.0
 _MINUS = "\N{MINUS SIGN}"
 
 
@@ -146,6 +150,15 @@ def months_text(months: Sequence[int]) -> str:
     return ", ".join(MONTH_NAMES[month] for month in months)
 
 
+def short_months(months: Sequence[int]) -> str:
+    """Months for a narrow cell: ``Jul``, ``Jan, Apr``, ``Jun and 3 more``, ``every month``."""
+    if len(months) == len(MONTHS):
+        return months_text(months)
+    if len(months) > 2:
+        return f"{MONTHS[months[0]]} and {len(months) - 1} more"
+    return ", ".join(MONTHS[month] for month in months)
+
+
 def field_labels(result: StudyResult) -> list[str]:
     """How the fields are called: by name, and by id too where names look the same."""
     return unique_labels([f.name for f in result.fields], [f.id for f in result.fields])
@@ -161,15 +174,18 @@ def unique_labels(names: Sequence[str], ids: Sequence[str]) -> list[str]:
     plain = [" ".join(name.split()) for name in names]
     looks = Counter(_look(name) for name in plain)
     return [
-        name if _look(name) and looks[_look(name)] == 1 else f"{name} ({key})".strip()
+        name if _look(name) and looks[_look(name)] == 1 else f"{_visible(name)} ({key})".strip()
         for name, key in zip(plain, ids, strict=True)
     ]
 
 
 def _look(name: str) -> str:
     """A name without what no reader sees: case, composition, characters without width."""
-    seen = "".join(c for c in unicodedata.normalize("NFC", name) if not invisible(c))
-    return seen.casefold()
+    return _visible(unicodedata.normalize("NFC", name)).casefold()
+
+
+def _visible(text: str) -> str:
+    return "".join(c for c in text if not invisible(c))
 
 
 def invisible(character: str) -> bool:

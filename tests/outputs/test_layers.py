@@ -111,8 +111,7 @@ def test_air_is_that_of_the_frames(result):
 
 def test_field_without_data_has_no_figure_and_says_so(result):
     (row,) = [row for row in headline(result) if row["id"] == EMPTY_FIELD]
-    always = {"id", "name", "elevation_m", "transfer_error_ft", "pressure_error_ft", "steep"}
-    always |= {"cautions", "months_known"}
+    always = {"id", "name", "elevation_m", "steep", "cautions", "months_known"}
     assert {key for key, value in row.items() if value is not None} == always
     assert row["months_known"] == 0
     assert row["cautions"] == 1  # its rejection
@@ -121,9 +120,27 @@ def test_field_without_data_has_no_figure_and_says_so(result):
 def test_steep_own_station_and_cautions(result):
     rows = headline(result)
     # The sample's fields 0 and 3 slope 3.5 %, field 1 exactly 2 %, field 2 has no runway.
-    assert [row["steep"] for row in rows] == [True, False, False, True, False, False]
+    assert [row["steep"] for row in rows] == [True, False, None, True, False, False]
     assert [row["own_station"] for row in rows] == [1.0, 0.4, 0.0, 0.0, 0.0, None]
     assert [row["cautions"] for row in rows] == [1, 0, 0, 0, 0, 1]
+
+
+def test_errors_are_rounded_up_and_empty_without_data(result):
+    # The sample's last field has no own station and no other one; its zeros are no measurement.
+    rows = headline(result)
+    assert [row["transfer_error_ft"] for row in rows] == [0, 119, 172, 99, 132, None]
+    assert [row["pressure_error_ft"] for row in rows] == [1, 6, 67, 8, 10, None]
+
+
+def test_equal_worst_months_are_counted(result):
+    risk = result.risk_monthly.copy()
+    own = (risk["field"] == "field-0") & (risk["aircraft"] == "aircraft-1")
+    risk.loc[own & (risk["month"] > 3), "shortfall"] = 1.0
+    row = headline(replace(result, risk_monthly=risk))[0]
+    assert (row["worst_aircraft"], row["worst_month"], row["worst_months"]) == ("aircraft-1", 4, 9)
+    assert headline(result)[0]["worst_months"] == 1
+    about = {column.name: column.description for column in COLUMNS}
+    assert "first of equal ones" in about["worst_month"]
 
 
 def test_result_without_any_figure_is_written_with_the_same_columns(result, folder, tmp_path):

@@ -227,6 +227,31 @@ def test_packed_density_altitude_is_that_of_the_frame(result, parsed):
         assert cell == hundreds
 
 
+def test_altitudes_further_apart_than_bytes_can_say_are_sent_whole(result):
+    frames = {}
+    for name in ("distributions_monthly", "distributions_hourly", "distributions_seasonal"):
+        frame = getattr(result, name).copy()
+        far = (frame["variable"] == "density_altitude") & (frame["field"] == "field-4")
+        frame.loc[far, ["p10", "p25", "p50", "p75", "p90", "p95"]] += 30_000.0
+        frames[name] = frame
+    parsed = _Parsed(render_map(replace(result, **frames)))
+    packed = _array(parsed, "altitude_month_p90").reshape(6, 12)
+    rows = frames["distributions_monthly"].query("variable == 'density_altitude'")
+    for row in rows.itertuples():
+        cell = packed[int(row.field[-1]), row.month - 1]
+        if np.isnan(row.p90):
+            assert cell == NO_WORD
+        else:
+            told = (_study(parsed)["altitudeBase"] + int(cell)) * 100
+            assert told == np.floor(row.p90 / 100 + 0.5) * 100
+
+
+def test_every_class_edge_is_a_level_of_the_shares(result, parsed):
+    study = _study(parsed)
+    edges = [*study["bands"], *study["edges"]["humidity"], *study["edges"]["nearSaturation"]]
+    assert {*edges, study["worksShare"]} <= set(study["levels"])
+
+
 def test_packed_usable_hours_are_those_of_the_frames_rounded_down(result, parsed):
     months = _array(parsed, "month_usable").reshape(6, 2, 12)
     offered = _array(parsed, "month_offered").reshape(6, 12)

@@ -20,8 +20,9 @@ from climarisk.outputs.report.charts import feet_scale, share_top
 from climarisk.outputs.report.data import ranked
 from climarisk.outputs.report.document import render_report
 from climarisk.outputs.report.sketch import fields_sketch
+from climarisk.outputs.report.tables import sure_text
 from climarisk.outputs.report.words import css_text, distance_text, el, error_text, hours_text
-from climarisk.outputs.texts import CAUTIONS, METHOD
+from climarisk.outputs.texts import CAUTIONS, METHOD, field_labels
 
 VOID = {"meta", "link", "col", "path", "rect"}
 #: Elements that the report is made of; anything else came from a text.
@@ -140,7 +141,8 @@ def numbers_of_fields(page: Page, result) -> dict[str, int]:
     for row in table.all("tbody")[0].all("tr"):
         name = row.all("bdi")[0].text
         place = int(row.all("span", "no")[0].text)
-        found |= {f.id: place for f in result.fields if f.name == name}
+        labels = zip(result.fields, field_labels(result), strict=True)
+        found |= {f.id: place for f, label in labels if label == name}
     return found
 
 
@@ -192,11 +194,15 @@ def test_intervals_of_seasons_and_worst_month_are_those_of_the_frames(page, resu
         assert main_text(cell) == f"{month} {number(worst['shortfall'])} %"
         interval = cell.all("small")[0].text
         if worst["n_years"] < 5:
-            assert interval == "no interval"
+            assert interval == "too few years"
         else:
             low, high = (number(worst[c]).replace("< ", "<") for c in ("ci_low", "ci_high"))
             assert interval == f"{low}-{high} %" + ("*" if worst["n_years"] < 10 else "")
-        assert worst["limiting"] in cell.all("small")[1].text
+        assert worst["limiting"] in cell.all("small")[-1].text
+        # Told below 80 %; 0.8 itself is not below.
+        low = [s.text for s in cell.all("small") if s.text.startswith("coverage")]
+        share = number(worst["coverage"])
+        assert low == ([f"coverage\xa0{share}\xa0%"] if worst["coverage"] < 0.8 else [])
         season = result.risk_seasonal[
             (result.risk_seasonal["field"] == field.id)
             & (result.risk_seasonal["aircraft"] == profile.id)
@@ -213,8 +219,13 @@ def test_overview_tells_the_year_of_every_field_and_aircraft(page, result):
     risk = result.risk_monthly.dropna(subset="shortfall")
     for field in result.fields:
         years = risk[risk["field"] == field.id]["n_years"]
-        small = [s.text for s in rows[places[field.id]][-1].all("small")]
-        assert small == ([f"{years.min()}-{years.max()} years"] if len(years) else [])
+        cover = risk[risk["field"] == field.id]["coverage"]
+        small = [s.text.replace("\xa0", " ") for s in rows[places[field.id]][-1].all("small")]
+        if len(years):
+            low, high = number(cover.min()), number(cover.max())
+            assert small == [f"{years.min()}-{years.max()} years, coverage {low}-{high} %"]
+        else:
+            assert small == []
         for a, profile in enumerate(result.aircraft):
             cell = rows[places[field.id]][a]
             own = result.risk_monthly[
@@ -282,7 +293,7 @@ def test_method_cautions_findings_stations_and_attributions_are_whole(page, resu
 
 
 def test_aircraft_page_tells_its_figures(page, result):
-    facts = section(page, "aircraft-1").all("dl")[0].text
+    facts = section(page, "aircraft-1").all("dl")[0].text.replace("\xa0", " ")
     for words in (
         "720 kg",
         "maximum 760 kg",
@@ -302,6 +313,180 @@ def test_aircraft_page_tells_its_figures(page, result):
     assert facts["Take-off"] == "factor 1; table at 760 kg, up to 8,000 ft and 40\u00a0°C"
 
 
+# Words
+
+
+def with_months(result, field: str, shares: dict[int, float], others: float = 0.0):
+    """The result with the monthly shares of one field replaced for every aircraft."""
+    risk = result.risk_monthly.copy()
+    own = risk["field"] == field
+    risk.loc[own, "shortfall"] = risk.loc[own, "month"].map(shares).fillna(others)
+    return replace(result, risk_monthly=risk)
+
+
+@pytest.mark.parametrize(
+    ("months", "long", "short"),
+    [
+        (range(1, 13), "every month", "every month"),
+        ((6, 7, 8, 9), "June and 3 months more", "Jun and 3 more"),
+        ((1, 4), "January, April", "Jan, Apr"),
+        ((10,), "October", "Oct"),
+    ],
+)
+def test_months_that_tie_are_told_as_such(result, months, long, short):
+    made = Page(render_report(with_months(result, "field-0", dict.fromkeys(months, 1.0))))
+    lead = section(made, "aircraft-1").all("p", "lead")[0].text
+    assert f"Worst: Quiet Plateau in {long}, 100 % of the hours" in lead
+    table = section(made, "aircraft-1").all("table")[0]
+    assert main_text(rows_by_number(table)[1][-1]) == f"{short} 100 %"
+    overview = section(made, "overview").all("table")[0]
+    assert rows_by_number(overview)[1][0].all("span", "worst")[0].text == f"{short} 100 %"
+    titles = [e.text for e in section(made, "aircraft-1").all("title")]
+    assert any(text.endswith(f"highest 100 % in {long}") for text in titles)
+
+
+def test_tied_months_tell_the_widest_interval_and_every_check(result):
+    risk = result.risk_monthly.copy()
+    own = (risk["field"] == "field-0") & risk["month"].isin([6, 7])
+    risk.loc[own, ["shortfall", "n_years", "coverage"]] = [1.0, 14, 0.93]
+    risk.loc[own & (risk["month"] == 6), ["ci_low", "ci_high"]] = [0.8, 1.0]
+    risk.loc[own & (risk["month"] == 7), ["ci_low", "ci_high"]] = [0.6, 1.0]
+    made = Page(render_report(replace(result, risk_monthly=risk)))
+    cell = rows_by_number(section(made, "aircraft-1").all("table")[0])[1][-1]
+    limits = risk[own & (risk["aircraft"] == "aircraft-0")]["limiting"]
+    small = [s.text for s in cell.all("small")]
+    assert small[0] == "60-100 %"
+    assert small[1].startswith(" or ".join(limits))
+
+
+def test_steep_fields_are_not_counted_as_usable_all_year(result):
+    # The sample's fields 0 and 3 slope 3.5 %.
+    risk = result.risk_monthly.assign(shortfall=0.0)
+    calm = replace(result, risk_monthly=risk)
+    lead = section(Page(render_report(calm)), "aircraft-1").all("p", "lead")[0].text
+    assert lead.endswith(
+        "4 of 6 fields stay at < 1 % in every month; 2 steep ones need a procedure of their own."
+    )
+    level = tuple(replace(f, runways=()) for f in calm.fields[1:])
+    one = replace(calm, fields=(calm.fields[0], *level))
+    lead = section(Page(render_report(one)), "aircraft-1").all("p", "lead")[0].text
+    assert lead.endswith("; 1 steep one needs a procedure of its own.")
+    none = replace(calm, fields=tuple(replace(f, runways=()) for f in calm.fields))
+    assert "steep" not in section(Page(render_report(none)), "aircraft-1").text
+
+
+@pytest.mark.parametrize(
+    ("figures", "words"),
+    [
+        ((1.0, 0, 0.0, 6.2), "own station"),
+        ((1.0, 0, 0.0, 19.9), "own station"),
+        ((1.0, 0, 0.0, 20.0), "air measured, pressure \u00b120 ft"),
+        ((1.0, 0, 0.0, 210.04), "air measured, pressure \u00b1210 ft"),
+        ((0.0, 3, 0.0, 0.0), "estimated < 1 ft"),
+        ((0.0, 3, 300.0, 400.0), "estimated \u00b1500 ft"),  # 3, 4, 5: a right triangle
+        (
+            (0.4, 2, 30.0, 40.0),
+            "air measured 40 % of hours, else estimated \u00b150 ft, pressure \u00b140 ft",
+        ),
+        ((0.4, 2, 90.0, 6.0), "own station 40 % of hours, else estimated \u00b190 ft"),
+        ((0.0, 0, 0.0, 0.0), "no station"),
+    ],
+)
+def test_air_is_only_as_sure_as_its_pressure(figures, words):
+    assert sure_text(*figures) == words
+
+
+def test_report_says_that_both_errors_are_in_the_estimate(page, result):
+    assert "root sum of squares" in section(page, "overview").text
+    places = numbers_of_fields(page, result)
+    row = rows_by_number(section(page, "overview").all("table")[0])[places["field-2"]]
+    # hypot(172.0, 66.4) = 184.4
+    assert "estimated \u00b1180 ft" in row[-1].text
+
+
+def test_missing_interval_of_a_season_is_a_mark_that_the_legend_explains(result):
+    few = result.risk_seasonal.assign(ci_low=np.nan, ci_high=np.nan, n_years=3)
+    made = section(Page(render_report(replace(result, risk_seasonal=few))), "aircraft-1")
+    rows = rows_by_number(made.all("table")[0])
+    shown = {s.text for cells in rows.values() for c in cells[12:16] for s in c.all("small")}
+    assert shown == {"\u2013"}
+    assert (
+        "\u2013 below a season: no interval, from fewer than 5 years"
+        in made.all("ul", "key")[0].text
+    )
+    full = section(Page(render_report(result)), "aircraft-1").all("ul", "key")[0]
+    assert "no interval" not in full.text
+
+
+def test_season_that_lacks_a_month_is_marked(result):
+    # In the sample field 1 has no February and no April; its other seasons have no days told.
+    for days, marked in (
+        (["12-15", "02-10"], True),
+        (["03-01", "05-31"], True),
+        (["05-01", "01-31"], False),
+        (["03-20", "03-10"], True),
+    ):
+        told = replace(result, settings=result.settings | {"seasons": {"JJA": days}})
+        made = Page(render_report(told))
+        places = numbers_of_fields(made, result)
+        for name, tables in (("aircraft-1", 1), ("air", 3)):
+            for table in section(made, name).all("table")[:tables]:
+                for field, row in rows_by_number(table).items():
+                    signs = [len(cell.all("span", "gap")) for cell in row[12:16]]
+                    here = marked and field == places["field-1"]
+                    assert signs == [0, 0, int(here), 0], (days, name, field)
+            text = section(made, name).text
+            assert ("\u2020 a month of this season has no data" in text) == marked
+
+
+def test_few_seasons_have_a_short_heading_and_a_wide_column(result):
+    for count, head, wide in ((1, "Season", True), (2, "Season", True), (4, "Season: ", False)):
+        seasonal = result.risk_seasonal
+        seasonal = seasonal[seasonal["season"].isin(SEASONS[:count])]
+        air = result.distributions_seasonal
+        air = air[air["season"].isin(SEASONS[:count])]
+        changed = replace(result, risk_seasonal=seasonal, distributions_seasonal=air)
+        table = section(Page(render_report(changed)), "aircraft-1").all("table")[0]
+        top = table.all("thead")[0].all("tr")[0].all("th", "first")[0].text
+        assert top == head if wide else top.startswith(head)
+        assert bool(table.all("col", "wide")) == wide
+        assert "90 % interval" in table.all("caption")[0].text
+
+
+def test_low_coverage_and_years_are_explained(page, result):
+    words = section(page, "overview").text
+    assert "Years: those with any hour that enters" in words
+    assert "told below 80 %" in words
+    whole = result.risk_monthly.assign(coverage=0.8)
+    made = Page(render_report(replace(result, risk_monthly=whole)))
+    assert "overage" not in section(made, "overview").text
+    assert "coverage" not in section(made, "aircraft-1").text
+
+
+def test_field_with_few_months_is_not_told_as_one_that_never_falls_short(result):
+    shares = dict.fromkeys(range(2, 13), math.nan) | {1: 0.0}
+    risk = result.risk_monthly.copy()
+    own = risk["field"] == "field-0"
+    risk.loc[own, "shortfall"] = risk.loc[own, "month"].map(shares)
+    made = Page(render_report(replace(result, risk_monthly=risk)))
+    places = numbers_of_fields(made, result)
+    cell = rows_by_number(section(made, "aircraft-1").all("table")[0])[places["field-0"]][-1]
+    assert main_text(cell) == "none falls short in 1 known month"
+
+
+def test_equal_names_are_told_apart_by_their_ids(result):
+    alike = ("Same", "Same ", "same", "Same\u200b", "Other", "Meadow 5")
+    fields = tuple(replace(f, name=n) for f, n in zip(result.fields, alike, strict=True))
+    aircraft = tuple(replace(profile, name="Alike") for profile in result.aircraft)
+    made = Page(render_report(replace(result, fields=fields, aircraft=aircraft)))
+    for table in made.root.all("table", "periods") + made.root.all("table", "overview"):
+        heads = [row.all("th")[0].all("bdi")[0].text for row in table.all("tbody")[0].all("tr")]
+        assert len({" ".join(h.split()).casefold() for h in heads}) == 6
+        assert sum("Same (field-" in head for head in heads) == 2
+    heads = [section(made, f"aircraft-{n}").all("h2")[0].all("bdi")[0].text for n in (1, 2)]
+    assert heads == ["Alike (aircraft-0)", "Alike (aircraft-1)"]
+
+
 # Safety
 
 
@@ -318,8 +503,7 @@ def test_no_text_of_the_data_becomes_markup(page, text):
 
 def test_hostile_texts_are_shown_as_they_are(page, result):
     shown = {b.text for b in page.root.all("bdi")}
-    for field in result.fields:
-        assert field.name in shown
+    assert set(field_labels(result)) <= shown
     assert LONG_NAME in shown
     assert result.title in shown
     assert HOSTILE[1] in shown  # an attribution
@@ -485,7 +669,7 @@ def test_rounding_never_flatters():
     assert distance_text(8.4) == "8.4 km"
     assert distance_text(math.nan) == "no data"
     assert hours_text(359.99).startswith("359")
-    assert error_text(0.4) == "< 1 ft"
+    assert error_text(0.4) == error_text(0.5) == error_text(0.99) == "< 1 ft"
     assert error_text(118.4) == "\u00b1120 ft"
 
 

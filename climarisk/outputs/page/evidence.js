@@ -46,9 +46,6 @@ function airText(field) {
   return "Air " + how + "; pressure " + errorText(estimate.pressure_error_ft) + " (1 sd).";
 }
 
-// From this many feet on the doubt about the pressure is told in the list as well.
-const PRESSURE_TOLD_FT = 20;
-
 // The short form for the list; null where everything is the station's own.
 function estimateMark(field) {
   const [estimate] = field.estimate;
@@ -58,7 +55,7 @@ function estimateMark(field) {
     parts.push(
       (estimate.own_station > 0 ? "partly estimated " : "estimated ") + errorText(estimate.transfer_error_ft),
     );
-  if (estimate.pressure_error_ft >= PRESSURE_TOLD_FT)
+  if (estimate.pressure_error_ft >= STUDY.pressureToldFt)
     parts.push("pressure " + errorText(estimate.pressure_error_ft));
   return parts.length ? el("span", { class: "estimated" }, parts.join(", ")) : null;
 }

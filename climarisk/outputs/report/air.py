@@ -7,14 +7,15 @@ import numpy as np
 from climarisk.outputs.report.aircraft import MOST_CHARTS, limit_sentence
 from climarisk.outputs.report.charts import air_chart, feet_scale
 from climarisk.outputs.report.data import N_MONTHS, PERCENTILES, ranked, worst
-from climarisk.outputs.report.key import chart_card
+from climarisk.outputs.report.key import chart_card, gap_words
 from climarisk.outputs.report.tables import (
     Sheet,
     altitude_tables,
+    gaps,
     humidity_tables,
     saturation_tables,
 )
-from climarisk.outputs.report.words import Html, el, elevation_text, isolated
+from climarisk.outputs.report.words import Html, el, elevation_text, given, isolated
 from climarisk.outputs.texts import MONTH_NAMES, NO_DATA, altitude_text
 from climarisk.units import METRES_PER_FOOT
 
@@ -29,12 +30,19 @@ def air_section(sheet: Sheet) -> Html:
         el("h2", "Density altitude and humidity"),
         el("p", _lead(sheet, high, order), class_="lead"),
         _charts(sheet, order),
+        el("p", f"{gap_words()}.", class_="quiet") if _lacks_months(sheet) else None,
         altitude_tables(sheet, order),
         humidity_tables(sheet, order),
         saturation_tables(sheet, order),
         class_="sheet",
         id="air",
     )
+
+
+def _lacks_months(sheet: Sheet) -> bool:
+    figures = sheet.figures
+    shown = figures.altitude["p90"], figures.humidity["p50"], figures.saturation["share_2_5k"]
+    return gaps(figures, *shown)
 
 
 def _lead(sheet: Sheet, high: np.ndarray, order: list[int]) -> list[object]:
@@ -44,7 +52,7 @@ def _lead(sheet: Sheet, high: np.ndarray, order: list[int]) -> list[object]:
     field = sheet.result.fields[order[0]]
     return [
         "Highest: ",
-        el("b", el("bdi", field.name), f" in {MONTH_NAMES[month]}"),
+        el("b", given(sheet.fields[order[0]]), f" in {MONTH_NAMES[month]}"),
         f", where one hour in ten exceeds {altitude_text(float(high[order[0], month]))} at an "
         f"elevation of {elevation_text(field.elevation_m)}. Fields are ranked by the highest "
         "90th percentile of a month.",
@@ -63,10 +71,9 @@ def _charts(sheet: Sheet, order: list[int]) -> list[Html]:
     cards = []
     for f in shown:
         top = worst(feet[2][f]) or 0  # every field shown has one
-        field = sheet.result.fields[f]
         title = (
-            f"{isolated(field.name)}: density altitude and relative humidity by month, highest "
-            f"90th percentile {altitude_text(float(feet[2][f][top]))} in {MONTH_NAMES[top]}"
+            f"{isolated(sheet.fields[f])}: density altitude and relative humidity by month, "
+            f"highest 90th percentile {altitude_text(float(feet[2][f][top]))} in {MONTH_NAMES[top]}"
         )
         own = ([v[f] for v in feet], [v[f] for v in humid])
         cards.append(chart_card(sheet, f, air_chart(*own, float(ground[f]), steps, title)))

@@ -11,9 +11,10 @@ from climarisk.aircraft import AircraftProfile, PerformanceTable
 from climarisk.outputs.report.charts import share_chart, share_top
 from climarisk.outputs.report.data import N_MONTHS, ranked, worst
 from climarisk.outputs.report.key import band_key, chart_card
-from climarisk.outputs.report.tables import Sheet, interval_at, shortfall_tables
+from climarisk.outputs.report.tables import Sheet, shortfall_tables
 from climarisk.outputs.report.words import Html, count_text, el, given, isolated, unbroken
-from climarisk.outputs.texts import MONTH_NAMES, NO_DATA, band_labels, grouped, share_text
+from climarisk.outputs.report.worst import Worst, worst_of
+from climarisk.outputs.texts import NO_DATA, band_labels, grouped, months_text, share_text
 
 #: So many charts find room; the tables hold every field.
 MOST_CHARTS = 12
@@ -43,7 +44,7 @@ def _section(sheet: Sheet, aircraft: int) -> Html:
     return el(
         "section",
         el("p", title, class_="kicker"),
-        el("h2", given(profile.name), " " if scaled else None, scaled),
+        el("h2", given(sheet.aircraft[aircraft]), " " if scaled else None, scaled),
         _facts(profile),
         el("ul", said, class_="said") if said else None,
         el("p", summary(sheet, aircraft), class_="lead"),
@@ -59,38 +60,44 @@ def summary(sheet: Sheet, aircraft: int) -> list[object]:
     """The worst month of an aircraft and how many fields it can use all year, in two sentences."""
     shares = sheet.figures.shares[:, aircraft]
     order = ranked(shares)
-    month = worst(shares[order[0]]) if len(order) else None
-    if month is None:
+    there = worst_of(sheet.figures, int(order[0]), aircraft) if len(order) else None
+    if there is None:
         return ["There is no data for this aircraft at any field: this does not mean no risk."]
-    field = int(order[0])
-    share = float(shares[field, month])
-    if share == 0.0:
+    if there.share == 0.0:
         first: list[object] = ["No hour with data falls short at any field."]
     else:
-        limit = str(sheet.figures.limiting[field, aircraft, month])
-        interval = interval_at(sheet.figures, field, aircraft, month)
+        few = there.interval.startswith("too")
         first = [
             "Worst: ",
-            el("b", given(sheet.result.fields[field].name), f" in {MONTH_NAMES[month]}"),
+            el("b", given(sheet.fields[int(order[0])]), f" in {_when(there)}"),
             ", ",
-            unbroken(share_text(share)),
+            unbroken(share_text(there.share)),
             " of the hours fall short (",
-            unbroken(interval),
+            f"{there.interval} for an interval" if few else unbroken(there.interval),
             ")",
-            f", limited most often by {limit}." if limit else ".",
+            f", limited most often by {' or '.join(there.limits)}." if there.limits else ".",
         ]
     return [*first, " ", *_all_year(sheet, shares)]
 
 
+def _when(there: Worst) -> str:
+    return months_text(there.months)
+
+
 def _all_year(sheet: Sheet, shares: np.ndarray) -> list[object]:
+    """How many fields stay in the lowest band all year; a steep one is never counted as such."""
     highest = np.where(np.isnan(shares), -1.0, shares).max(axis=1)
     gaps = np.isnan(shares).any(axis=1)
-    low = int(((highest >= 0.0) & (highest < sheet.edges[0]) & ~gaps).sum())
+    steep = np.array([field.is_steep for field in sheet.result.fields])
+    low = int(((highest >= 0.0) & (highest < sheet.edges[0]) & ~gaps & ~steep).sum())
     part = int((gaps & (highest >= 0.0)).sum())
     none = int((highest < 0.0).sum())
     many = f"{grouped(low)} of {count_text(len(shares), 'field')}" if low else "No field"
     verb = "stay" if low > 1 else "stays"
     rest = " in every month"
+    if steep.any():
+        ones = count_text(int(steep.sum()), "steep one needs", "steep ones need")
+        rest += f"; {ones} a procedure of {'its' if steep.sum() == 1 else 'their'} own"
     if part:
         rest += f"; {count_text(part, 'field')} {'lacks' if part == 1 else 'lack'} some months"
     rest += f"; {count_text(none, 'field')} without data." if none else "."
@@ -121,7 +128,7 @@ def _masses(profile: AircraftProfile) -> str:
 
 
 def _kg(mass: float) -> str:
-    return f"{grouped(round(mass))} kg"
+    return f"{grouped(round(mass))}\N{NO-BREAK SPACE}kg"
 
 
 def _figures(profile: AircraftProfile, operation: str, policy: str) -> str:
@@ -169,9 +176,9 @@ def _charts(sheet: Sheet, aircraft: int, order: Sequence[int]) -> list[Html]:
     top = share_top(np.fmax(parts[0], parts[2])[shown])
     cards = []
     for f in shown:
-        month = worst(parts[0][f]) or 0  # every field shown has one
-        name = isolated(sheet.result.fields[f].name)
-        highest = f"{share_text(float(parts[0][f][month]))} in {MONTH_NAMES[month]}"
+        name = isolated(sheet.fields[f])
+        worst_there = worst_of(figures, f, aircraft)
+        highest = worst_there and f"{share_text(worst_there.share)} in {_when(worst_there)}"
         title = f"{name}: share of hours short by month, highest {highest}"
         picture = share_chart(tuple(p[f] for p in parts), sheet.edges, top, title)
         cards.append(chart_card(sheet, f, picture))

@@ -5,7 +5,7 @@ A period is a month (the first twelve) or a named season (those after them).
 
 from __future__ import annotations
 
-from collections.abc import Sequence
+from collections.abc import Mapping, Sequence
 from dataclasses import dataclass
 from typing import Any
 
@@ -17,7 +17,7 @@ from climarisk.results import StudyResult
 
 N_MONTHS = len(MONTHS)
 PERCENTILES = ("p10", "p50", "p90")
-_RISK = ("shortfall", "ci_low", "ci_high", "outside_table", "usable_hours", "n_years")
+_RISK = ("shortfall", "ci_low", "ci_high", "outside_table", "usable_hours", "n_years", "coverage")
 
 
 @dataclass(frozen=True)
@@ -27,8 +27,11 @@ class Figures:
     Parameters
     ----------
     seasons : tuple of str
+    season_months : tuple of tuple of int
+        Places (0-11) of the months that each season touches; none where they are not told.
     risk : dict of str to ndarray, shape (n_fields, n_aircraft, 12 + n_seasons)
-        ``shortfall, ci_low, ci_high, outside_table`` (0-1), ``usable_hours``, ``n_years``.
+        ``shortfall, ci_low, ci_high, outside_table, coverage`` (0-1), ``usable_hours``,
+        ``n_years``.
     limiting : ndarray of str, same shape
         Empty where nothing limits.
     altitude, humidity : dict of str to ndarray, shape (n_fields, 12 + n_seasons)
@@ -42,6 +45,7 @@ class Figures:
     """
 
     seasons: tuple[str, ...]
+    season_months: tuple[tuple[int, ...], ...]
     risk: dict[str, np.ndarray]
     limiting: np.ndarray
     altitude: dict[str, np.ndarray]
@@ -59,6 +63,18 @@ class Figures:
     def names(self) -> tuple[str, ...]:
         """Full names of the periods."""
         return (*MONTH_NAMES, *self.seasons)
+
+    def lacks_month(self, values: np.ndarray, period: int) -> bool:
+        """Whether a season has a figure although one of its months has none.
+
+        Parameters
+        ----------
+        values : ndarray, shape (12 + n_seasons,)
+        period : int
+        """
+        if period < N_MONTHS or np.isnan(values[period]):
+            return False
+        return bool(np.isnan(values[list(self.season_months[period - N_MONTHS])]).any())
 
 
 def figures(result: StudyResult) -> Figures:
@@ -87,6 +103,7 @@ def figures(result: StudyResult) -> Figures:
     order = ranked(numbers["shortfall"][:, :, :N_MONTHS])
     return Figures(
         seasons,
+        tuple(_months_of(name, result.settings["seasons"]) for name in seasons),
         numbers,
         risk.texts("limiting"),
         air("density_altitude"),
@@ -95,6 +112,17 @@ def figures(result: StudyResult) -> Figures:
         order,
         np.argsort(order) + 1,
     )
+
+
+def _months_of(season: str, told: Mapping[str, Sequence[str]]) -> tuple[int, ...]:
+    """Places of the months between the first and the last day of a season, as ``MM-DD``."""
+    if season not in told:
+        return ()
+    (first, start), (last, end) = (map(int, day.split("-")) for day in told[season])
+    span = (last - first) % N_MONTHS + 1
+    if last == first and end < start:
+        span = N_MONTHS  # round the year, back into the month it began in
+    return tuple((first - 1 + n) % N_MONTHS for n in range(span))
 
 
 def ranked(values: np.ndarray) -> np.ndarray:
@@ -112,7 +140,7 @@ def ranked(values: np.ndarray) -> np.ndarray:
 
 
 def worst(values: np.ndarray) -> int | None:
-    """Place of the highest value; None without any.
+    """Place of the highest value, the first of equal ones; None without any.
 
     Parameters
     ----------

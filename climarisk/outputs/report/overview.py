@@ -6,7 +6,7 @@ import numpy as np
 
 from climarisk.outputs.report.aircraft import summary
 from climarisk.outputs.report.charts import month_strip, strip_months
-from climarisk.outputs.report.key import band_key
+from climarisk.outputs.report.key import band_key, record_words
 from climarisk.outputs.report.sketch import fields_sketch
 from climarisk.outputs.report.tables import Sheet, overview_tables
 from climarisk.outputs.report.words import Html, count_text, el, given, isolated
@@ -50,6 +50,7 @@ def overview_section(sheet: Sheet) -> Html:
         el("div", _glance(sheet), _sketch(sheet), class_="two"),
         el("h2", "Where and when"),
         band_key(sheet, samples=True),
+        el("p", record_words(sheet), class_="quiet"),
         overview_tables(sheet, _BESIDE, _strips(sheet), strip_months()),
         _contents(sheet),
         class_="sheet",
@@ -59,8 +60,8 @@ def overview_section(sheet: Sheet) -> Html:
 
 def _glance(sheet: Sheet) -> Html:
     items = [
-        el("li", el("h3", given(profile.name)), el("p", summary(sheet, a)))
-        for a, profile in enumerate(sheet.result.aircraft)
+        el("li", el("h3", given(name)), el("p", summary(sheet, a)))
+        for a, name in enumerate(sheet.aircraft)
     ]
     return el("div", el("h2", "At a glance"), el("ul", items, class_="glance"))
 
@@ -93,8 +94,8 @@ def _strips(sheet: Sheet):
 
 def _contents(sheet: Sheet) -> Html:
     links = [
-        el("li", el("a", isolated(profile.name), href=f"#aircraft-{a + 1}"))
-        for a, profile in enumerate(sheet.result.aircraft)
+        el("li", el("a", isolated(name), href=f"#aircraft-{a + 1}"))
+        for a, name in enumerate(sheet.aircraft)
     ]
     links.append(el("li", el("a", "Density altitude and humidity", href="#air")))
     links.append(el("li", el("a", "Method, sources and cautions", href="#sources")))

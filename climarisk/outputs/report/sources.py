@@ -43,10 +43,10 @@ def sources_section(sheet: Sheet) -> Html:
         _sureness(sheet),
         el("h3", "Stations"),
         _stations(sheet),
-        el("h3", "Findings"),
-        _findings(sheet),
         el("h3", "Data and credits"),
         el("ul", [el("li", line) for line in _credits(result)], class_="prose"),
+        el("h3", "Findings"),
+        _findings(sheet),
         class_="sheet",
         id="sources",
     )
@@ -68,9 +68,7 @@ def _field_cell(sheet: Sheet, place: int, rows: int = 1) -> Html:
     n = el("span", str(sheet.figures.numbers[place]), class_="no")
     span = {"rowspan": rows} if rows > 1 else {}
     scope = "rowgroup" if rows > 1 else "row"
-    return el(
-        "th", n, " ", given(sheet.result.fields[place].name), scope=scope, class_="place", **span
-    )
+    return el("th", n, " ", given(sheet.fields[place]), scope=scope, class_="place", **span)
 
 
 def _settings(settings: Mapping[str, Any]) -> Html:
@@ -109,9 +107,11 @@ def _sureness(sheet: Sheet) -> Html:
         cells.append(pressure.get(field, NO_DATA))
         rows.append(el("tr", _field_cell(sheet, f), [el("td", text) for text in cells]))
     heads = ("Field", "Air", "Stations", "Error learned from", "Pressure error", "Pressure from")
-    return _table(
-        "sureness", "Errors are one standard deviation, in feet of density altitude", heads, rows
+    caption = (
+        "Errors are one standard deviation, in feet of density altitude; that of estimated air is "
+        "the root sum of squares of temperature and pressure"
     )
+    return _table("sureness", caption, heads, rows)
 
 
 def _sure_cells(row: Mapping[str, Any]) -> list[str]:
@@ -121,7 +121,7 @@ def _sure_cells(row: Mapping[str, Any]) -> list[str]:
     hidden = int(row["verified_stations"])
     learned = f"{count_text(hidden, 'station')} hidden" if hidden else "planning values"
     return [
-        sure_text(own, stations, float(row["transfer_error_ft"])),
+        sure_text(own, stations, float(row["transfer_error_ft"]), float(row["pressure_error_ft"])),
         str(stations) if stations else "own",
         learned if stations else "–",
         error_text(float(row["pressure_error_ft"])),
@@ -211,7 +211,7 @@ def _subject(sheet: Sheet, places: Mapping[str, int], finding: Finding) -> list[
     if place is None:
         return [finding.subject, " ", given(finding.id)]
     number = f"field {sheet.figures.numbers[place]} "
-    return [number, given(sheet.result.fields[place].name)]
+    return [number, given(sheet.fields[place])]
 
 
 def _credits(result: StudyResult) -> list[object]:

@@ -5,12 +5,12 @@ from __future__ import annotations
 import math
 from collections.abc import Callable, Sequence
 from dataclasses import dataclass
+from functools import cached_property
 
 import numpy as np
 
-from climarisk.fields import STEEP_SLOPE_PCT, Field
 from climarisk.outputs.colours import MOST_EDGES
-from climarisk.outputs.report.data import N_MONTHS, PERCENTILES, Figures, worst
+from climarisk.outputs.report.data import N_MONTHS, PERCENTILES, Figures
 from climarisk.outputs.report.words import (
     Html,
     count_text,
@@ -23,14 +23,18 @@ from climarisk.outputs.report.words import (
     own_share_text,
     scroll,
 )
+from climarisk.outputs.report.worst import coverage_text, interval_words, worst_of
 from climarisk.outputs.texts import (
     MONTH_NAMES,
     MONTHS,
     NO_DATA,
+    PRESSURE_TOLD_FT,
+    aircraft_labels,
     altitude_text,
     band_of,
-    interval_text,
+    field_labels,
     share_text,
+    short_months,
 )
 from climarisk.results import StudyResult
 from climarisk.rules import YEARS
@@ -39,8 +43,10 @@ from climarisk.rules import YEARS
 _BESIDE_MONTHS, _ALONE = 5, 12
 #: A table of so many fields stays on one page.
 _WHOLE = 16
-#: A share of hours outside the table is told beside the limiting check from here on.
-_TOLD_OUTSIDE = 0.01
+#: With fewer seasons than this their columns are too narrow for a long heading above them.
+_FEW_SEASONS = 3
+#: In place of an interval in a narrow cell, and beside a season that lacks a month.
+NO_INTERVAL_MARK, GAP_MARK = "\N{EN DASH}", "\N{DAGGER}"
 #: Beside the name of a field with a runway that needs a site-specific procedure.
 STEEP_MARK = "steep"
 NO_CELL = el("td", NO_DATA, class_="none")
@@ -59,6 +65,16 @@ class Sheet:
     result: StudyResult
     figures: Figures
 
+    @cached_property
+    def fields(self) -> list[str]:
+        """What each field is called, no two alike."""
+        return field_labels(self.result)
+
+    @cached_property
+    def aircraft(self) -> list[str]:
+        """What each aircraft is called, no two alike."""
+        return aircraft_labels(self.result)
+
     @property
     def edges(self) -> Sequence[float]:
         """Edges of the bands, as many as there are colours for."""
@@ -68,11 +84,6 @@ class Sheet:
     def confidence(self) -> str:
         """The confidence of the intervals, as ``90 %``."""
         return f"{round(float(self.result.settings['confidence']) * 100, 2):g} %"
-
-
-def is_steep(field: Field) -> bool:
-    """Whether any runway direction needs a site-specific procedure."""
-    return any(abs(way.slope_pct) > STEEP_SLOPE_PCT for way in field.runways)
 
 
 def field_head(sheet: Sheet, place: int, *lines: object, slope: bool = True) -> Html:
@@ -88,32 +99,48 @@ def field_head(sheet: Sheet, place: int, *lines: object, slope: bool = True) -> 
     """
     field = sheet.result.fields[place]
     rest = [(" ", el("small", line)) for line in lines]
-    if slope and is_steep(field):
+    if slope and field.is_steep:
         rest.append((" ", el("small", STEEP_MARK, class_="mark")))
     n = el("span", str(sheet.figures.numbers[place]), class_="no")
-    label = el("span", n, " ", given(field.name), class_="label")
+    label = el("span", n, " ", given(sheet.fields[place]), class_="label")
     return el("th", label, rest, scope="row", class_="place")
 
 
-def sure_text(own_station: float, stations: int, error_ft: float) -> str:
-    """How sure the air of a field is, in a few words."""
-    if own_station >= 1.0:
-        return "own station"
+def sure_text(own_station: float, stations: int, error_ft: float, pressure_ft: float) -> str:
+    """How sure the air of a field is, in a few words.
+
+    Parameters
+    ----------
+    own_station : float
+        Share of its hours from a station on the spot, 0-1.
+    stations : int
+        Stations that the others are estimated from.
+    error_ft, pressure_ft : float
+        One standard deviation of the density altitude from the estimated temperature and from
+        the pressure; an estimate is told with the root sum of squares of both.
+    """
     if own_station <= 0.0 and not stations:
         return "no station"
-    estimated = f"estimated {error_text(error_ft)}"
+    estimated = f"estimated {error_text(math.hypot(error_ft, pressure_ft))}"
     if own_station <= 0.0:
         return estimated
-    return f"own station {own_share_text(own_station)} of hours, else {estimated}"
+    told = f", pressure {error_text(pressure_ft)}" if pressure_ft >= PRESSURE_TOLD_FT else ""
+    if own_station >= 1.0:
+        return f"air measured{told}" if told else "own station"
+    own = f"{'air measured' if told else 'own station'} {own_share_text(own_station)} of hours"
+    return f"{own}, else {estimated}{told}"
 
 
 def sure_texts(result: StudyResult) -> dict[str, str]:
     """How sure the air of each field is, by its id."""
-    table = result.estimates
-    columns = (table[c] for c in ("field", "own_station", "stations", "transfer_error_ft"))
     return {
-        str(field): sure_text(float(own), int(stations), float(error_ft))
-        for field, own, stations, error_ft in zip(*columns, strict=True)
+        str(row["field"]): sure_text(
+            float(row["own_station"]),
+            int(row["stations"]),
+            float(row["transfer_error_ft"]),
+            float(row["pressure_error_ft"]),
+        )
+        for row in result.estimates.to_dict("records")
     }
 
 
@@ -164,15 +191,28 @@ def period_tables(
             _columns(periods, end is not None),
             _head(sheet, periods, heads[1:], end and end[0]),
             el("tbody", rows),
-            class_="periods whole" if len(order) <= _WHOLE else "periods",
+            class_=" ".join(_kinds(len(order), len(periods), end is not None)),
         )
         tables.append(scroll(table, "Table by month and season"))
     return tables
 
 
+def _kinds(rows: int, columns: int, last: bool) -> list[str]:
+    """The classes of a table: on one page where it is short, smaller where it is crowded."""
+    kinds = ["periods"]
+    if rows <= _WHOLE:
+        kinds.append("whole")
+    if columns >= N_MONTHS + _BESIDE_MONTHS and not last:
+        kinds.append("tight")
+    return kinds
+
+
 def _columns(periods: Sequence[int], last: bool) -> Html:
     """The widths of the columns."""
-    kinds = ["month" if p < N_MONTHS else "season" for p in periods]
+    beside = sum(p >= N_MONTHS for p in periods)
+    # Without a last column the seasons are as wide as the months.
+    season = ("season wide" if beside < _FEW_SEASONS else "season") if last else "even"
+    kinds = ["month" if p < N_MONTHS else season for p in periods]
     names = ["field", *kinds, *(["last"] if last else [])]
     return el("colgroup", [el("col", class_=name) for name in names])
 
@@ -200,23 +240,36 @@ def _head(
 # Shortfall
 
 
-def interval_mark(low: float, high: float, years: float) -> str:
-    """An interval with a star where it rests on few years."""
-    if math.isnan(low) or math.isnan(high):
-        return "no interval"
-    return interval_text(low, high) + ("*" if years < YEARS.settled_interval else "")
-
-
 def few_years(figures: Figures) -> bool:
     """Whether any interval rests on few years."""
     few = figures.risk["n_years"] < YEARS.settled_interval
     return bool((few & ~np.isnan(figures.risk["ci_low"])).any())
 
 
-def interval_at(figures: Figures, field: int, aircraft: int, period: int) -> str:
-    """The interval of one cell."""
-    at = (field, aircraft, period)
-    return interval_mark(*(float(figures.risk[c][at]) for c in ("ci_low", "ci_high", "n_years")))
+def missing_intervals(figures: Figures) -> bool:
+    """Whether any season with a share has no interval."""
+    share, low = (figures.risk[name][:, :, N_MONTHS:] for name in ("shortfall", "ci_low"))
+    return bool((np.isnan(low) & ~np.isnan(share)).any())
+
+
+def gaps(figures: Figures, *values: np.ndarray) -> bool:
+    """Whether any season has a figure although one of its months has none.
+
+    Parameters
+    ----------
+    *values : ndarray, shape (..., 12 + n_seasons)
+    """
+    periods = range(N_MONTHS, N_MONTHS + len(figures.seasons))
+    rows = (row for table in values for row in table.reshape(-1, table.shape[-1]))
+    return any(figures.lacks_month(row, period) for row in rows for period in periods)
+
+
+def _season_interval(figures: Figures, at: tuple[int, int, int]) -> str:
+    """The interval below the share of a season; a dash without one."""
+    low, high, years = (float(figures.risk[c][at]) for c in ("ci_low", "ci_high", "n_years"))
+    if math.isnan(low) or math.isnan(high):
+        return NO_INTERVAL_MARK
+    return interval_words(low, high, years).replace(" %", "")
 
 
 def shortfall_tables(sheet: Sheet, aircraft: int, order: Sequence[int]) -> list[Html]:
@@ -232,43 +285,43 @@ def shortfall_tables(sheet: Sheet, aircraft: int, order: Sequence[int]) -> list[
         below = (
             hours_text(usable[field][period])
             if period < N_MONTHS
-            else interval_at(figures, field, aircraft, period).replace(" %", "")
+            else _season_interval(figures, (field, aircraft, period))
         )
+        gap = _gap_mark(figures, figures.risk["shortfall"][field, aircraft], period)
         kind = f"b{band_of(share, sheet.edges)}" + (" first" if period == N_MONTHS else "")
-        return el("td", number(share), " ", el("small", below), class_=kind)
+        return el("td", number(share), gap, " ", el("small", below), class_=kind)
 
     def last(field: int) -> Html:
         return _worst_cell(sheet, aircraft, field)
 
+    few = len(figures.seasons) < _FEW_SEASONS
     heads = (
-        "Share of hours that fall short, fields ranked by their worst month",
-        (given(sheet.result.aircraft[aircraft].name), ": share short in %, usable hours"),
-        f"Season: share in %, {sheet.confidence} interval",
+        "Share of hours that fall short, fields ranked by their worst month; "
+        f"below a season’s share its {sheet.confidence} interval",
+        (given(sheet.aircraft[aircraft]), ": share short in %, usable hours"),
+        "Season" if few else f"Season: share in %, {sheet.confidence} interval",
     )
     return period_tables(sheet, order, cell, heads, ("Worst month, limited by", last))
 
 
 def _worst_cell(sheet: Sheet, aircraft: int, field: int) -> Html:
     figures = sheet.figures
-    month = worst(figures.shares[field, aircraft])
-    if month is None:
+    worst = worst_of(figures, field, aircraft)
+    if worst is None:
         return el("td", NO_DATA, class_="none end")
-    if figures.shares[field, aircraft, month] == 0.0:
-        return el("td", "none falls short", class_="end")
-    limit = str(figures.limiting[field, aircraft, month])
-    outside = float(figures.risk["outside_table"][field, aircraft, month])
-    beyond = f"{share_text(outside)} outside table" if outside >= _TOLD_OUTSIDE else None
-    what = ", ".join(text for text in (limit, beyond) if text)
-    share = share_text(float(figures.shares[field, aircraft, month]))
-    interval = interval_at(figures, field, aircraft, month)
-    return el(
-        "td",
-        f"{MONTHS[month]} {share} ",
-        el("small", interval),
-        " ",
-        el("small", what),
-        class_="end",
-    )
+    covered = coverage_text([worst.coverage])
+    if worst.share == 0.0:
+        known = int((~np.isnan(figures.shares[field, aircraft])).sum())
+        where = "" if known == N_MONTHS else f" in {count_text(known, 'known month')}"
+        return el("td", f"none falls short{where} ", el("small", covered), class_="end")
+    what = ", ".join(text for text in (" or ".join(worst.limits), worst.outside) if text)
+    small = [el("small", text) for text in (worst.interval, covered, what) if text]
+    first = f"{short_months(worst.months)} {share_text(worst.share)} "
+    return el("td", first, [(part, " ") for part in small], class_="end")
+
+
+def _gap_mark(figures: Figures, values: np.ndarray, period: int) -> Html | None:
+    return el("span", GAP_MARK, class_="gap") if figures.lacks_month(values, period) else None
 
 
 # Air
@@ -282,7 +335,8 @@ def altitude_tables(sheet: Sheet, order: Sequence[int]) -> list[Html]:
         if math.isnan(high[field][period]):
             return NO_CELL
         upper, lower = (altitude_text(v[field][period]).removesuffix(" ft") for v in (high, middle))
-        return el("td", upper, " ", el("small", lower), class_=_edge(period))
+        gap = _gap_mark(sheet.figures, sheet.figures.altitude["p90"][field], period)
+        return el("td", upper, gap, " ", el("small", lower), class_=_edge(period))
 
     heads = (
         "Density altitude, ft: 90th percentile, below it the median",
@@ -300,7 +354,8 @@ def humidity_tables(sheet: Sheet, order: Sequence[int]) -> list[Html]:
         if math.isnan(middle[field][period]):
             return NO_CELL
         text, *ends = (number(v[field][period] / 100.0) for v in (middle, low, high))
-        return el("td", text, " ", el("small", "-".join(ends)), class_=_edge(period))
+        gap = _gap_mark(sheet.figures, sheet.figures.humidity["p50"][field], period)
+        return el("td", text, gap, " ", el("small", "-".join(ends)), class_=_edge(period))
 
     heads = (
         "Relative humidity, %: median, below it the 10th and 90th percentile",
@@ -318,7 +373,8 @@ def saturation_tables(sheet: Sheet, order: Sequence[int]) -> list[Html]:
         if math.isnan(near[field][period]):
             return NO_CELL
         below = el("small", number(nearest[field][period]))
-        return el("td", number(near[field][period]), " ", below, class_=_edge(period))
+        gap = _gap_mark(sheet.figures, sheet.figures.saturation["share_2_5k"][field], period)
+        return el("td", number(near[field][period]), gap, " ", below, class_=_edge(period))
 
     heads = (
         "Near saturation, % of hours: within 2.5 K of the dew point, below it within 1 K",
@@ -358,8 +414,7 @@ def _overview_table(
     result, sure = sheet.result, sure_texts(sheet.result)
     heads = [el("th", "Field", scope="col", class_="field")]
     heads += [
-        el("th", given(result.aircraft[a].name), head, scope="col", class_="plane")
-        for a in aircraft
+        el("th", given(sheet.aircraft[a]), head, scope="col", class_="plane") for a in aircraft
     ]
     heads.append(el("th", "How sure is the air", scope="col", class_="sure"))
     rows = []
@@ -380,30 +435,31 @@ def _overview_table(
 
 
 def _years(figures: Figures, field: int) -> list[object]:
-    """The fewest and the most counting years of the field's months with data."""
-    months = (field, slice(None), slice(N_MONTHS))
-    years = figures.risk["n_years"][months][~np.isnan(figures.risk["shortfall"][months])]
-    if not years.size:
+    """The fewest and the most years with any hour that enters a month, and a low coverage."""
+    known = ~np.isnan(figures.shares[field])
+    if not known.any():
         return []
+    years, coverage = (figures.risk[c][field, :, :N_MONTHS][known] for c in ("n_years", "coverage"))
     least, most = int(years.min()), int(years.max())
     text = count_text(most, "year") if least == most else f"{least}-{most} years"
-    return [" ", el("small", text)]
+    parts = [part for part in (text, coverage_text(coverage.tolist())) if part]
+    return [" ", el("small", ", ".join(parts))]
 
 
 def _overview_cell(
     sheet: Sheet, field: int, aircraft: int, strip: Callable[[int, int], Html]
 ) -> Html:
-    shares = sheet.figures.shares[field, aircraft]
-    month = worst(shares)
-    if month is None:
+    worst = worst_of(sheet.figures, field, aircraft)
+    if worst is None:
         return el("td", NO_DATA, class_="none")
-    share = float(shares[month])
-    when = f"{MONTHS[month]} " if share > 0 else ""
-    gone = int(np.isnan(shares).sum())
+    some = worst.share > 0.0
+    gone = int(np.isnan(sheet.figures.shares[field, aircraft]).sum())
     head = el(
-        "span", when, el("b", number(share), " %"), class_=f"worst b{band_of(share, sheet.edges)}"
+        "span",
+        f"{short_months(worst.months)} " if some else "",
+        el("b", number(worst.share), " %"),
+        class_=f"worst b{band_of(worst.share, sheet.edges)}",
     )
-    interval = interval_at(sheet.figures, field, aircraft, month) if share > 0 else None
     missing = f"{count_text(gone, 'month')} no data" if gone else None
-    small = el("small", ", ".join(t for t in (interval, missing) if t))
+    small = el("small", ", ".join(t for t in (worst.interval if some else None, missing) if t))
     return el("td", head, " ", small, strip(field, aircraft))

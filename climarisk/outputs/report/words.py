@@ -85,7 +85,8 @@ def number(share: float) -> str:
 
 def elevation_text(metres: float) -> str:
     """An elevation in whole feet with whole metres behind."""
-    return f"{grouped(round(metres / METRES_PER_FOOT))} ft ({grouped(round(metres))} m)"
+    feet = f"{grouped(round(metres / METRES_PER_FOOT))} ft"
+    return f"{feet} ({grouped(round(metres))} m)".replace(" ", "\N{NO-BREAK SPACE}")
 
 
 def distance_text(km: float) -> str:
@@ -113,7 +114,7 @@ def error_text(feet: float) -> str:
     """One standard deviation in feet, with two digits."""
     if math.isnan(feet):
         return NO_DATA
-    if feet < 0.5:
+    if feet < 1.0:
         return "< 1 ft"
     return f"±{grouped(round(feet) if feet < 10 else int(float(f'{feet:.2g}')))} ft"
 

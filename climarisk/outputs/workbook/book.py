@@ -17,10 +17,20 @@ import pandas as pd
 from xlsxwriter import Workbook
 
 from climarisk.fields import STEEP_SLOPE_PCT, Field
-from climarisk.outputs.texts import CAUTIONS, MONTHS, NO_DATA, interval_text
+from climarisk.outputs.texts import (
+    CAUTIONS,
+    NO_DATA,
+    aircraft_labels,
+    field_labels,
+    interval_text,
+    invisible,
+    months_text,
+    worst_months,
+)
 from climarisk.outputs.workbook.cells import (
     ERROR,
     MARK,
+    STEEP,
     WHOLE,
     Book,
     Sheet,
@@ -31,13 +41,14 @@ from climarisk.outputs.workbook.cells import (
     utf16_length,
 )
 from climarisk.outputs.workbook.grids import (
-    NO_CHECK,
+    COLOURS,
     NO_INTERVAL,
-    aircraft_labels,
-    field_labels,
+    NO_PASS,
+    few_years,
     hundreds,
     label_width,
     scope,
+    steep_marks,
     whole_feet,
     write_aircraft,
     write_altitude,
@@ -56,6 +67,7 @@ _LONGEST_NAME = 31
 #: Stands in the file in place of the clock, so that the same input gives the same bytes.
 _FIXED_DATE = datetime(2000, 1, 1)
 _MONTH_NUMBERS = tuple(range(1, 13))
+_MONTH_WIDTH, _AIR_WIDTH = 12.0, 29.0
 
 
 def write_workbook(result: StudyResult, path: Path) -> None:
@@ -110,7 +122,8 @@ def sheet_names(names: Sequence[str]) -> list[str]:
     taken = {name.casefold() for name in (SUMMARY, *OTHER_SHEETS, _RESERVED)}
     made = []
     for number, name in enumerate(names, start=1):
-        shown = "".join(c if c.isprintable() else " " for c in re.sub(r"[\[\]:*?/\\]", " ", name))
+        seen = "".join(c for c in name if not invisible(c))
+        shown = "".join(c if c.isprintable() else " " for c in re.sub(r"[\[\]:*?/\\]", " ", seen))
         plain = _trimmed(" ".join(shown.split()), _LONGEST_NAME) or f"Aircraft {number}"
         unique, copy = plain, 1
         while unique.casefold() in taken:
@@ -135,8 +148,8 @@ def _trimmed(name: str, longest: int) -> str:
 
 def _write_summary(book: Book, result: StudyResult) -> None:
     labels = field_labels(result)
-    widths = [label_width(labels), 10.0, 10.0, 10.0, 9.0, 7.5]
-    widths += [7.5, 9.0, 12.0] * len(result.aircraft) + [9.5, 29.0, 9.5, 9.0, 9.5]
+    widths = [label_width(labels), 10.0, 10.0, 10.0, 9.5, 8.5, 11.0]
+    widths += [_MONTH_WIDTH, 9.0, 13.0] * len(result.aircraft) + [_AIR_WIDTH, 9.5, 9.0, 9.5, 9.0]
     sheet = book.sheet(SUMMARY, widths)
     _write_top(sheet, result)
     head = sheet.row - 1
@@ -148,13 +161,16 @@ def _write_summary(book: Book, result: StudyResult) -> None:
         [f.id for f in result.findings if f.subject == "field" and f.severity != "note"], dtype=str
     ).value_counts()
     for at, field in enumerate(result.fields):
-        altitude, *aircraft, air, months = (part[at] for part in columns)
+        *figures, data = (part[at] for part in columns)
         cells: list[Shown] = [(labels[at], book.style("text", bold=True)), (field.id, text)]
         cells += [whole(whole_feet(field.elevation_m)), whole(float(round(field.elevation_m)))]
-        cells += [*altitude, *(cell for part in aircraft for cell in part)]
-        cells += [_steep(book, field), *air, whole(float(cautions.get(field.id, 0))), *months]
+        cells += [_steep(book, field), *(cell for part in figures for cell in part)]
+        cells += [whole(float(cautions.get(field.id, 0))), *data]
         for column, shown in enumerate(cells):
             sheet.cell(column, shown)
+        # Names and ids stay on one line; what is behind them wraps.
+        wrapped = [(c, column) for column, (c, _) in enumerate(cells) if column > 3]
+        sheet.fit([(c, column, column) for c, column in wrapped if isinstance(c, str)])
         sheet.next_row()
     sheet.finish(head, 1)
     sheet.page.activate()
@@ -162,7 +178,6 @@ def _write_summary(book: Book, result: StudyResult) -> None:
 
 def _write_top(sheet: Sheet, result: StudyResult) -> None:
     """Title, scope, caution, legend and the headings."""
-    book = sheet.book
     sheet.line(result.title, "title")
     sheet.line(
         "How often each aircraft falls short of its margins at each field, month by month, from "
@@ -170,48 +185,54 @@ def _write_top(sheet: Sheet, result: StudyResult) -> None:
         "behind them the air, the margins, the method and every caution."
     )
     sheet.line(CAUTIONS[0], "caution")
-    sheet.cell(0, ("Bands of the shortfall share", book.style("label")))
-    sheet.legend(1)
-    after = len(book.labels) + 2
-    note = f"{MARK} interval from fewer than {YEARS.settled_interval} years"
-    sheet.cell(after + 1, (note, book.style("note")))
-    sheet.next_row()
+    sheet.legend("Bands of the shortfall share", 1)
+    few = (
+        f"{MARK} few years: below {YEARS.settled_interval} behind a share (its interval is "
+        f"unsettled, and there is none below {YEARS.interval}), below {YEARS.percentiles} behind "
+        "a percentile."
+    )
+    sheet.line(f"{few} {NO_PASS} {COLOURS}", "note")
     _write_heads(sheet, result)
 
 
 def _write_heads(sheet: Sheet, result: StudyResult) -> None:
     book = sheet.book
     group = book.style("group")
-    column = 6
-    groups = [(0, 3, "Field"), (4, 5, "Highest density altitude, P90")]
+    column = 7
+    groups = [(0, 4, "Field"), (5, 6, "Highest density altitude, P90")]
     for label in aircraft_labels(result):
         groups.append((column, column + 2, label))
         column += 3
-    groups += [(column + 1, column + 2, "How the air is known"), (column + 3, column + 4, "Data")]
-    sheet.cell(column, ("Runways", group))
+    groups += [(column, column + 1, "How the air is known"), (column + 2, column + 4, "Data")]
     for first, last, label in groups:
         sheet.page.merge_range(sheet.row, first, sheet.row, last, "", group)
         sheet.cell(first, (label, group))
-    sheet.page.set_row(sheet.row, 30.0)
+    sheet.fit([(label, first, last) for first, last, label in groups], least=18.0)
     sheet.next_row()
     sure = f"{round(float(result.settings['confidence']) * 100)} % interval"
     sheet.head(
         [
-            *("Field", "Id", "Elevation, ft", "Elevation, m", "ft", "Month"),
+            *("Field", "Id", "Elevation, ft", "Elevation, m", "Steep runway", "ft", "Month"),
             *["Worst month", "Shortfall share", sure] * len(result.aircraft),
-            *("Steep runway", "Air", "Error, ft (1 sd)", "Cautions", "Months with data"),
+            *("Air", "Error, ft (1 sd)", "Cautions", "Months with data", "Years, fewest"),
         ]
     )
 
 
 def _altitude_cells(book: Book, result: StudyResult) -> list[list[Shown]]:
     monthly = result.distributions_monthly
-    feet = _by_month(result, monthly[monthly["variable"] == "density_altitude"], "p90")
-    whole = book.numbers(WHOLE)
-    return [
-        [whole(hundreds(row[at])), _month(book, at)] if at >= 0 else [book.no_data] * 2
-        for row, at in zip(feet, _highest(feet), strict=True)
-    ]
+    air = monthly[monthly["variable"] == "density_altitude"]
+    feet, years = (_by_month(result, air, name) for name in ("p90", "n_years"))
+    few, whole = few_years(years, YEARS.percentiles), book.numbers(WHOLE)
+    cells = []
+    for row, marks in zip(feet, few, strict=True):
+        worst = worst_months(row)
+        if not worst:
+            cells.append([book.no_data] * 2)
+            continue
+        shown = book.marked(whole(hundreds(row[worst[0]])), max(marks[worst]))
+        cells.append([shown, _months(book, worst, row)])
+    return cells
 
 
 def _aircraft_cells(book: Book, result: StudyResult, aircraft: str) -> list[list[Shown]]:
@@ -220,19 +241,31 @@ def _aircraft_cells(book: Book, result: StudyResult, aircraft: str) -> list[list
     share, low, high, years = (
         _by_month(result, risk, name) for name in ("shortfall", "ci_low", "ci_high", "n_years")
     )
+    few, steep = few_years(years, YEARS.settled_interval), steep_marks(result.fields)
     banded, middle = book.banded(), book.style("middle")
     cells = []
-    for row, at in enumerate(_highest(share)):
-        if at < 0:
+    for at, row in enumerate(share):
+        worst = worst_months(row)
+        if not worst:
             cells.append([book.no_data] * 3)
             continue
-        interval = interval_text(low[row, at], high[row, at])
-        if interval != NO_INTERVAL and years[row, at] < YEARS.settled_interval:
-            interval += f" {MARK}"
-        none = (NO_CHECK, middle)
-        month = _month(book, at) if share[row, at] > 0 else none
-        cells.append([month, banded(share[row, at]), (interval, middle)])
+        # Of months that tie the interval that holds those of all; none where one has none.
+        ends = float(low[at, worst].min()), float(high[at, worst].max())
+        mark = max(few[at, worst])
+        interval = NO_INTERVAL if np.isnan(ends).any() else f"{interval_text(*ends)} {mark}".strip()
+        shown = book.marked(banded(row[worst[0]]), mark + steep[at, 0])
+        month = _months(book, worst if row[worst[0]] > 0 else [], row)
+        cells.append([month, shown, (interval, middle)])
     return cells
+
+
+def _months(book: Book, worst: list[int], values: np.ndarray) -> Shown:
+    """The months that are worst, and of how many where some of the twelve have no value."""
+    known = int((~np.isnan(values)).sum())
+    text = months_text(worst) or "no month"
+    if known < len(values):
+        text += f" (of {known} month{'' if known == 1 else 's'})"
+    return text, book.style("middle", text_wrap=True)
 
 
 def _air_cells(book: Book, result: StudyResult) -> list[list[Shown]]:
@@ -242,46 +275,50 @@ def _air_cells(book: Book, result: StudyResult) -> list[list[Shown]]:
     cells = []
     for field in result.fields:
         row = estimates.get(field.id)
-        how = NO_DATA if row is None else air_text(row.own_station, row.stations)
+        how = (
+            NO_DATA
+            if row is None
+            else air_text(row.own_station, row.stations, row.pressure_error_ft)
+        )
         if row is None or how == NO_DATA:
             cells.append([book.no_data] * 2)
             continue
-        error = error_shown(row.transfer_error_ft, row.own_station, row.stations)
-        cells.append([(how, book.style("text")), feet(error)])
+        error = error_shown(
+            row.transfer_error_ft, row.pressure_error_ft, row.own_station, row.stations
+        )
+        cells.append([(how, book.style("text", text_wrap=True)), feet(error)])
     return cells
 
 
 def _data_cells(book: Book, result: StudyResult) -> list[list[Shown]]:
-    """Months with a density altitude and with a share of every aircraft."""
-    monthly = result.distributions_monthly
-    air = monthly[monthly["variable"] == "density_altitude"]
-    known = ~np.isnan(_by_month(result, air, "p90"))
-    for profile in result.aircraft:
-        risk = result.risk_monthly[result.risk_monthly["aircraft"] == profile.id]
-        known &= ~np.isnan(_by_month(result, risk, "shortfall"))
-    whole, fewer = book.numbers(WHOLE), book.numbers(WHOLE, bold=True)
-    return [[(whole if row.all() else fewer)(float(row.sum()))] for row in known]
+    """Months with a density altitude and a share of every aircraft, and their fewest years."""
+    monthly, risk = result.distributions_monthly, result.risk_monthly
+    frames = [(monthly[monthly["variable"] == "density_altitude"], "p90")]
+    frames += [(risk[risk["aircraft"] == one.id], "shortfall") for one in result.aircraft]
+    values = np.array([_by_month(result, frame, name) for frame, name in frames])
+    years = np.array([_by_month(result, frame, "n_years") for frame, _ in frames])
+    known = ~np.isnan(values).any(axis=0)
+    # Infinity stands for a month without data, which has no years to compare.
+    fewest = np.where(np.isnan(values), np.inf, years).min(axis=(0, 2), initial=np.inf)
+    fewest = np.where(np.isfinite(fewest), fewest, np.nan)
+    marks = few_years(fewest, YEARS.settled_interval)
+    whole = book.numbers(WHOLE)
+    cells = []
+    for months, count, mark in zip(known, fewest, marks, strict=True):
+        full = whole(float(months.sum()))
+        shown = full if months.all() else (full[0], book.style("fewer", num_format=WHOLE))
+        cells.append([shown, book.marked(whole(count), mark)])
+    return cells
 
 
 def _steep(book: Book, field: Field) -> Shown:
-    shape = book.style("middle", text_wrap=True)
     if not field.runways:
-        return "no runway", shape
-    steep = any(abs(way.slope_pct) > STEEP_SLOPE_PCT for way in field.runways)
-    return (f"over {STEEP_SLOPE_PCT:g} %" if steep else "no"), book.style("middle", bold=steep)
+        return "no runway", book.style("middle")
+    steep = field.is_steep
+    text = f"over {STEEP_SLOPE_PCT:g} % {STEEP}" if steep else "no"
+    return text, book.style("middle", bold=steep)
 
 
 def _by_month(result: StudyResult, frame: pd.DataFrame, column: str) -> np.ndarray:
     fields = [field.id for field in result.fields]
     return grid(frame, column, ("field", fields), ("month", _MONTH_NUMBERS)).astype(float)
-
-
-def _highest(values: np.ndarray) -> list[int]:
-    """The first column with the highest value of each row; -1 where there is none."""
-    known = ~np.isnan(values)
-    first = np.where(known, values, -np.inf).argmax(axis=1) if len(values) else []
-    return [int(at) if some else -1 for at, some in zip(first, known.any(axis=1), strict=True)]
-
-
-def _month(book: Book, at: int) -> Shown:
-    return MONTHS[at], book.style("middle")

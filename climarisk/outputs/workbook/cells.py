@@ -7,7 +7,8 @@ A cell shows one of three things and never stands empty: a number with a format,
 from __future__ import annotations
 
 import math
-from collections.abc import Callable, Sequence
+import unicodedata
+from collections.abc import Callable, Iterable, Sequence
 from dataclasses import dataclass
 from functools import lru_cache
 from typing import Any
@@ -20,18 +21,19 @@ from xlsxwriter.worksheet import Worksheet
 
 from climarisk.errors import OutputError
 from climarisk.outputs.colours import MOST_EDGES, YLORBR, ink_on
-from climarisk.outputs.texts import NO_DATA, band_labels, band_of
+from climarisk.outputs.texts import NO_DATA, band_labels, band_of, invisible
 
 #: Number formats.  A share above zero and below one per cent never shows as 0 %, and one
 #: below all never as 100 %, where all of it is a claim.
 SHARE = '[=0]0 %;[<0.01]"< 1 %";0 %'
 PART = '[>=1]0 %;[>0.99]"> 99 %";0 %'
-WHOLE = "#,##0;\N{MINUS SIGN}#,##0"
-PERCENT = "0 %;\N{MINUS SIGN}0 %"
+WHOLE = '#,##0;"\N{MINUS SIGN}"#,##0'
+PERCENT = '0 %;"\N{MINUS SIGN}"0 %'
 ERROR = '[<0.5]"< 1";"\N{PLUS-MINUS SIGN}"#,##0'
 TENTH = "0.0"
-#: Stands behind a figure that rests on few years.
-MARK = "\N{DAGGER}"
+#: Stand behind a figure that rests on few years, one of a field with a steep runway, and one of
+#: a season of which a month has no data.
+MARK, STEEP, GAP = "\N{DAGGER}", "\N{DOUBLE DAGGER}", "\N{SECTION SIGN}"
 
 #: The line above the first row of a group.
 EDGE = {"top": 2, "top_color": "#8b96a0"}
@@ -40,7 +42,10 @@ INK, QUIET, LINE, HEAD, GROUND = "#1a2024", "#5b6670", "#cfd6dc", "#dfe5ea", "#e
 _LEADS = frozenset("=+-@\t\r\n\uff1d\uff0b\uff0d\uff20")  # what a spreadsheet may take as a formula
 _LONGEST = 32767  # UTF-16 units in one cell
 _MOST_ROWS = 1_048_576
-_HATCH = 14  # thin diagonal stripes
+_HIGHEST = 400.0  # points; a row cannot be much higher
+_LETTERS = 1.2  # of a text in the width of one digit: proportional letters are narrower
+_CAPITAL = 0.3  # what a capital is broader by
+_HATCHED = {"pattern": 14, "fg_color": "#c3cbd2", "bg_color": "#ffffff"}  # thin diagonal stripes
 _BASE = {"font_size": 10, "valign": "vcenter", "font_color": INK}
 _CELL = {"border": 1, "border_color": LINE}
 
@@ -48,7 +53,7 @@ _STYLES: dict[str, dict[str, Any]] = {
     "title": {"bold": True, "font_size": 16},
     "heading": {"bold": True, "font_size": 12},
     "plain": {"text_wrap": True, "valign": "top"},
-    "note": {"font_color": QUIET},
+    "note": {"font_color": QUIET, "text_wrap": True, "valign": "top"},
     "label": {"bold": True, "valign": "top", "text_wrap": True},
     "caution": {
         **{"text_wrap": True, "bg_color": GROUND, "valign": "vcenter", "indent": 1},
@@ -67,8 +72,9 @@ _STYLES: dict[str, dict[str, Any]] = {
     "number": {"align": "center", **_CELL},
     "none": {
         **{"align": "center", "italic": True, "font_color": QUIET, "shrink": True, **_CELL},
-        **{"pattern": _HATCH, "fg_color": "#c3cbd2", "bg_color": "#ffffff"},
+        **_HATCHED,
     },
+    "fewer": {"align": "center", "bold": True, **_CELL, **_HATCHED},
     "key": {"align": "center", "shrink": True, **_CELL},
 }
 
@@ -79,8 +85,12 @@ Show = Callable[[Any], Shown]
 
 @lru_cache(maxsize=8192)
 def clean(text: str) -> str:
-    """The text as a cell can hold it: forbidden characters replaced, cut to the longest."""
+    """The text as a cell can hold it: forbidden characters replaced, cut to the longest.
+
+    Characters that no reader sees are left out: they turn words around or hide a difference.
+    """
     text = text.replace("\r\n", "\n").replace("\r", "\n")
+    text = "".join(c for c in text if not invisible(c))
     text = "".join(c if _allowed(c) else "\N{REPLACEMENT CHARACTER}" for c in text)
     return cut(text, _LONGEST)
 
@@ -107,6 +117,41 @@ def utf16_length(text: str) -> int:
     return len(text) + sum(c > "\uffff" for c in text)
 
 
+def suffixed(num_format: str, marks: str) -> str:
+    """A number format with marks behind the number in each of its sections."""
+    sections = [
+        f'{part[:-1]} {marks}"' if part.endswith('"') else f'{part}" {marks}"'
+        for part in num_format.split(";")
+    ]
+    return ";".join(sections)
+
+
+def lines_of(text: str, room: float) -> int:
+    """Lines of a text in a column with room for so many letters, broken between words."""
+    lines = 0
+    for part in text.split("\n"):
+        lines, used = lines + 1, 0.0
+        for word in part.split(" "):
+            letters = _columns(word)
+            if used and used + 1 + letters <= room:
+                used += 1 + letters
+                continue
+            # A word longer than a line is broken within.
+            more = max(0, math.ceil(letters / room) - 1)
+            lines += more + (1 if used else 0)
+            used = letters - more * room
+    return lines
+
+
+def _columns(word: str) -> float:
+    """Width of a word in small letters: capitals are broader, wide characters twice as wide."""
+    broad = sum(c.isupper() for c in word) * _CAPITAL
+    if word.isascii():
+        return len(word) + broad
+    # Unicode Standard Annex 11, East Asian Width.
+    return sum(2 if unicodedata.east_asian_width(c) in "WF" else 1 for c in word) + broad
+
+
 class Book:
     """The workbook with the classes of its shares and formats that are made once each."""
 
@@ -118,6 +163,7 @@ class Book:
         self.title = " ".join(clean(title).split())
         self._formats: dict[tuple[Any, ...], Format] = {}
         self._keys: dict[Format, tuple[Any, ...]] = {}
+        self._marked: dict[tuple[Format, str], Format] = {}
 
     def style(self, name: str, **more: Any) -> Format:
         """The format of a named style with further properties."""
@@ -140,7 +186,7 @@ class Book:
     def numbers(self, num_format: str, **more: Any) -> Show:
         """How to show numbers in one format; a text stays as it is, NaN is no data."""
         shown = self.style("number", num_format=num_format, **more)
-        text, none = self.style("middle"), self.no_data
+        text, none = self.style("middle", shrink=True), self.no_data
 
         def show(value: float | str) -> Shown:
             if isinstance(value, str):
@@ -158,6 +204,21 @@ class Book:
             return (float(value), shown[band_of(value, self.edges)]) if value == value else none
 
         return show
+
+    def parts(self) -> Show:
+        """How to show shares that never show as nothing, nor as all, when they are neither."""
+        low, high = self.numbers(SHARE), self.numbers(PART)
+        return lambda value: (low if value < 0.5 else high)(value)
+
+    def marked(self, shown: Shown, marks: str) -> Shown:
+        """A cell with marks behind its number; a text stays as it is."""
+        value, shape = shown
+        if not marks or isinstance(value, str):
+            return shown
+        if (shape, marks) not in self._marked:
+            num_format = suffixed(shape.num_format, marks)
+            self._marked[shape, marks] = self.varied(shape, num_format=num_format, shrink=True)
+        return value, self._marked[shape, marks]
 
     def words(self, value: str | None) -> Shown:
         """How to show a check or another short text in a narrow cell."""
@@ -180,7 +241,8 @@ class Book:
         page.fit_to_pages(1, 0)
         # A single & would begin a code of the footer.
         title = cut(self.title, 100).replace("&", "&&")
-        page.set_footer(f"&L&8{title}&C&8&A&R&8Page &P of &N")
+        # The space ends the code of the size: a title may begin with digits.
+        page.set_footer(f"&L&8 {title}&C&8 &A&R&8 Page &P of &N")
         return Sheet(page, self, tuple(widths))
 
 
@@ -221,37 +283,58 @@ class Sheet:
             )
 
     def line(
-        self, text: str, style: str = "plain", first: int = 0, last: int | None = None
+        self,
+        text: str,
+        style: str = "plain",
+        first: int = 0,
+        last: int | None = None,
+        label: str | None = None,
     ) -> None:
-        """A text over several columns of the present row, the row as high as it needs."""
+        """A text over several columns of the present row, the row as high as it needs.
+
+        A label, where there is one, stands in the first column of the sheet.
+        """
         last = len(self.widths) - 1 if last is None else last
         shape = self.book.style(style)
         if last > first:
             self.page.merge_range(self.row, first, self.row, last, "", shape)
         self.cell(first, (text, shape))
-        points = max(10, shape.font_size) * 1.4
-        # Proportional letters are narrower than the digits that widths are counted in.
-        room = sum(self.widths[first : last + 1]) * 1.12 * 10 / shape.font_size
-        lines = sum(
-            max(1, math.ceil(utf16_length(part) / room)) for part in clean(text).split("\n")
-        )
-        self.page.set_row(self.row, min(400.0, lines * points + 4.0))
+        texts = [(text, first, last)]
+        if label is not None:
+            self.cell(0, (label, self.book.style("label")))
+            texts.append((label, 0, 0))
+        self.fit(texts, shape.font_size)
         self.next_row()
+
+    def fit(
+        self, texts: Iterable[tuple[str, int, int]], size: float = 10.0, least: float = 0.0
+    ) -> None:
+        """Make the present row as high as its texts need, each with its first and last column."""
+        # Not every program fits a row to wrapped texts by itself, and none to merged cells.
+        lines = max(
+            lines_of(clean(text), sum(self.widths[first : last + 1]) * _LETTERS * 10 / size)
+            for text, first, last in texts
+        )
+        points = lines * max(10.0, size) * 1.35 + 4.0
+        self.page.set_row(self.row, min(_HIGHEST, max(points, least)))
 
     def head(self, words: Sequence[str], height: float = 30.0) -> None:
         """A row of column headings."""
         for column, word in enumerate(words):
             self.cell(column, (word, self.book.style("head")))
-        self.page.set_row(self.row, height)
+        self.fit([(word, column, column) for column, word in enumerate(words)], least=height)
         self.next_row()
 
-    def legend(self, column: int) -> None:
-        """The bands by their numbers and what stands for no data, from a column on."""
+    def legend(self, label: str, column: int) -> None:
+        """A row with the bands by their numbers and no data from a column on, and its label."""
         keys = [
             (label, self.book.band(number, "key")) for number, label in enumerate(self.book.labels)
         ]
         for at, shown in enumerate([*keys, self.book.no_data]):
             self.cell(column + at, shown)
+        self.cell(0, (label, self.book.style("label")))
+        self.fit([(label, 0, 0)])
+        self.next_row()
 
     def finish(self, head: int, fixed: int) -> None:
         """Freeze and repeat the rows down to the headings in row ``head``; filter what follows."""

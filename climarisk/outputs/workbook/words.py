@@ -9,16 +9,19 @@ from typing import Any
 import pandas as pd
 
 from climarisk.aircraft import AircraftProfile
-from climarisk.outputs.texts import CAUTIONS, METHOD
-from climarisk.outputs.workbook.cells import ERROR, PART, SHARE, TENTH, WHOLE, Book, Sheet, Show
-from climarisk.outputs.workbook.grids import (
-    NO_CHECK,
-    NO_INTERVAL,
-    NO_MARGIN,
+from climarisk.outputs.texts import (
+    CAUTIONS,
+    METHOD,
+    NO_DATA,
+    PRESSURE_TOLD_FT,
     aircraft_labels,
     field_labels,
+    grouped,
 )
+from climarisk.outputs.workbook.cells import ERROR, GAP, MARK, STEEP, TENTH, WHOLE, Book, Sheet
+from climarisk.outputs.workbook.grids import NO_CHECK, NO_INTERVAL, NO_MARGIN
 from climarisk.results import StudyResult
+from climarisk.rules import DAYS
 
 MEASURED = "measured"
 _COLOURS = (
@@ -31,7 +34,9 @@ _MEANINGS = (
     ("Highest density altitude", "The highest P90 of the twelve months: 1 hour in 10 is above."),
     (
         "Worst month",
-        "The month with the highest shortfall share among those with data; the first of several.",
+        "The month with the highest shortfall share among those with data, or the months that tie; "
+        "“of so many months” where some of the twelve have no data. The interval of months that "
+        "tie goes from the lowest end to the highest.",
     ),
     (
         "Shortfall share",
@@ -57,22 +62,54 @@ _MEANINGS = (
         "The check with the smallest margin most often among the hours that fall short. "
         f"“{NO_CHECK}”: no known hour falls short.",
     ),
-    ("Years that count", "Years with values on at least 80 % of the days of the month."),
+    (
+        "Years that count",
+        "Years with any hour that enters. An hour enters when its month and hour of day have "
+        f"values on at least {DAYS.share_of_days * 100:g} % of the days of that year’s month. "
+        "“Years, fewest”: of the months with data.",
+    ),
+    (
+        "Coverage",
+        "Share of the period’s cells that count: of a month, one cell per year and hour of day in "
+        "the hours window; of a season, its hours in the window.",
+    ),
     (
         "Margin, P10",
         "Available over required times the operator’s factors, less one: 1 hour in 10 has a "
         f"smaller one. “{NO_MARGIN}”: a stated limit is passed or not, it has no margin.",
     ),
-    ("Share failing", "Hours in which this one check fails over hours known."),
     (
-        "Steep runway",
+        "Share failing",
+        "Hours in which this check fails, whatever the others do, over hours known.",
+    ),
+    (
+        f"Steep runway, {STEEP}",
         "A runway is steeper than the published factors hold for: no figure of the field is a "
         "pass, it needs a site-specific procedure.",
     ),
     (
+        f"Few years, {MARK}",
+        "A share or an interval rests on fewer years than a settled interval needs, or a "
+        "percentile on fewer than percentiles need.",
+    ),
+    (
+        f"Gap, {GAP}",
+        "A month that the season touches has no data: the figure of the season rests on the "
+        "other months.",
+    ),
+    (
         "Air",
         "How the air at the field is known: measured at a station on the spot, or estimated from "
-        "stations nearby. The error is one standard deviation, in feet of density altitude.",
+        "stations nearby. The error of the pressure is told beside it from "
+        f"{PRESSURE_TOLD_FT:g} ft on: the pressure is then not measured well, or not at all.",
+    ),
+    (
+        "Error, ft (1 sd)",
+        "One standard deviation of the air, in feet of density altitude: the root of the sum of "
+        "the squares of the transfer error (of the hours estimated from stations nearby) and of "
+        "the pressure error, which come from different readings and are taken as independent. "
+        f"“{MEASURED}”: nothing is transferred and the pressure error is below "
+        f"{PRESSURE_TOLD_FT:g} ft.",
     ),
     ("Cautions", "Findings about the field that are more than a note; see the sheet “Cautions”."),
     ("no data", "The record does not meet the completeness rule: it does not mean no risk."),
@@ -117,8 +154,7 @@ def _section(sheet: Sheet, title: str) -> None:
 
 def _told(sheet: Sheet, name: str, text: str) -> None:
     """A name in the first column and what there is to say beside it."""
-    sheet.cell(0, (name, sheet.book.style("label")))
-    sheet.line(text or "none", first=1)
+    sheet.line(text or "none", first=1, label=name)
 
 
 def _plain(value: Any) -> str:
@@ -156,16 +192,23 @@ def _aircraft_text(profile: AircraftProfile) -> str:
 # Air and stations
 
 
-def air_text(own: float, stations: float) -> str:
-    """How the air of a field is known."""
+def air_text(own: float, stations: float, pressure_error_ft: float) -> str:
+    """How the air of a field is known, and its pressure where that is not known well."""
+    told = pressure_error_ft >= PRESSURE_TOLD_FT
     if own >= 1.0:
-        return "own station"
-    if not stations > 0:
-        return "no data" if not own > 0 else f"own station {_part_text(own)}"
-    count = f"{stations:.0f} station" + ("" if stations == 1 else "s")
-    if own > 0:
-        return f"own station {_part_text(own)}, else {count}"
-    return f"estimated from {count}"
+        how = "air measured" if told else "own station"
+    elif not stations > 0:
+        if not own > 0:
+            return NO_DATA
+        how = f"own station {_part_text(own)}"
+    else:
+        count = f"{stations:.0f} station" + ("" if stations == 1 else "s")
+        how = (
+            f"own station {_part_text(own)}, else {count}" if own > 0 else f"estimated from {count}"
+        )
+    if not told:
+        return how
+    return f"{how}, pressure \N{PLUS-MINUS SIGN}{grouped(int(two_digits(pressure_error_ft)))} ft"
 
 
 def _part_text(share: float) -> str:
@@ -175,17 +218,16 @@ def _part_text(share: float) -> str:
     return "< 1 %" if share < 0.01 else f"{math.floor(share * 100 + 0.5)} %"
 
 
-def _part(book: Book) -> Show:
-    """How to show a share that never shows as nothing, nor as all, when it is neither."""
-    low, high = book.numbers(SHARE), book.numbers(PART)
-    return lambda value: (low if value < 0.5 else high)(value)
-
-
-def error_shown(feet: float, own: float, stations: float) -> float | str:
-    """An error in feet to two digits, or a word where there is nothing to estimate."""
-    if own >= 1.0:
+def error_shown(
+    transfer_error_ft: float, pressure_error_ft: float, own: float, stations: float
+) -> float | str:
+    """Both errors together in feet to two digits; a word where there is none to speak of."""
+    if not (own > 0 or stations > 0):
+        return math.nan
+    if own >= 1.0 and pressure_error_ft < PRESSURE_TOLD_FT:
         return MEASURED
-    return two_digits(feet) if own > 0 or stations > 0 else math.nan
+    # Readings of temperature and of pressure err independently, so their squares add up.
+    return two_digits(math.hypot(transfer_error_ft, pressure_error_ft))
 
 
 def two_digits(value: float) -> float:
@@ -198,33 +240,45 @@ def two_digits(value: float) -> float:
 def _write_air(sheet: Sheet, result: StudyResult) -> None:
     """How the air of each field is known, and how well."""
     _section(sheet, "How the air of each field is known")
+    sheet.line("Errors are one standard deviation; those in feet are of density altitude.")
     heads = "Field|Own station, share of hours|Pressure from|Stations estimated from"
-    heads += "|Error, K (1 sd)|Error, ft (1 sd)|Pressure error, ft (1 sd)"
+    heads += "|Transfer error, K|Transfer error, ft|Pressure error, ft|Error, ft (1 sd)"
     sheet.head([*heads.split("|"), "Stations of the lapse", "Stations hidden to learn it"], 44.0)
     sources: dict[str, list[str]] = {}
     for part in result.pressure_sources.itertuples():
         sources.setdefault(str(part.field), []).append(f"{part.source} {_part_text(part.share)}")
     estimates = {str(one.field): one for one in result.estimates.itertuples()}
     book = sheet.book
-    kelvin, feet, whole = book.numbers(TENTH), book.numbers(ERROR), book.numbers(WHOLE)
+    shows = [book.numbers(TENTH), *[book.numbers(ERROR)] * 3, *[book.numbers(WHOLE)] * 2]
     for field, label in zip(result.fields, field_labels(result), strict=True):
         row: Any = estimates.get(field.id)
-        sheet.cell(0, (label, book.style("top")))
-        pressure = ", ".join(sources.get(field.id, []))
-        sheet.cell(2, (pressure, book.style("wrapped")) if pressure else book.no_data)
         known = row is not None and (row.own_station > 0 or row.stations > 0)
-        own, stations = (row.own_station, row.stations) if known else (math.nan, math.nan)
-        # A tenth of a kelvin, rounded up: no error looks smaller than it is.
-        error_k = math.ceil(round(row.transfer_error_k * 10, 6)) / 10 if known else math.nan
-        sheet.cell(1, _part(book)(own))
-        sheet.cell(3, whole(stations))
-        sheet.cell(4, kelvin(MEASURED if own >= 1.0 else error_k))
-        sheet.cell(5, feet(error_shown(row.transfer_error_ft, own, stations) if known else own))
-        sheet.cell(6, feet(two_digits(row.pressure_error_ft) if known else math.nan))
-        sheet.cell(7, whole(float(row.lapse_stations) or "fixed table" if known else math.nan))
-        hidden = float(row.verified_stations) or "planning values" if known else math.nan
-        sheet.cell(8, whole(MEASURED if own >= 1.0 else hidden))
+        pressure = ", ".join(sources.get(field.id, []))
+        sheet.cell(0, (label, book.style("top")))
+        sheet.cell(1, book.parts()(row.own_station if known else math.nan))
+        sheet.cell(2, (pressure, book.style("wrapped")) if pressure else book.no_data)
+        sheet.cell(3, book.numbers(WHOLE)(row.stations if known else math.nan))
+        errors = _errors(row) if known else [math.nan] * len(shows)
+        for column, (show, value) in enumerate(zip(shows, errors, strict=True), start=4):
+            sheet.cell(column, show(value))
+        sheet.fit([(pressure, 2, 2)])
         sheet.next_row()
+
+
+def _errors(row: Any) -> list[float | str]:
+    """The errors of a field's air and what they were learned from, as in the table of the air."""
+    measured = row.own_station >= 1.0
+    # A tenth of a kelvin, rounded up: no error looks smaller than it is.
+    kelvin = math.ceil(round(row.transfer_error_k * 10, 6)) / 10
+    both = error_shown(row.transfer_error_ft, row.pressure_error_ft, row.own_station, row.stations)
+    return [
+        MEASURED if measured else kelvin,
+        MEASURED if measured else two_digits(row.transfer_error_ft),
+        two_digits(row.pressure_error_ft),
+        both,
+        float(row.lapse_stations) or "fixed table",
+        MEASURED if measured else float(row.verified_stations) or "planning values",
+    ]
 
 
 def _write_stations(sheet: Sheet, result: StudyResult) -> None:
@@ -237,8 +291,8 @@ def _write_stations(sheet: Sheet, result: StudyResult) -> None:
     numbers = {
         "distance_km": book.numbers(TENTH),
         "height_difference_m": book.numbers(WHOLE),
-        "coverage": _part(book),
-        "share_of_hours": _part(book),
+        "coverage": book.parts(),
+        "share_of_hours": book.parts(),
     }
     text = book.style("text")
     for row in result.station_use.to_dict("records"):
@@ -263,8 +317,7 @@ def write_cautions(book: Book, result: StudyResult) -> None:
     sheet = book.sheet("Cautions", [11.0, 10.0, 18.0, 30.0, 20.0, 90.0])
     sheet.line("Cautions", "title")
     for number, text in enumerate(CAUTIONS, start=1):
-        sheet.cell(0, (f"{number}.", book.style("label")))
-        sheet.line(text, "caution" if number == 1 else "plain", first=1)
+        sheet.line(text, "caution" if number == 1 else "plain", first=1, label=f"{number}.")
     _section(sheet, "Findings of the quality control")
     sheet.line(
         "reject: data were not used because of it. caution: read it before using the figures. "
@@ -277,9 +330,10 @@ def write_cautions(book: Book, result: StudyResult) -> None:
         loud = finding.severity != "note"
         sheet.cell(0, (finding.severity, book.style("strong" if loud else "top")))
         name = names.get((finding.subject, finding.id), "")
-        for column, word in enumerate((finding.subject, finding.id, name, finding.check), start=1):
+        told = (finding.subject, finding.id, name, finding.check, finding.message)
+        for column, word in enumerate(told, start=1):
             sheet.cell(column, (word, book.style("wrapped")))
-        sheet.cell(5, (finding.message, book.style("wrapped")))
+        sheet.fit([(word, column, column) for column, word in enumerate(told, start=1)])
         sheet.next_row()
     if not result.findings:
         sheet.cell(0, ("none", book.style("text")))
