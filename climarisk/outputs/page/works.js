@@ -35,7 +35,7 @@ function usableInterval(field, aircraft, period) {
 }
 
 function worksPart(state) {
-  const limit = edgeText(STUDY.worksShare) + " %";
+  const limit = edgeText(STUDY.worksShare) + "\u00a0%";
   const rows = MONTH_NAMES.map((name, index) => {
     const period = { season: false, index };
     return [
