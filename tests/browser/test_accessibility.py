@@ -27,8 +27,17 @@ SCENES = {
     "field": "#field=field-4",
     "field without data": f"#field={EMPTY_FIELD}",
     "density altitude": "#field=field-2&measure=p90&month=7&hour=14",
-    "compared": "#compare=field-0,field-2",
+    "compared": "#compare=field-0+field-2",
 }
+
+#: Scenes alike in structure are looked at in two of the views.
+ALIKE = {"steep field", "density altitude"}
+CASES = [
+    (view, name)
+    for view in VIEWS
+    for name in SCENES
+    if name not in ALIKE or view in ("desktop", "phone dark")
+]
 
 RUN_AXE = """(tags) => axe.run(document, {
     runOnly: {type: "tag", values: tags}, resultTypes: ["violations", "incomplete"]})"""
@@ -114,8 +123,7 @@ def told(result: dict) -> str:
     return "\n".join([*lines, *([f"  and {more} more"] if more > 0 else [])])
 
 
-@pytest.mark.parametrize("name", SCENES)
-@pytest.mark.parametrize("view", VIEWS)
+@pytest.mark.parametrize(("view", "name"), CASES)
 def test_axe_finds_no_violation_and_leaves_nothing_open(scene, axe_script, view, name):
     page = scene(view, name)
     page.evaluate(axe_script)
