@@ -15,15 +15,17 @@ from climarisk.outputs.background import drawn_longitudes, outlines_for
 from climarisk.outputs.colours import MOST_EDGES, NO_DATA_SHAPE, SHAPES, YLORBR
 from climarisk.outputs.map_arrays import arrays, axis_values, scenario_names
 from climarisk.outputs.packing import feet, share_levels
-from climarisk.outputs.texts import CAUTIONS, METHOD, PRESSURE_TOLD_FT
+from climarisk.outputs.texts import CAUTIONS, METHOD, MONTH_NAMES, PRESSURE_TOLD_FT
 from climarisk.results import StudyResult
 from climarisk.trend import STATION_MOVE, TREND_YEARS
 from climarisk.units import METRES_PER_FOOT
 
 #: Class edges of the measures that have none of their own: relative humidity, near saturation.
+#: Round numbers of our choice, no source.
 HUMIDITY_EDGES = (0.4, 0.6, 0.8, 0.9)
 NEAR_SATURATION_EDGES = (0.01, 0.05, 0.1, 0.25, 0.5)
-#: A field works in an hour of a month in which less than this share falls short.
+#: A field works in an hour of a month in which less than this share falls short; our choice, one
+#: day in twenty.
 WORKS_SHARE = 0.05
 
 #: Significant digits of the numbers that travel as text: more than the page shows of any.
@@ -94,6 +96,7 @@ def payload(result: StudyResult) -> dict[str, Any]:
         "aircraft": [_aircraft_entry(profile) for profile in result.aircraft],
         "findings": [finding.as_dict() for finding in result.findings],
         "attributions": list(result.attributions),
+        "monthNames": list(MONTH_NAMES),
         "cautions": list(CAUTIONS),
         "method": list(METHOD),
         "palette": {"classes": YLORBR, "shapes": SHAPES, "noData": NO_DATA_SHAPE},

@@ -56,7 +56,6 @@ METHOD = (
     "%” for anything above zero and below one. The CSV files hold the unrounded values.",
 )
 
-MONTHS = ("Jan", "Feb", "Mar", "Apr", "May", "Jun", "Jul", "Aug", "Sep", "Oct", "Nov", "Dec")
 MONTH_NAMES = (
     "January",
     "February",
@@ -71,9 +70,10 @@ MONTH_NAMES = (
     "November",
     "December",
 )
+MONTHS = tuple(name[:3] for name in MONTH_NAMES)
 NO_DATA = "no data"
 #: From this many feet on (one standard deviation) the doubt about the pressure is told wherever the
-#: doubt about the air is: the pressure is then not measured well, or not at all.
+#: doubt about the air is: the pressure is then not measured well, or not at all (our choice).
 PRESSURE_TOLD_FT = 20.0
 _MINUS = "\N{MINUS SIGN}"
 

@@ -1,20 +1,7 @@
 // format.js: numbers as the page shows them. Rounding happens here and nowhere else.
 
-const MONTHS = ["Jan", "Feb", "Mar", "Apr", "May", "Jun", "Jul", "Aug", "Sep", "Oct", "Nov", "Dec"];
-const MONTH_NAMES = [
-  "January",
-  "February",
-  "March",
-  "April",
-  "May",
-  "June",
-  "July",
-  "August",
-  "September",
-  "October",
-  "November",
-  "December",
-];
+const MONTH_NAMES = STUDY.monthNames;
+const MONTHS = MONTH_NAMES.map((name) => name.slice(0, 3));
 const MINUS = "\u2212";
 const NO_DATA = "no data";
 
