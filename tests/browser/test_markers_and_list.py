@@ -93,10 +93,13 @@ def has_class(page, name: str) -> bool:
 
 
 def zoom(page, way: str, times: int = 1) -> None:
+    # The zoom itself is waited for: on a busy machine the animation can be over unseen.
     for _ in range(times):
+        before = page.evaluate("map_fields.getZoom()")
         page.click(f".leaflet-control-zoom-{way}")
-        page.wait_for_selector(".leaflet-zoom-anim", state="attached")
-        page.wait_for_selector(".leaflet-zoom-anim", state="detached")
+        page.wait_for_function(
+            "(before) => map_fields.getZoom() !== before && !map_fields._animatingZoom", arg=before
+        )
 
 
 # Dots
