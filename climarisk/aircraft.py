@@ -83,6 +83,8 @@ class AircraftProfile:
         Rate of climb the operator asks for.
     climb_gradient_pct : float or None
         Climb gradient the operator asks for.
+    critical_altitude_ft : float or None
+        Highest standard altitude at which a turbocharged engine holds full power.
     """
 
     id: str
@@ -103,6 +105,7 @@ class AircraftProfile:
     landing_factor: float = 1.0
     climb_rate_ft_min: float | None = None
     climb_gradient_pct: float | None = None
+    critical_altitude_ft: float | None = None
 
     @property
     def is_scaled(self) -> bool:
@@ -122,6 +125,7 @@ _Grid = Annotated[list[list[_Cell]], MinLen(1)]
 class _Engine(Strict):
     aspiration: Literal["natural", "turbocharged", "diesel", "electric"]
     carburettor: bool
+    critical_altitude_ft: Annotated[float, Ge(0), Le(60_000)] | None = None
 
 
 class _Mass(Strict):
@@ -229,6 +233,7 @@ def read_aircraft(path: Path) -> tuple[AircraftProfile | None, list[str]]:
         landing_factor=checked.margins.landing_factor,
         climb_rate_ft_min=checked.margins.climb_rate_ft_min,
         climb_gradient_pct=checked.margins.climb_gradient_pct,
+        critical_altitude_ft=checked.engine.critical_altitude_ft,
     ), []
 
 
@@ -356,7 +361,12 @@ def _profile_problems(
     checked: _Profile, tables: dict[str, tuple[PerformanceTable, ...]], path: Path
 ) -> list[str]:
     problems = []
-    mass, single, margins = checked.mass, checked.sea_level, checked.margins
+    mass, single, margins, engine = checked.mass, checked.sea_level, checked.margins, checked.engine
+    if engine.critical_altitude_ft is not None and engine.aspiration != "turbocharged":
+        problems.append(
+            f"{path}: [engine] critical_altitude_ft is {engine.critical_altitude_ft:g} but the "
+            f"aspiration is {engine.aspiration}; only a turbocharged engine has one: remove it."
+        )
     if not mass.empty_kg < mass.planning_kg <= mass.maximum_kg:
         problems.append(
             f"{path}: the masses must satisfy empty < planning <= maximum; they are "

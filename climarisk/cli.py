@@ -1,4 +1,4 @@
-"""The commands.  The only module that prints."""
+"""The commands."""
 
 from __future__ import annotations
 
@@ -10,16 +10,11 @@ from pathlib import Path
 from typing import TYPE_CHECKING, Annotated, Literal
 
 import typer
-from rich.console import Console
-from rich.markup import escape
-from rich.progress import BarColumn, MofNCompleteColumn, Progress, TaskID, TextColumn
 
 from climarisk.errors import ClimariskError
+from climarisk.terminal import Bars, escaped, notes, print_findings, results
 
 if TYPE_CHECKING:
-    from collections.abc import Callable
-
-    from climarisk.findings import Finding
     from climarisk.results import StudyResult
     from climarisk.store import Store
     from climarisk.study import Study
@@ -33,11 +28,6 @@ app = typer.Typer(
     rich_markup_mode=None,
     pretty_exceptions_enable=False,
 )
-#: Findings that a run prints; study.json and `climarisk check` have them all.
-_MOST_FINDINGS = 20
-_notes = Console(stderr=True, soft_wrap=True, highlight=False)
-_results = Console(soft_wrap=True, highlight=False)
-
 _StudyPath = Annotated[
     Path, typer.Argument(metavar="STUDY.toml", help="The study file, or the folder that holds it.")
 ]
@@ -72,6 +62,36 @@ _Limit = Annotated[
         "--limit-ft",
         help="Density altitude whose exceedance is scored; default each station's own 90th "
         "percentile.",
+    ),
+]
+_Year = Annotated[
+    int | None,
+    typer.Option(
+        "--year", help="The year whose calendar and clock count; default the study's planning year."
+    ),
+]
+_EvidenceStudy = Annotated[
+    Path | None,
+    typer.Argument(
+        metavar="STUDY.toml",
+        help="The study file, or the folder that holds it.",
+        show_default=False,
+    ),
+]
+_EvidenceOut = Annotated[
+    Path | None,
+    typer.Option("--out", help="Evidence folder of its own; default evidence/<study folder name>."),
+]
+_Check = Annotated[
+    Path | None,
+    typer.Option("--check", metavar="DIR", help="Check an evidence folder instead of writing one."),
+]
+_CheckStudy = Annotated[
+    Path | None,
+    typer.Option(
+        "--study",
+        metavar="STUDY.toml",
+        help="With --check: run this study again; default the copy, where its weather is invented.",
     ),
 ]
 _Offline = Annotated[bool, typer.Option("--offline", help="Never touch the network.")]
@@ -110,14 +130,14 @@ def check(study: _StudyPath, store: _StoreFolder = None) -> None:
     read = read_study(study)
     _print_plan(read, _output_folder(read, None))
     if read.source == "meteostat":
-        _results.print("The weather comes from the online archive; climarisk fetch reads it.")
+        results.print("The weather comes from the online archive; climarisk fetch reads it.")
         return
-    with _bar() as progress:
+    with Bars() as progress:
         weather = load_weather(read, _read_only_store(store), progress, offline=True)
         result = evaluate(read, weather, progress)
     for finding in result.findings:
-        _notes.print(_escaped(str(finding)))
-    _results.print(_escaped(_coverage_line(result)))
+        notes.print(escaped(str(finding)))
+    results.print(escaped(_coverage_line(result)))
 
 
 @app.command(epilog="Example: climarisk verify strips/study.toml --limit-ft 6000")
@@ -137,15 +157,62 @@ def verify(
     check_limit(limit_ft)
     read = read_study(study)
     kept = _store(store) if read.source != "synthetic" else None
-    with _bar() as progress:
+    with Bars() as progress:
         weather = load_weather(read, kept, progress, offline)
         report = verify_study(read, weather, progress, limit_ft)
         folder = _output_folder(read, out)
         files = write_verification(report, folder)
-    _print_findings([f for f in weather.findings if f.severity != "note"])
+    print_findings([f for f in weather.findings if f.severity != "note"])
     for line in plain_text(report).splitlines():
-        _results.print(_escaped(line))
-    _results.print(_escaped(f"Verification: {', '.join(f.name for f in files)} in {folder}"))
+        results.print(escaped(line))
+    results.print(escaped(f"Verification: {', '.join(f.name for f in files)} in {folder}"))
+
+
+@app.command(epilog="Example: climarisk evidence strips/study.toml --out evidence/strips")
+def evidence(
+    study: _EvidenceStudy = None,
+    out: _EvidenceOut = None,
+    check: _Check = None,
+    again: _CheckStudy = None,
+    store: _StoreFolder = None,
+    offline: _Offline = False,
+) -> None:
+    """Write a folder that a reviewer can file, or check one."""
+    if check is not None:
+        if study is not None or out is not None:
+            raise typer.BadParameter("--check takes no other study than --study, and no --out")
+        _check_evidence(check, again, store)
+        return
+    if study is None or again is not None:
+        raise typer.BadParameter("give a STUDY.toml to write evidence, or --check DIR")
+    from climarisk.outputs.evidence.folder import digest_of, make_evidence
+    from climarisk.study import read_study
+
+    read = read_study(study)
+    folder = out if out is not None else Path("evidence") / read.name
+    kept = _store(store) if read.source != "synthetic" else None
+    with Bars() as progress:
+        result, files = make_evidence(study, folder, kept, progress, offline)
+    print_findings(result.findings)
+    results.print(escaped(f"Evidence: {len(files)} files in {folder}"))
+    results.print(escaped(f"SHA-256 of evidence.zip: {digest_of(folder / 'evidence.zip')}"))
+
+
+def _check_evidence(folder: Path, study: Path | None, store: Path | None) -> None:
+    from climarisk.outputs.evidence.check import check_evidence, is_repeatable
+
+    with Bars() as progress:
+        problems = check_evidence(folder, study, _store(store), progress)
+    for problem in problems:
+        results.print(escaped(problem))
+    if problems:
+        raise ClimariskError(f"{folder}: the evidence does not hold; see above.")
+    told = "every file is as written, and the numbers fit together"
+    if study is not None or is_repeatable(folder):
+        told += "; run again, the study gives the same"
+    else:
+        told += "; the study was not run again: name it with --study"
+    results.print(escaped(f"{folder}: {told}."))
 
 
 @app.command(epilog="Example: climarisk fetch strips/study.toml")
@@ -161,13 +228,71 @@ def fetch(study: _StudyPath, store: _StoreFolder = None) -> None:
             f"{read.path}: the weather source is {read.source!r}, which needs no fetching; "
             'set source = "meteostat" under [weather] to use the online archive.'
         )
-    with _bar() as progress:
+    with Bars() as progress:
         stations = fetch_stations(read, _store(store), progress, offline=False)
     for item in stations:
-        _results.print(
-            _escaped(f"{item.station.id} {item.station.name}: {len(item.files)} years in the store")
+        results.print(
+            escaped(f"{item.station.id} {item.station.name}: {len(item.files)} years in the store")
         )
-    _print_findings([f for item in stations for f in item.findings])
+    print_findings([f for item in stations for f in item.findings])
+
+
+@app.command(epilog="Example: climarisk schedule strips/study.toml summer.csv --year 2027")
+def schedule(
+    study: _StudyPath,
+    flights: Annotated[
+        Path, typer.Argument(metavar="FLIGHTS.csv", help="The flights, one row each.")
+    ],
+    out: _Out = None,
+    store: _StoreFolder = None,
+    offline: _Offline = False,
+    year: _Year = None,
+) -> None:
+    """Hold a schedule against the record, flight by flight."""
+    from climarisk.outputs.summary import schedule_lines
+    from climarisk.outputs.tables import write_schedule
+    from climarisk.pipeline import evaluate_schedule
+    from climarisk.study import read_study
+    from climarisk.weather import load_weather
+
+    read = read_study(study, flights, year)
+    folder = _output_folder(read, out)
+    _refuse_overwriting(read, folder)
+    kept = _store(store) if read.source != "synthetic" else None
+    with Bars() as progress:
+        weather = load_weather(read, kept, progress, offline)
+        frames, findings = evaluate_schedule(read, weather, progress)
+        files = write_schedule(read, frames, folder)
+    print_findings(findings)
+    for line in schedule_lines(frames, read.confidence, folder, files):
+        results.print(escaped(line))
+
+
+@app.command(epilog="Example: climarisk bases strips/study.toml")
+def bases(
+    study: _StudyPath,
+    out: _Out = None,
+    store: _StoreFolder = None,
+    offline: _Offline = False,
+) -> None:
+    """Rank the fields as bases for the fleet."""
+    from climarisk.outputs.summary import bases_lines
+    from climarisk.outputs.tables import write_bases
+    from climarisk.pipeline import evaluate
+    from climarisk.study import read_study
+    from climarisk.weather import load_weather
+
+    read = replace(read_study(study), flights=())
+    folder = _output_folder(read, out)
+    _refuse_overwriting(read, folder)
+    kept = _store(store) if read.source != "synthetic" else None
+    with Bars() as progress:
+        weather = load_weather(read, kept, progress, offline)
+        result = evaluate(read, weather, progress)
+        files = write_bases(result, folder)
+    print_findings(result.findings)
+    for line in bases_lines(result, folder, files):
+        results.print(escaped(line))
 
 
 @dataclass(frozen=True)
@@ -194,7 +319,7 @@ def _run(
     folder = _output_folder(read, out)
     _refuse_overwriting(read, folder)
     kept = _store(store) if read.source != "synthetic" else None
-    with _bar() as progress:
+    with Bars() as progress:
         weather = load_weather(read, kept, progress, offline)
         result = evaluate(read, weather, progress)
         if variants:
@@ -203,10 +328,10 @@ def _run(
         files = write_outputs(result, folder)
         progress("writing results", 1, 1)
     if kept is not None and kept.damaged:
-        _notes.print(f"note: {len(kept.damaged)} damaged entries of the store were rebuilt.")
-    _print_findings(result.findings)
+        notes.print(f"note: {len(kept.damaged)} damaged entries of the store were rebuilt.")
+    print_findings(result.findings)
     for line in summary_lines(result, folder, files):
-        _results.print(_escaped(line))
+        results.print(escaped(line))
 
 
 def _demo_study() -> Path:
@@ -250,48 +375,6 @@ def _read_only_store(folder: Path | None) -> Store:
     return ReadOnlyStore(folder if folder is not None else default_folder())
 
 
-class _bar:
-    """Progress bars on stderr; silent where stderr is no terminal."""
-
-    def __enter__(self) -> Callable[[str, int, int], None]:
-        self._progress = Progress(
-            TextColumn("{task.description}"),
-            BarColumn(),
-            MofNCompleteColumn(),
-            console=_notes,
-            transient=True,
-            disable=not _notes.is_terminal,
-        )
-        self._tasks: dict[str, TaskID] = {}
-        self._progress.start()
-        return self._show
-
-    def _show(self, message: str, done: int, total: int) -> None:
-        if message not in self._tasks:
-            self._tasks[message] = self._progress.add_task(escape(message), total=total)
-        self._progress.update(self._tasks[message], completed=done, total=total)
-
-    def __exit__(self, *_: object) -> None:
-        self._progress.stop()
-
-
-def _escaped(text: str) -> str:
-    """Text that neither the console's markup nor a control character in it can change."""
-    return escape("".join(c if c.isprintable() else "\N{REPLACEMENT CHARACTER}" for c in text))
-
-
-def _print_findings(findings: list[Finding] | tuple[Finding, ...]) -> None:
-    """The findings that are more than notes, on stderr; of very many the first."""
-    serious = [finding for finding in findings if finding.severity != "note"]
-    for finding in serious[:_MOST_FINDINGS]:
-        _notes.print(_escaped(str(finding)))
-    if len(serious) > _MOST_FINDINGS:
-        _notes.print(f"{len(serious) - _MOST_FINDINGS} cautions and rejections more in study.json.")
-    notes = len(findings) - len(serious)
-    if notes:
-        _notes.print(f"{notes} notes more in study.json.")
-
-
 def _print_plan(study: Study, folder: Path) -> None:
     lines = [
         f"Study: {study.title}",
@@ -301,7 +384,7 @@ def _print_plan(study: Study, folder: Path) -> None:
         f"A run would write to: {folder}",
     ]
     for line in lines:
-        _results.print(_escaped(line))
+        results.print(escaped(line))
 
 
 def _coverage_line(result: StudyResult) -> str:
@@ -322,13 +405,13 @@ def main() -> None:
         app()
     except ClimariskError as error:
         for line in str(error).splitlines() or [""]:
-            _notes.print(_escaped(f"error: {line}"))
+            notes.print(escaped(f"error: {line}"))
         sys.exit(error.exit_code)
     except Exception as error:  # a defect of ours: still one sentence, unless asked for more
         if os.environ.get("CLIMARISK_TRACEBACK"):
             raise
-        _notes.print(
-            _escaped(
+        notes.print(
+            escaped(
                 f"error: climarisk met something it did not expect ({type(error).__name__}: "
                 f"{error}); this is a defect. Set CLIMARISK_TRACEBACK=1 and report what it prints."
             )

@@ -11,7 +11,7 @@ import pandas as pd
 from climarisk.clock import LocalClock
 from climarisk.results import PERCENTILES
 from climarisk.rules import DAYS, years_notes
-from climarisk.study import Season
+from climarisk.seasons import Season
 
 
 @dataclass(frozen=True)
@@ -87,34 +87,45 @@ def segment_quantiles(
     ``p (n + 1/3) + 1/3`` among the sorted values, linear in between, the extremes beyond.
     """
     count = np.bincount(cells, minlength=n_cells)
-    ordered = _sorted_within(values, cells, count)
-    start = np.concatenate(([0], np.cumsum(count)[:-1]))
     n, p = count[:, None], np.asarray(probabilities)[None, :]
     position = np.clip(p * (n + 1 / 3) + 1 / 3, 1, np.maximum(n, 1))
     below = np.minimum(np.floor(position).astype(int), np.maximum(n, 1))
     above = np.minimum(below + 1, np.maximum(n, 1))
     share = position - below
+    placed = _placed_within(values, cells, count, np.concatenate([below, above], axis=1) - 1)
+    start = np.concatenate(([0], np.cumsum(count)[:-1]))
     result = np.full((n_cells, p.shape[1]), np.nan)
     has = count > 0
     if has.any():
         first = start[has, None]
-        low, high = ordered[first + below[has] - 1], ordered[first + above[has] - 1]
+        low, high = placed[first + below[has] - 1], placed[first + above[has] - 1]
         result[has] = low + share[has] * (high - low)
     return result
 
 
-def _sorted_within(values: np.ndarray, cells: np.ndarray, count: np.ndarray) -> np.ndarray:
-    """The values ordered by cell and, within a cell, by size.
+def _placed_within(
+    values: np.ndarray, cells: np.ndarray, count: np.ndarray, ranks: np.ndarray
+) -> np.ndarray:
+    """The values cell after cell, those of the wanted ranks where sorting would put them.
 
-    Ordering the small cell numbers first (a radix sort) and then each cell's values in place
-    takes a fraction of the time of one indirect sort by both.
+    Ordering the small cell numbers first (a radix sort) and then partitioning each cell's values
+    in place takes a fraction of the time of sorting, and gives the same order statistics.
+
+    Parameters
+    ----------
+    values, cells : ndarray, shape (n,)
+    count : ndarray of int, shape (n_cells,)
+        Values of each cell.
+    ranks : ndarray of int, shape (n_cells, n_ranks)
+        From 0 within the cell.
     """
-    ordered = values[np.argsort(cells.astype(np.int16), kind="stable")]
+    placed = values[np.argsort(cells.astype(np.int16), kind="stable")]
     start = 0
-    for n in count:
-        ordered[start : start + n].sort()
+    for n, wanted in zip(count, ranks, strict=True):
+        if n:
+            placed[start : start + n].partition(np.unique(wanted))
         start += n
-    return ordered
+    return placed
 
 
 def _statistics(

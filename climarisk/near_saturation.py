@@ -15,7 +15,7 @@ from climarisk.climatology import (
     window_coverage,
 )
 from climarisk.clock import LocalClock
-from climarisk.study import Season
+from climarisk.seasons import Season
 
 #: Spreads of temperature and dew point at or below which an hour is near saturation, kelvins:
 #: fog and low stratus become likely (common practice, no source).

@@ -92,6 +92,10 @@ class TableAir:
             )
         return self._places[key]
 
+    def read(self, table: PerformanceTable, quantity: str) -> np.ndarray:
+        """A quantity of one table in every hour, as `read_off` gives it."""
+        return _bilinear(table.values[quantity], *self.on_axes(table))
+
 
 @dataclass(frozen=True)
 class Margins:
@@ -233,11 +237,7 @@ def required(profile: AircraftProfile, operation: str, quantity: str, air: Table
     """
     tables = getattr(profile, operation)
     if tables:
-        return at_mass(
-            tables,
-            profile.planning_kg,
-            lambda table: _bilinear(table.values[quantity], *air.on_axes(table)),
-        )
+        return at_mass(tables, profile.planning_kg, lambda table: air.read(table, quantity))
     return _scaled(profile, operation, quantity, air)
 
 
@@ -291,9 +291,9 @@ def _better(first: np.ndarray, second: np.ndarray) -> np.ndarray:
     The one whose smaller margin is larger; of equals the one whose other margin is larger, so
     that the order of the directions does not matter where both are beyond one table.
     """
-    low, high = np.sort(
-        [np.where(np.isnan(m), OUTSIDE_MARGIN, m) for m in (first, second)], axis=1
-    ).swapaxes(0, 1)
+    filled = [np.where(np.isnan(m), OUTSIDE_MARGIN, m) for m in (first, second)]
+    low = [np.minimum(*m) for m in filled]
+    high = [np.maximum(*m) for m in filled]
     wins = (low[1] > low[0]) | ((low[1] == low[0]) & (high[1] > high[0]))
     return np.where(wins, second, first)
 
@@ -325,7 +325,7 @@ def climb_gradient_pct(
     return 100.0 * rate_ft_min / (true_kt * FEET_PER_NAUTICAL_MILE / 60.0)
 
 
-def _climb_speed_kt(profile: AircraftProfile) -> float:
+def climb_speed_kt(profile: AircraftProfile) -> float:
     """The fastest tabulated climb speed: of several the one with the flattest climb."""
     speeds = [t.speed_kt for t in profile.climb] or [
         getattr(profile.scaled, "climb_speed_kt", None)
@@ -344,7 +344,7 @@ def climb_margins(
     rate_margin = rate / rate_asked - 1.0 if rate_asked is not None else None
     if gradient_asked is None:
         return rate_margin, None
-    gradient = climb_gradient_pct(rate, _climb_speed_kt(profile), air.density_ratio)
+    gradient = climb_gradient_pct(rate, climb_speed_kt(profile), air.density_ratio)
     return rate_margin, gradient / gradient_asked - 1.0
 
 

@@ -78,6 +78,143 @@ NEAR_SATURATION_MONTHLY_COLUMNS = ["field", "month", *_NEAR_SATURATION]
 NEAR_SATURATION_HOURLY_COLUMNS = ["field", "month", "hour", *_NEAR_SATURATION]
 NEAR_SATURATION_SEASONAL_COLUMNS = ["field", "season", *_NEAR_SATURATION]
 
+#: The largest mass that holds in a share of the hours, landing included.
+_WEIGHTS = [
+    "n_hours",
+    "n_years",
+    "coverage",
+    "holds_in",  # the share of the hours asked for
+    "mass_kg",
+    "useful_load_kg",  # above the empty mass
+    "outcome",  # mass, maximum mass, cannot be met; empty without data
+    "never_met",  # share of the hours in which no tabulated mass would do
+]
+_WEIGHT_INTERVAL = ["ci_low_kg", "ci_high_kg", "interval_note"]
+WEIGHTS_MONTHLY_COLUMNS = ["field", "aircraft", "month", *_WEIGHTS, *_WEIGHT_INTERVAL]
+WEIGHTS_HOURLY_COLUMNS = ["field", "aircraft", "month", "hour", *_WEIGHTS]
+WEIGHTS_SEASONAL_COLUMNS = ["field", "aircraft", "season", *_WEIGHTS, *_WEIGHT_INTERVAL]
+
+#: When a field works for an aircraft: hours of the day below the target, and usable daylight.
+WINDOWS_MONTHLY_COLUMNS = [
+    "field",
+    "aircraft",
+    "month",
+    "target",  # shortfall share below which an hour of the day counts
+    "hours",  # those hours, local standard time, as ranges
+    "n_clock_hours",  # how many they are
+    "first_hour",
+    "last_hour",
+    "clock_first",  # the same by the civil clock of the planning year
+    "clock_last",
+    "hours_without_figures",
+    "daylight_hours",  # hours of a year's month in daylight
+    "usable_hours",  # of those, hours that do not fall short
+    "usable_low",
+    "usable_high",
+    "run_hours",  # usable hours in a row asked of a day
+    "days_with_run",  # share of days that have them
+    "n_years",
+    "coverage",
+    "interval_note",
+]
+
+#: Exposure to carburettor icing in daylight, one row per band.
+_ICING = ["n_hours", "n_years", "coverage", "method", "verified", "band", "share"]
+ICING_MONTHLY_COLUMNS = ["field", "month", *_ICING]
+ICING_HOURLY_COLUMNS = ["field", "month", "hour", *_ICING]
+
+#: Engine power as a share of that at ISA sea level, and what humidity takes.
+POWER_MONTHLY_COLUMNS = [
+    "field",
+    "aircraft",
+    "month",
+    "n_hours",
+    "n_years",
+    "coverage",
+    "method",
+    "power_p10",
+    "power_p50",
+    "power_p90",
+    "optimistic_p50",
+    "humidity_power_pct_p50",
+    "humidity_power_pct_p90",
+    "humidity_ft_p50",
+    "humidity_ft_p90",
+]
+
+#: Fields ranked for the fleet; a row for each aircraft, and one for the fleet with no aircraft.
+BASES_COLUMNS = [
+    "rank",
+    "field",
+    "aircraft",
+    "usable_hours_month",  # usable hours of the window in a month, mean over the year
+    "ci_low",
+    "ci_high",
+    "year_p10",  # the same of single years of the record
+    "year_p90",
+    "worst_season",
+    "worst_season_hours_month",
+    "days_with_run",
+    "share_1k",
+    "share_2_5k",
+    "icing_serious",  # share of the daylight hours with carburettor icing serious even in cruise
+    "n_years",
+    "interval_note",
+]
+BASE_DIFFERENCES_COLUMNS = [
+    "first",
+    "second",
+    "aircraft",
+    "difference_hours_month",
+    "ci_low",
+    "ci_high",
+    "interval_note",
+]
+
+#: A schedule flight by flight, by season, and by day.
+SCHEDULE_FLIGHTS_COLUMNS = [
+    "flight",
+    "field",
+    "aircraft",
+    "operation",
+    "when",
+    "clock_time",
+    "hours",  # local standard hours of the climatology it falls into
+    "mass_kg",
+    "flights",
+    "n_hours",
+    "n_years",
+    "coverage",
+    "shortfall",
+    "ci_low",
+    "ci_high",
+    "affected",  # flights of the season expected to fall short
+    "limiting",
+    "holds_in",
+    "mass_that_holds_kg",
+    "useful_load_kg",
+    "outcome",
+    "nearest_time",  # nearest clock time at which the shortfall is below the target
+    "nearest_shift_h",
+    "nearest_shortfall",
+    "never_met",  # yes: it fell short in every hour of the record
+    "interval_note",
+]
+SCHEDULE_SEASONS_COLUMNS = [
+    "season",  # empty: the whole schedule
+    "flights",
+    "unknown_flights",  # flights without figures
+    "affected",
+    "ci_low",
+    "ci_high",
+    "year_low",  # the best and the worst year of the record
+    "year_high",
+    "worst_year",
+    "n_years",
+    "interval_note",
+]
+SCHEDULE_DAYS_COLUMNS = ["date", "weekday", "flights", "unknown_flights", "affected", "share"]
+
 #: Columns of `StudyResult.station_use`: one row per field and station used at it.
 STATION_USE_COLUMNS = [
     "field",
@@ -120,6 +257,13 @@ FIELD_FRAMES: dict[str, list[str]] = {
     "near_saturation_monthly": NEAR_SATURATION_MONTHLY_COLUMNS,
     "near_saturation_hourly": NEAR_SATURATION_HOURLY_COLUMNS,
     "near_saturation_seasonal": NEAR_SATURATION_SEASONAL_COLUMNS,
+    "weights_monthly": WEIGHTS_MONTHLY_COLUMNS,
+    "weights_hourly": WEIGHTS_HOURLY_COLUMNS,
+    "weights_seasonal": WEIGHTS_SEASONAL_COLUMNS,
+    "windows_monthly": WINDOWS_MONTHLY_COLUMNS,
+    "icing_monthly": ICING_MONTHLY_COLUMNS,
+    "icing_hourly": ICING_HOURLY_COLUMNS,
+    "power_monthly": POWER_MONTHLY_COLUMNS,
     "station_use": STATION_USE_COLUMNS,
     "pressure_sources": ["field", "source", "share"],
     "estimates": ESTIMATE_COLUMNS,
@@ -168,6 +312,14 @@ class StudyResult:
     near_saturation_monthly, near_saturation_hourly, near_saturation_seasonal : DataFrame
         Columns `NEAR_SATURATION_MONTHLY_COLUMNS` and so on; months and seasons inside the
         hours window.
+    weights_monthly, weights_hourly, weights_seasonal : DataFrame
+        Columns `WEIGHTS_MONTHLY_COLUMNS` and so on; months and seasons inside the hours window.
+    windows_monthly : DataFrame
+        Columns `WINDOWS_MONTHLY_COLUMNS`.
+    icing_monthly, icing_hourly : DataFrame
+        Columns `ICING_MONTHLY_COLUMNS` and so on; without rows where no aircraft has a carburettor.
+    power_monthly : DataFrame
+        Columns `POWER_MONTHLY_COLUMNS`.
     station_use : DataFrame
         Columns `STATION_USE_COLUMNS`.
     pressure_sources : DataFrame
@@ -182,6 +334,10 @@ class StudyResult:
     findings : tuple of Finding
     provenance : dict
         JSON-ready: program version, hashes of the inputs, settings, stations.
+    bases, base_differences : DataFrame
+        Columns `BASES_COLUMNS`, `BASE_DIFFERENCES_COLUMNS`.
+    schedule_flights, schedule_seasons, schedule_days : DataFrame or None
+        Columns `SCHEDULE_FLIGHTS_COLUMNS` and so on, where the study has a schedule.
     scenarios : DataFrame or None
         Columns `climarisk.scenarios.SCENARIO_COLUMNS`, where variants were asked for.
     tiles : Tiles or None
@@ -203,6 +359,13 @@ class StudyResult:
     near_saturation_monthly: pd.DataFrame
     near_saturation_hourly: pd.DataFrame
     near_saturation_seasonal: pd.DataFrame
+    weights_monthly: pd.DataFrame
+    weights_hourly: pd.DataFrame
+    weights_seasonal: pd.DataFrame
+    windows_monthly: pd.DataFrame
+    icing_monthly: pd.DataFrame
+    icing_hourly: pd.DataFrame
+    power_monthly: pd.DataFrame
     station_use: pd.DataFrame
     pressure_sources: pd.DataFrame
     estimates: pd.DataFrame
@@ -211,5 +374,10 @@ class StudyResult:
     attributions: tuple[str, ...]
     findings: tuple[Finding, ...]
     provenance: dict[str, Any]
+    bases: pd.DataFrame
+    base_differences: pd.DataFrame
+    schedule_flights: pd.DataFrame | None = None
+    schedule_seasons: pd.DataFrame | None = None
+    schedule_days: pd.DataFrame | None = None
     scenarios: pd.DataFrame | None = None
     tiles: Tiles | None = None

@@ -20,7 +20,7 @@ from climarisk.climatology import (
 from climarisk.clock import LocalClock
 from climarisk.performance import CHECKS, N_MARGIN_CHECKS, Margins
 from climarisk.rules import YEARS, interval_notes
-from climarisk.study import Season
+from climarisk.seasons import Season
 
 #: Resamples of whole years, and the seed that makes them repeatable.
 RESAMPLES, SEED = 2000, 20_100
@@ -123,16 +123,15 @@ def shares_by_cell(
     error_ft = np.broadcast_to(hours.error_ft, len(hours.known))
     places = np.flatnonzero(pooled)
     cell, where = cells[places], hours.known[places]
-    index = cell * clock.n_years + clock.year[where]
+    shares = shortfall_by_cell(hours, pooled, cells, n_cells)
+    some = np.where(shares["n_hours"] > 0, shares["n_hours"], np.nan)
 
-    def count(weights: np.ndarray | None = None) -> np.ndarray:
-        return np.bincount(index, weights, n_cells * clock.n_years).reshape(n_cells, -1)
+    by_year = cell * clock.n_years + clock.year[where]
 
-    total = count()
-    fallen = np.stack([count(m.shortfall[places]) for m in levels], axis=-1)
-    n_hours, n_years = total.sum(axis=1), (total > 0).sum(axis=1)
-    some = np.where(n_hours > 0, n_hours, np.nan)
-    low, high = _intervals(fallen, total, n_years, hours.confidence, hours.persistence)
+    def count(weights: np.ndarray) -> np.ndarray:
+        sums = np.bincount(by_year, weights, n_cells * clock.n_years)
+        return sums.reshape(n_cells, -1).sum(axis=1)
+
     quantiles = segment_quantiles(
         np.concatenate([m.margin[places] for m in levels]),
         np.tile(cell, len(levels)),
@@ -141,12 +140,8 @@ def shares_by_cell(
     )
     return pd.DataFrame(
         {
-            "n_hours": n_hours,
-            "n_years": n_years,
-            "shortfall": fallen.sum(axis=(1, 2)) / len(levels) / some,
-            "ci_low": low,
-            "ci_high": high,
-            "outside_table": sum(count(m.outside_table[places]).sum(axis=1) for m in levels)
+            **{name: shares[name] for name in _SHARE},
+            "outside_table": sum(count(m.outside_table[places]) for m in levels)
             / len(levels)
             / some,
             "limiting": _limiting(
@@ -160,11 +155,64 @@ def shares_by_cell(
             "days_affected": _days_affected(
                 cell, clock.day[where], [m.shortfall[places] for m in levels], n_cells
             ),
-            "shortfall_central": count(hours.central.shortfall[places]).sum(axis=1) / some,
-            "transfer_error_ft": np.sqrt(count(error_ft[places] ** 2).sum(axis=1) / some),
+            "shortfall_central": count(hours.central.shortfall[places]) / some,
+            "transfer_error_ft": np.sqrt(count(error_ft[places] ** 2) / some),
+            "interval_note": shares["interval_note"],
+        }
+    )
+
+
+#: Columns of `shortfall_by_cell` that lead those of `shares_by_cell`.
+_SHARE = ("n_hours", "n_years", "shortfall", "ci_low", "ci_high")
+
+
+def shortfall_by_cell(
+    hours: Hours, pooled: np.ndarray, cells: np.ndarray, n_cells: int
+) -> pd.DataFrame:
+    """Shortfall share of each cell with its interval.
+
+    Parameters
+    ----------
+    hours, pooled, cells, n_cells
+        As for `shares_by_cell`.
+
+    Returns
+    -------
+    DataFrame, shape (n_cells, 6)
+        ``n_hours``, ``n_years``, ``shortfall``, ``ci_low``, ``ci_high``, ``interval_note``; NaN
+        where no hour enters.
+    """
+    total, fallen = _counts_by_year(hours, pooled, cells, n_cells)
+    n_hours, n_years = total.sum(axis=1), (total > 0).sum(axis=1)
+    some = np.where(n_hours > 0, n_hours, np.nan)
+    low, high = _intervals(fallen, total, n_years, hours.confidence, hours.persistence)
+    return pd.DataFrame(
+        {
+            "n_hours": n_hours,
+            "n_years": n_years,
+            "shortfall": fallen.sum(axis=(1, 2)) / fallen.shape[2] / some,
+            "ci_low": low,
+            "ci_high": high,
             "interval_note": interval_notes(n_years),
         }
     )
+
+
+def _counts_by_year(
+    hours: Hours, pooled: np.ndarray, cells: np.ndarray, n_cells: int
+) -> tuple[np.ndarray, np.ndarray]:
+    """Hours of each cell and year, and those that fall short at each level of the error.
+
+    Shapes (n_cells, n_years) and (n_cells, n_years, n_levels).
+    """
+    clock = hours.clock
+    places = np.flatnonzero(pooled)
+    index = cells[places] * clock.n_years + clock.year[hours.known[places]]
+    size = n_cells * clock.n_years
+    total = np.bincount(index, minlength=size).reshape(n_cells, -1)
+    short = [m.shortfall[places] for m in hours.levels or (hours.central,)]
+    fallen = np.stack([np.bincount(index, s, size).reshape(n_cells, -1) for s in short], axis=-1)
+    return total, fallen
 
 
 def _intervals(
@@ -280,7 +328,7 @@ def risk_tables(
         ``field`` and ``aircraft``.
     """
     clock, known = hours.clock, hours.known
-    complete = _complete(hours)
+    complete = complete_hours(hours)
     used, inside = complete.used[known], hours.inside[known]
     hourly = shares_by_cell(hours, used, clock.month_hour[known], 288)
     hourly.insert(0, "month", np.repeat(np.arange(1, 13), 24))
@@ -323,7 +371,7 @@ def margins_by_check(hours: Hours, checks: Sequence[str]) -> pd.DataFrame:
         margins for a limit, NaN in a month without an hour.
     """
     levels = hours.levels or (hours.central,)
-    places = np.flatnonzero(_complete(hours).used[hours.known] & hours.inside[hours.known])
+    places = np.flatnonzero(complete_hours(hours).used[hours.known] & hours.inside[hours.known])
     month = hours.clock.month[hours.known[places]]
     n_hours = np.bincount(month, minlength=12)
     some = np.where(n_hours > 0, n_hours, np.nan)
@@ -351,11 +399,28 @@ def margins_by_check(hours: Hours, checks: Sequence[str]) -> pd.DataFrame:
     return pd.concat(tables).sort_values("month", kind="stable", ignore_index=True)
 
 
-def _complete(hours: Hours) -> Completeness:
+def complete_hours(hours: Hours) -> Completeness:
     """The completeness rule applied to the hours with a value."""
     on_grid = np.zeros(len(hours.clock.hour), bool)
     on_grid[hours.known] = True
     return completeness(on_grid, hours.clock)
+
+
+def window_counts(hours: Hours) -> tuple[np.ndarray, np.ndarray]:
+    """Hours of each month of each year inside the hours window, and those that fall short.
+
+    Parameters
+    ----------
+    hours : Hours
+
+    Returns
+    -------
+    total : ndarray of int, shape (12, n_years)
+    fallen : ndarray, shape (12, n_years, n_levels)
+        At each level of the transfer error.
+    """
+    pooled = complete_hours(hours).used[hours.known] & hours.inside[hours.known]
+    return _counts_by_year(hours, pooled, hours.clock.month[hours.known], 12)
 
 
 def yearly_counts(hours: Hours) -> pd.DataFrame:
@@ -371,21 +436,14 @@ def yearly_counts(hours: Hours) -> pd.DataFrame:
         ``month`` 1-12, ``year``, ``n_hours``, ``shortfall_hours`` (the mean over the levels of
         the transfer error, so not whole); months without an hour are absent.
     """
-    clock = hours.clock
-    levels = hours.levels or (hours.central,)
-    places = np.flatnonzero(_complete(hours).used[hours.known] & hours.inside[hours.known])
-    where = hours.known[places]
-    index = clock.month[where] * clock.n_years + clock.year[where]
-    size = 12 * clock.n_years
-    total = np.bincount(index, minlength=size)
-    fallen = sum(np.bincount(index, m.shortfall[places], size) for m in levels) / len(levels)
-    some = np.flatnonzero(total)
+    total, fallen = window_counts(hours)
+    month, year = np.nonzero(total)
     return pd.DataFrame(
         {
-            "month": some // clock.n_years + 1,
-            "year": some % clock.n_years + clock.first_year,
-            "n_hours": total[some],
-            "shortfall_hours": np.asarray(fallen)[some],
+            "month": month + 1,
+            "year": year + hours.clock.first_year,
+            "n_hours": total[month, year],
+            "shortfall_hours": (fallen.sum(axis=2) / fallen.shape[2])[month, year],
         }
     )
 

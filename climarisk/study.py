@@ -2,8 +2,8 @@
 
 from __future__ import annotations
 
-import datetime as dt
 import re
+from collections.abc import Mapping
 from dataclasses import dataclass, field
 from pathlib import Path
 from typing import Annotated, Any, Literal
@@ -14,21 +14,15 @@ from pydantic import field_validator, model_validator
 from climarisk.aircraft import AircraftProfile, read_aircraft
 from climarisk.errors import InputError
 from climarisk.fields import Field, read_fields, read_runways
+from climarisk.flights import Flight, read_flights
 from climarisk.inputs import Label, Name, Strict, load_toml, matching, nearest, repeated, validate
 from climarisk.results import Tiles
+from climarisk.seasons import Season, read_seasons, same_season_names, season_text
 from climarisk.stations import Station, read_stations
 
 _Year = Annotated[int, Ge(1800), Le(2200)]
 #: Of a band: one in ten thousand is less than any record can tell apart.
 _Edge = Annotated[float, Ge(0.0001), Lt(1)]
-
-#: Meteorological seasons, used where a study names none: month numbers.
-DEFAULT_SEASONS: dict[str, tuple[int, ...]] = {
-    "DJF": (12, 1, 2),
-    "MAM": (3, 4, 5),
-    "JJA": (6, 7, 8),
-    "SON": (9, 10, 11),
-}
 
 
 class _Period(Strict):
@@ -124,16 +118,32 @@ class _Map(Strict):
         return Tiles(self.tiles, self.tiles_attribution)
 
 
+#: The planning year of a study that names none: the year after its record, but no year before
+#: this one, so that clock times follow the rules of today.
+FIRST_PLANNING_YEAR = 2027
+
+
+class _Planning(Strict):
+    holds_in: Annotated[float, Ge(0.5), Le(1)] = 0.90
+    target: Annotated[float, Gt(0), Lt(1)] = 0.05
+    consecutive_hours: Annotated[int, Ge(1), Le(24)] = 4
+    carburettor_icing: Literal["chart", "physical"] = "chart"
+    year: _Year | None = None
+
+
 class _StudyFile(Strict):
     title: Name
     fields: Name
     runways: Name
     aircraft: Annotated[list[Name], MinLen(1)]
+    schedule: Name | None = None
     period: _Period
     weather: _Weather = _Weather()
     hours: _Hours = _Hours()
     seasons: dict[Label, Annotated[list[str], Len(2, 2)]] = {}
     risk: _Risk = _Risk()
+    planning: _Planning = _Planning()
+    fleet: dict[str, Annotated[float, Ge(0), Le(10_000)]] = {}
     map: _Map = _Map()
 
 
@@ -142,18 +152,31 @@ _MOST_PINNED_M = 2000.0
 
 
 @dataclass(frozen=True)
-class Season:
-    """A named part of the year.
+class Planning:
+    """What the planning answers ask for.
 
     Parameters
     ----------
-    name : str
-    days : frozenset of (int, int)
-        Month and day of each day in it; 29 February included where its neighbours are.
+    holds_in : float
+        Share of the hours in which a mass must hold, 0.5-1.
+    target : float
+        Shortfall share below which an hour of the day is usable, 0-1.
+    consecutive_hours : int
+        Usable hours in a row that make a day worth while, 1-24.
+    carburettor_icing : {"chart", "physical"}
+        How exposure to carburettor icing is judged.
+    year : int
+        The year whose calendar and clock the answers are given in.
+    fleet : dict of str to float
+        How many there are of each aircraft of the study.
     """
 
-    name: str
-    days: frozenset[tuple[int, int]]
+    holds_in: float = 0.90
+    target: float = 0.05
+    consecutive_hours: int = 4
+    carburettor_icing: str = "chart"
+    year: int = FIRST_PLANNING_YEAR
+    fleet: Mapping[str, float] = field(default_factory=dict)
 
 
 @dataclass(frozen=True)
@@ -192,6 +215,9 @@ class Study:
         What stays unchanged when the air is warmer.
     tiles : Tiles or None
         Background images for the map; they shape no number.
+    planning : Planning
+    flights : tuple of Flight
+        The schedule; empty without one.
     """
 
     path: Path
@@ -213,6 +239,8 @@ class Study:
     warmer_k: float = 0.0
     warmer_holds: str = "relative humidity"
     tiles: Tiles | None = None
+    planning: Planning = Planning()
+    flights: tuple[Flight, ...] = ()
 
     @property
     def name(self) -> str:
@@ -227,20 +255,25 @@ class Study:
             "source": self.source,
             "radius_km": self.radius_km,
             "window": self.window if isinstance(self.window, str) else list(self.window),
-            "seasons": {s.name: _season_text(s) for s in self.seasons},
+            "seasons": {s.name: season_text(s) for s in self.seasons},
             "bands": list(self.bands),
             "confidence": self.confidence,
             "humidity_in_tables": self.humidity_in_tables,
+            "planning": vars(self.planning) | {"fleet": dict(self.planning.fleet)},
         }
 
 
-def read_study(path: Path | str) -> Study:
+def read_study(path: Path | str, schedule: Path | None = None, year: int | None = None) -> Study:
     """The study of a study file.
 
     Parameters
     ----------
     path : Path or str
         The study TOML, or the folder that holds it as ``study.toml``.
+    schedule : Path, optional
+        A file of flights in place of the study's own.
+    year : int, optional
+        A planning year in place of the study's own.
 
     Raises
     ------
@@ -252,12 +285,12 @@ def read_study(path: Path | str) -> Study:
         path = path / "study.toml"
     problems: list[str] = []
     content = load_toml(path)
-    problems += _same_season_names(content, path)
+    problems += same_season_names(content, path)
     checked = validate(_StudyFile, content, str(path), problems)
     if checked is None or problems:
         raise InputError(problems)
     folder = path.parent
-    seasons = _seasons(checked.seasons, path, problems)
+    seasons = read_seasons(checked.seasons, path, problems)
     before = len(problems)
     fields = _collect(read_fields, problems, folder / checked.fields)
     whole = len(problems) == before
@@ -268,12 +301,21 @@ def read_study(path: Path | str) -> Study:
     stations = _stations(checked.weather, path, problems)
     if fields and stations and len(problems) == before:
         problems += _pin_problems(fields, stations, folder / checked.fields)
+    planning = _planning(checked, year, aircraft, path, problems)
+    if schedule is None and checked.schedule is not None:
+        schedule = folder / checked.schedule
+    flights = []
+    if schedule is not None and not problems:
+        names = {p.id: p for p in aircraft}, {s.name: s for s in seasons}
+        flights = _collect(read_flights, problems, schedule, fields, *names, planning.year)
     if problems:
         raise InputError(problems)
     inputs = [path, folder / checked.fields, folder / checked.runways, *aircraft_paths]
     if checked.weather.stations:
         inputs.append(folder / checked.weather.stations)
         inputs += sorted({s.mapping_path for s in stations if s.mapping_path is not None})
+    if schedule is not None:
+        inputs.append(schedule)
     return Study(
         path=path,
         title=checked.title,
@@ -292,6 +334,36 @@ def read_study(path: Path | str) -> Study:
         seed=checked.weather.seed,
         inputs=tuple(inputs),
         tiles=checked.map.source(),
+        planning=planning,
+        flights=tuple(flights),
+    )
+
+
+def _planning(
+    checked: _StudyFile,
+    year: int | None,
+    aircraft: list[AircraftProfile],
+    path: Path,
+    problems: list[str],
+) -> Planning:
+    known = [profile.id for profile in aircraft]
+    for name in checked.fleet:
+        if aircraft and name not in known:
+            problems.append(
+                f"{path}: [fleet] has {name!r}, which is no aircraft of the study; "
+                f"{nearest(name, known)}"
+            )
+    fleet = {name: checked.fleet.get(name, 0.0 if checked.fleet else 1.0) for name in known}
+    if aircraft and not any(fleet.values()):
+        problems.append(f"{path}: [fleet] holds no aircraft; give one number above zero.")
+    asked = checked.planning
+    return Planning(
+        asked.holds_in,
+        asked.target,
+        asked.consecutive_hours,
+        asked.carburettor_icing,
+        year or asked.year or max(checked.period.last_year + 1, FIRST_PLANNING_YEAR),
+        fleet,
     )
 
 
@@ -356,62 +428,3 @@ def _pin_problems(fields: list[Field], stations: list[Station], path: Path) -> l
                     "sense. Check both elevations."
                 )
     return problems
-
-
-def _seasons(named: dict[str, list[str]], path: Path, problems: list[str]) -> list[Season]:
-    if not named:
-        year = _days_of_year()
-        return [
-            Season(name, frozenset(day for day in year if day[0] in months))
-            for name, months in DEFAULT_SEASONS.items()
-        ]
-    seasons = []
-    for name, (first, last) in named.items():
-        try:
-            seasons.append(Season(name, _days_between(_month_day(first), _month_day(last))))
-        except ValueError as error:
-            problems.append(f"{path}: [seasons] {name!r}: {error}")
-    return seasons
-
-
-def _same_season_names(content: dict[str, Any], path: Path) -> list[str]:
-    """Problems with season names that differ in the spaces around them only."""
-    names = content.get("seasons", {})
-    if not isinstance(names, dict):
-        return []
-    return [
-        f"{path}: [seasons] the name {twice!r} comes twice; rename one."
-        for twice in repeated(str(name).strip() for name in names)
-    ]
-
-
-def _month_day(text: str) -> tuple[int, int]:
-    try:
-        month, day = (int(part) for part in text.split("-"))
-        dt.date(2000, month, day)
-    except ValueError:
-        raise ValueError(f'{text!r} is no date; give month and day as "06-15".') from None
-    return month, day
-
-
-def _days_of_year() -> list[tuple[int, int]]:
-    first = dt.date(2000, 1, 1)  # a leap year, so that 29 February is among them
-    days = (first + dt.timedelta(days=i) for i in range(366))
-    return [(d.month, d.day) for d in days]
-
-
-def _days_between(first: tuple[int, int], last: tuple[int, int]) -> frozenset[tuple[int, int]]:
-    """Days from `first` to `last`, both included, across New Year if `last` is earlier."""
-    if first <= last:
-        return frozenset(day for day in _days_of_year() if first <= day <= last)
-    return frozenset(day for day in _days_of_year() if day >= first or day <= last)
-
-
-def _season_text(season: Season) -> list[str]:
-    """First and last day of a season, as ``MM-DD``."""
-    year = _days_of_year()
-    inside = [day in season.days for day in year]
-    starts = [i for i in range(366) if inside[i] and not inside[i - 1]]
-    ends = [i for i in range(366) if inside[i] and not inside[(i + 1) % 366]]
-    first, last = (starts[0], ends[0]) if starts else (0, 365)
-    return [f"{m:02d}-{d:02d}" for m, d in (year[first], year[last])]

@@ -20,7 +20,7 @@ from climarisk.climatology import (
 )
 from climarisk.clock import LocalClock
 from climarisk.rules import DAYS
-from climarisk.study import Season
+from climarisk.seasons import Season
 
 #: A trend or a break needs this many years with a value.
 TREND_YEARS = 15

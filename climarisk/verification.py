@@ -19,9 +19,10 @@ from climarisk.atmosphere import (
 from climarisk.clock import hour_grid, local_clock
 from climarisk.errors import InputError
 from climarisk.fields import Field
-from climarisk.pipeline import MOST_HIDDEN, errors_of_variables, serving, stations_on_grid
 from climarisk.progress import Progress, quiet
+from climarisk.region import MOST_HIDDEN, serving, stations_on_grid
 from climarisk.reporting import FieldError, estimate, field_findings
+from climarisk.scene import errors_of_variables
 from climarisk.study import Study
 from climarisk.timing import Misdating
 from climarisk.transfer import (

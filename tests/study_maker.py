@@ -12,6 +12,15 @@ import numpy as np
 
 FIRST_YEAR, LAST_YEAR = 2021, 2022
 
+#: Files of a run that are there only where scenarios are asked for, or the study has a schedule.
+ONLY_WHERE_ASKED = {
+    "scenarios.csv",
+    "schedule.html",
+    "schedule_flights.csv",
+    "schedule_seasons.csv",
+    "schedule_days.csv",
+}
+
 FIELDS = """\
 id,name,latitude,longitude,elevation_m,timezone,stations
 LOW,Low meadow (invented),46.50,11.00,500,Europe/Rome,VALE

@@ -347,3 +347,38 @@ def test_distances_rise_and_climb_falls_by_the_sign_table():
     signs = {(o, q): s for o, quantities in OPERATIONS.items() for q, s in quantities.items()}
     assert {s for (o, _), s in signs.items() if o != "climb"} == {1}
     assert signs["climb", "rate_ft_min"] == -1
+
+
+# ---- critical altitude of a turbocharged engine ----------------------------------------------
+
+NATURAL = 'aspiration = "natural"'
+
+
+@pytest.mark.parametrize("altitude", [0, 12_500, 60_000])
+def test_a_turbocharged_engine_may_name_its_critical_altitude(tmp_path, altitude):
+    engine = f'aspiration = "turbocharged"\ncritical_altitude_ft = {altitude}'
+    profile, problems = changed(tmp_path, (NATURAL, engine))
+    assert problems == []
+    assert profile.critical_altitude_ft == altitude
+
+
+@pytest.mark.parametrize("aspiration", ["natural", "turbocharged", "diesel", "electric"])
+def test_no_critical_altitude_is_invented(tmp_path, aspiration):
+    profile, problems = changed(tmp_path, (NATURAL, f'aspiration = "{aspiration}"'))
+    assert problems == []
+    assert profile.critical_altitude_ft is None
+
+
+@pytest.mark.parametrize("aspiration", ["natural", "diesel", "electric"])
+def test_a_critical_altitude_of_another_engine_is_refused(tmp_path, aspiration):
+    engine = f'aspiration = "{aspiration}"\ncritical_altitude_ft = 12500'
+    assert only_problem(tmp_path, (NATURAL, engine)) == (
+        f"{tmp_path / 'plane.toml'}: [engine] critical_altitude_ft is 12500 but the aspiration is "
+        f"{aspiration}; only a turbocharged engine has one: remove it."
+    )
+
+
+@pytest.mark.parametrize("altitude", ["-1", "60001", "nan", '"high"'])
+def test_a_critical_altitude_outside_0_to_60000_ft_is_refused(tmp_path, altitude):
+    engine = f'aspiration = "turbocharged"\ncritical_altitude_ft = {altitude}'
+    assert "critical_altitude_ft" in only_problem(tmp_path, (NATURAL, engine))

@@ -15,8 +15,10 @@ from climarisk.fields import Field, RunwayDirection
 from climarisk.performance import CHECKS, Margins, TableAir, checks_of, margins
 from climarisk.pipeline import field_tables, run_study
 from climarisk.progress import quiet
+from climarisk.region import Region
 from climarisk.risk import Hours, margins_by_check, risk_tables
-from climarisk.study import Season, read_study
+from climarisk.seasons import Season
+from climarisk.study import read_study
 from climarisk.transfer import on_grid
 from climarisk.transfer_error import planning_error
 from climarisk.weather import load_weather
@@ -377,7 +379,7 @@ def test_shortfall_lies_between_its_checks_at_a_field_of_carried_air(tmp_path, w
         error = replace(error, scale=np.zeros((12, 2)))
     failing = 0
     for field in study.fields:
-        frames = field_tables(study, field, airs, grid, error).frames
+        frames = field_tables(study, field, Region(grid, tuple(airs), error)).frames
         keys = ["field", "aircraft", "month"]
         whole = frames["risk_monthly"].set_index(keys)
         checks = frames["margins_monthly"].groupby(keys)

@@ -8,13 +8,13 @@ import sys
 from pathlib import Path
 
 import pytest
-from study_maker import FIELDS, RUNWAYS, SYNTHETIC_STATIONS
+from study_maker import FIELDS, ONLY_WHERE_ASKED, RUNWAYS, SYNTHETIC_STATIONS
 
 import climarisk.cli
 from climarisk import study as study_module
 from climarisk.outputs.tables import OUTPUT_FILES
 
-COMMANDS = ("demo", "run", "check", "fetch")
+COMMANDS = ("demo", "run", "check", "fetch", "schedule", "bases", "evidence")
 CONTRACT = {
     "map.html",
     "distributions_monthly.csv",
@@ -35,7 +35,7 @@ CONTRACT = {
     "study.json",
 }
 #: What a run without scenarios writes: the contract, which is named here, and all that came since.
-FILES = set(OUTPUT_FILES) - {"scenarios.csv"}
+FILES = set(OUTPUT_FILES) - ONLY_WHERE_ASKED
 
 
 def tree(folder: Path) -> set[str]:
@@ -426,3 +426,84 @@ def test_a_run_never_overwrites_a_file_of_the_study(study_folder, command):
     before = (study.folder / "fields.geojson").read_bytes()
     command("run", study.file, "--out", study.folder)
     assert (study.folder / "fields.geojson").read_bytes() == before
+
+
+# ---------------------------------------------------------------- schedule, bases, evidence
+
+FLIGHTS = """\
+flight,field,aircraft,operation,season,weekdays,time
+morning,LOW,trainer,both,summer,Mon-Fri,08:00
+noon,TOP,trainer,takeoff,summer,,12:30
+"""
+
+
+def with_flights(study_folder, text: str = FLIGHTS):
+    study = study_folder("synthetic")
+    season = next(s.name for s in study_module.read_study(study.file).seasons)
+    return study.write("flights.csv", text.replace("summer", season))
+
+
+def test_schedule_writes_its_page_and_tables_and_tells_how_many_fall_short(
+    study_folder, command, tmp_path
+):
+    study = with_flights(study_folder)
+    done = command("schedule", study.file, study.folder / "flights.csv", "--out", "planned")
+    assert done.code == 0, done.err
+    assert tree(tmp_path / "planned") == ONLY_WHERE_ASKED - {"scenarios.csv"}
+    assert "flights" in done.out
+    assert "planned" in done.out
+
+
+def test_a_run_whose_study_names_a_schedule_writes_it_too(study_folder, command, tmp_path):
+    study = with_flights(study_folder)
+    study.change("study.toml", "[period]", 'schedule = "flights.csv"\n[period]')
+    assert command("run", study.file, "--out", "results").code == 0
+    alone = command("schedule", study.file, study.folder / "flights.csv", "--out", "alone")
+    assert alone.code == 0
+    assert tree(tmp_path / "results") == set(OUTPUT_FILES) - {"scenarios.csv"}
+    for name in tree(tmp_path / "alone"):
+        assert (tmp_path / "alone" / name).read_bytes() == (
+            tmp_path / "results" / name
+        ).read_bytes(), name
+
+
+def test_the_year_of_the_call_counts_for_the_schedule(study_folder, command, tmp_path):
+    study = with_flights(study_folder)
+    for year in ("2027", "2028"):
+        arguments = (study.file, study.folder / "flights.csv", "--out", year, "--year", year)
+        assert command("schedule", *arguments).code == 0
+        assert f"{year}-" in (tmp_path / year / "schedule_days.csv").read_text()
+
+
+def test_a_schedule_with_problems_is_refused_whole(study_folder, command, tmp_path):
+    study = with_flights(study_folder, FLIGHTS.replace("TOP", "TIP").replace("08:00", "25:00"))
+    done = command("schedule", study.file, study.folder / "flights.csv", "--out", "planned")
+    assert done.code == 1
+    assert len(done.errors) == 2, "both problems, a line each"
+    assert not (tmp_path / "planned").exists()
+
+
+def test_bases_writes_its_page_and_tables_and_names_the_best(study_folder, command, tmp_path):
+    done = command("bases", study_folder().file, "--out", "sides")
+    assert done.code == 0
+    assert tree(tmp_path / "sides") == {"bases.html", "bases.csv", "base_differences.csv"}
+    assert "Low meadow" in done.out
+
+
+def test_evidence_is_written_and_holds_when_checked(command, study_folder, tmp_path):
+    study = study_folder()
+    told = command("evidence", study.file, "--out", tmp_path / "filed")
+    assert told.code == 0
+    assert "SHA-256 of evidence.zip: " in told.out
+    checked = command("evidence", "--check", tmp_path / "filed")
+    assert checked.code == 0
+    assert "run again, the study gives the same" in checked.out
+    (tmp_path / "filed" / "trends.csv").write_text("")
+    spoilt = command("evidence", "--check", tmp_path / "filed")
+    assert (spoilt.code, len(spoilt.errors)) == (1, 1)
+    assert "trends.csv" in spoilt.out
+
+
+@pytest.mark.parametrize("arguments", [(), ("--study", "x.toml"), ("x.toml", "--check", "y")])
+def test_evidence_with_the_wrong_arguments_is_a_usage_error(command, arguments):
+    assert command("evidence", *arguments).code == 2

@@ -15,7 +15,9 @@ from climarisk.fields import Field
 from climarisk.near_saturation import SPREADS_K, near_saturation
 from climarisk.pipeline import field_tables, run_study
 from climarisk.progress import quiet
-from climarisk.study import Season, read_study
+from climarisk.region import Region
+from climarisk.seasons import Season
+from climarisk.study import read_study
 from climarisk.transfer import air_at_field, candidates, on_grid
 from climarisk.transfer_error import planning_error
 from climarisk.verify import lapse_for
@@ -376,7 +378,9 @@ def carried(tmp_path_factory):
     airs = [on_grid(s.station, s.hours, grid, s.elevation_trusted) for s in weather.stations]
     none = replace(PLANNED, scale=np.zeros((12, 2)))
     frames = {
-        (field.id, error is PLANNED): field_tables(study, field, airs, grid, error).frames
+        (field.id, error is PLANNED): field_tables(
+            study, field, Region(grid, tuple(airs), error)
+        ).frames
         for field in study.fields
         for error in (PLANNED, none)
     }

@@ -7,7 +7,7 @@ import independent
 import numpy as np
 import pandas as pd
 import pytest
-from study_maker import StudyFolder
+from study_maker import ONLY_WHERE_ASKED, StudyFolder
 
 from climarisk.outputs.tables import OUTPUT_FILES, write_outputs
 from climarisk.pipeline import run_study
@@ -35,7 +35,7 @@ CONTRACT = {
     "study.json",
 }
 #: What a run without scenarios writes: the contract, which is named here, and all that came since.
-FILES = set(OUTPUT_FILES) - {"scenarios.csv"}
+FILES = set(OUTPUT_FILES) - ONLY_WHERE_ASKED
 PERCENTILES = [f"p{q:02d}" for q in independent.PERCENTS]
 #: Cells (month, hour) with an hour whose only pressure is a sea-level one: the program inverts it
 #: as the station's own record shows, the second computation by the formula.

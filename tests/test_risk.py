@@ -11,7 +11,7 @@ from climarisk import risk
 from climarisk.clock import hour_grid, in_window, local_clock
 from climarisk.fields import Field
 from climarisk.performance import CHECKS, Margins
-from climarisk.study import Season
+from climarisk.seasons import Season
 from climarisk.transfer_error import planning_error
 
 FIELD = Field("F", "Field", -33.0, 0.0, 0.0, "Etc/GMT")

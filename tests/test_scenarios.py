@@ -7,12 +7,15 @@ import pandas as pd
 import pytest
 from study_maker import FIELDS, study_toml
 
-from climarisk.climatology import completeness
+from climarisk.climatology import completeness, monthly_distribution
 from climarisk.clock import hour_grid, in_window, local_clock
 from climarisk.errors import InputError
 from climarisk.pipeline import evaluate, run_study
 from climarisk.progress import quiet
-from climarisk.scenarios import SCENARIO_COLUMNS, compare, scenarios
+from climarisk.region import region_of
+from climarisk.risk import risk_tables
+from climarisk.scenarios import SCENARIO_COLUMNS, compare, scenarios, sensitivity, with_mass
+from climarisk.scene import scene_of, scored
 from climarisk.study import read_study
 from climarisk.transfer import on_grid
 from climarisk.weather import load_weather
@@ -200,3 +203,118 @@ def test_variant_is_the_study_but_for_what_it_changes(scene):
     assert (warmer.study.warmer_k, warmer.study.warmer_holds) == (2.0, VAPOUR)
     assert (part.study.first_year, part.study.last_year) == (2022, 2022)
     assert replace(part.study, first_year=2021) == study
+
+
+# ---- other masses and factors ----------------------------------------------------------------
+
+
+def without(scene, **profile):
+    """The study with every aircraft changed."""
+    study = scene[1]
+    return replace(study, aircraft=tuple(replace(a, **profile) for a in study.aircraft))
+
+
+def long_way(study, weather):
+    """The monthly figures of a study by the tables of a run, field by field."""
+    region = region_of(study, weather)
+    rows = []
+    for field in study.fields:
+        scene = scene_of(study, field, region)
+        levels, sd = scene.levels["density_altitude"], scene.sds["density_altitude"]
+        air = monthly_distribution(levels, scene.clock, scene.inside, sd)
+        for profile in study.aircraft:
+            table = risk_tables(scored(scene, profile), study.seasons)[0]
+            table[["p50", "p90"]] = air[["p50", "p90"]]
+            rows.append(table.assign(field=field.id, aircraft=profile.id))
+    return pd.concat(rows, ignore_index=True)
+
+
+@pytest.fixture(scope="module")
+def tried(scene):
+    """The sensitivity of the small study, scenario by scenario."""
+    _, study, weather, base = scene
+    asked = sensitivity(study)
+    table = compare(base, asked, weather)
+    return asked, [table[table["scenario"] == s.name] for s in asked]
+
+
+@pytest.mark.parametrize("number", [1, 4, 6])
+def test_scenario_is_a_run_of_its_study_to_the_last_bit(scene, tried, number):
+    asked, tables = tried
+    table, expected = tables[number], long_way(asked[number].study, scene[2])
+    for column in ("field", "aircraft", "month", "n_hours", "n_years"):
+        assert list(table[column]) == list(expected[column])
+    for column in ("shortfall", "ci_low", "ci_high"):
+        np.testing.assert_array_equal(table[column], expected[column])
+    for p in ("p50", "p90"):
+        np.testing.assert_array_equal(table[f"density_altitude_{p}_ft"], expected[p])
+    change = expected["shortfall"] - scene[3].risk_monthly["shortfall"]
+    np.testing.assert_allclose(table["shortfall_change"], change, rtol=0, atol=1e-12)
+
+
+def test_sensitivity_is_air_masses_and_factors(scene, tried):
+    asked, tables = tried
+    assert [s.name for s in asked] == [
+        "air +1 K, relative humidity unchanged",
+        "air +2 K, relative humidity unchanged",
+        "air +3 K, relative humidity unchanged",
+        "mass -5 %",
+        # 740 kg x 1.05 = 777 kg, the maximum is 760; 1100 kg x 1.05 = 1155 of 1200 kg.
+        "mass +5 %, stopped at the maximum mass: trainer",
+        "factors 1.0",
+        "regulatory factors (take-off 1.25, landing 1/0.7)",
+    ]
+    assert [len(t) for t in tables] == [3 * 2 * 12] * 7
+    masses = [[a.planning_kg for a in s.study.aircraft] for s in asked[3:5]]
+    assert masses == [pytest.approx([1045.0, 703.0]), pytest.approx([1155.0, 760.0])]
+    plain, regulatory = (s.study.aircraft for s in asked[5:])
+    assert {(a.takeoff_factor, a.landing_factor) for a in plain} == {(1.0, 1.0)}
+    # Regulation (EU) 965/2012: CAT.POL.A.305, 1.25 of the take-off distance within TORA without
+    # stopway and clearway; CAT.POL.A.330, landing within 70 % of the landing distance available.
+    assert {(a.takeoff_factor, a.landing_factor) for a in regulatory} == {(1.25, 1 / 0.70)}
+
+
+def test_less_mass_and_smaller_factors_never_raise_the_shortfall(tried):
+    light, heavy, plain = tried[1][3:6]
+    for table, sign in ((light, -1), (plain, -1), (heavy, 1)):
+        assert (sign * table["shortfall_change"].dropna() >= -1e-12).all()
+    assert (heavy["shortfall_change"] > 0.01).any()
+
+
+def test_mass_and_factors_leave_the_air_alone(tried):
+    for table in tried[1][3:]:
+        assert (table["density_altitude_p50_change_ft"].dropna() == 0.0).all()
+        assert (table["density_altitude_p90_change_ft"].dropna() == 0.0).all()
+
+
+@pytest.mark.parametrize(
+    ("planning", "change", "kg", "told"),
+    [
+        (750.0, 0.05, 760.0, ", stopped at the maximum mass: tourer trainer"),
+        (760.0, 0.05, 760.0, ", stopped at the maximum mass: tourer trainer"),
+        (530.0, -0.05, 520.0, ", stopped at the empty mass: tourer trainer"),
+        (700.0, -0.05, 665.0, ""),
+    ],
+)
+def test_mass_stays_between_empty_and_maximum(scene, planning, change, kg, told):
+    study = without(scene, planning_kg=planning, empty_kg=520.0, maximum_kg=760.0)
+    made = with_mass(study, change)
+    assert made.name == f"mass {100 * change:+g} %{told}"
+    assert [a.planning_kg for a in made.study.aircraft] == pytest.approx([kg, kg])
+
+
+def test_mass_above_the_heaviest_table_is_told(scene):
+    study = without(scene, planning_kg=755.0, maximum_kg=900.0)
+    assert with_mass(study, 0.05).name == "mass +5 %, above the heaviest table: trainer"
+
+
+def test_years_without_a_station_are_refused(scene):
+    _, study, weather, base = scene
+    first = [s.hours.index < pd.Timestamp("2021-12-31", tz="UTC") for s in weather.stations]
+    stations = [
+        replace(s, hours=s.hours[kept], derived=s.derived[kept])
+        for s, kept in zip(weather.stations, first, strict=True)
+    ]
+    empty = replace(weather, stations=tuple(stations))
+    with pytest.raises(InputError, match="no field of the study has a usable station in 2022-2022"):
+        compare(base, scenarios(study, [], RELATIVE, ["2022-2022"]), empty)

@@ -19,7 +19,7 @@ from climarisk.climatology import (
 from climarisk.clock import hour_grid, in_window, local_clock
 from climarisk.fields import Field
 from climarisk.results import PERCENTILES
-from climarisk.study import Season
+from climarisk.seasons import Season
 
 FIELD = Field("F", "Field", 46.5, 11.0, 500.0, "Europe/Rome")
 YEAR = frozenset((m, d) for m in range(1, 13) for d in range(1, monthrange(2020, m)[1] + 1))

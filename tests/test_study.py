@@ -8,7 +8,8 @@ import pytest
 from study_maker import FIELDS, study_toml
 
 from climarisk.errors import InputError
-from climarisk.study import DEFAULT_SEASONS, read_study
+from climarisk.seasons import DEFAULT_SEASONS
+from climarisk.study import read_study
 
 
 def problems_of(study) -> tuple[str, ...]:
@@ -382,3 +383,72 @@ def test_the_shared_studies_read_without_a_problem(shared, name):
     assert study.fields
     assert all(f.runways for f in study.fields)
     assert all(s.files for s in study.stations)
+
+
+# What the planning answers ask for
+
+
+def with_tables(study_folder, tables: str):
+    study = study_folder()
+    return study.write("study.toml", study.file.read_text(encoding="utf-8") + "\n" + tables)
+
+
+def test_planning_has_the_defaults_of_the_readme(study_folder):
+    planning = read_study(study_folder().file).planning
+    assert (planning.holds_in, planning.target, planning.consecutive_hours) == (0.90, 0.05, 4)
+    assert planning.carburettor_icing == "chart"
+    assert planning.fleet == {"tourer": 1.0, "trainer": 1.0}
+
+
+@pytest.mark.parametrize(("last", "year"), [(2022, 2027), (2026, 2027), (2030, 2031)])
+def test_the_planning_year_follows_the_record_and_never_lies_before_today_s_clocks(
+    study_folder, last, year
+):
+    study = changed(study_folder, "last_year = 2022", f"last_year = {last}")
+    assert read_study(study.file).planning.year == year
+
+
+def test_the_planning_year_of_the_call_goes_before_that_of_the_file(study_folder):
+    study = with_tables(study_folder, "[planning]\nyear = 2029\n")
+    assert read_study(study.file).planning.year == 2029
+    assert read_study(study.file, year=2031).planning.year == 2031
+
+
+def test_a_fleet_leaves_out_what_it_does_not_name(study_folder):
+    study = with_tables(study_folder, "[fleet]\ntrainer = 6\n")
+    assert read_study(study.file).planning.fleet == {"tourer": 0.0, "trainer": 6.0}
+
+
+def test_an_unknown_aircraft_in_the_fleet_is_told_with_the_nearest(study_folder):
+    study = with_tables(study_folder, "[fleet]\ntrainr = 6\n")
+    problems = problems_of(study)
+    assert any("'trainr'" in p and "did you mean 'trainer'?" in p for p in problems)
+
+
+def test_a_fleet_of_nothing_is_refused(study_folder):
+    study = with_tables(study_folder, "[fleet]\ntrainer = 0\n")
+    assert "holds no aircraft" in only_problem(study)
+
+
+@pytest.mark.parametrize(
+    "key",
+    [
+        "holds_in = 0.4",
+        "holds_in = 1.1",
+        "target = 0",
+        "target = 1",
+        "consecutive_hours = 0",
+        "consecutive_hours = 25",
+        "consecutive_hours = 2.5",
+        'carburettor_icing = "chrt"',
+        "year = 1500",
+    ],
+)
+def test_a_planning_value_out_of_its_range_is_refused(study_folder, key):
+    study = with_tables(study_folder, f"[planning]\n{key}\n")
+    assert key.split(" = ")[0] in only_problem(study)
+
+
+def test_a_schedule_that_is_not_there_is_told(study_folder):
+    study = changed(study_folder, "[period]", 'schedule = "flights.csv"\n[period]')
+    assert "flights.csv" in only_problem(study, "flights.csv")

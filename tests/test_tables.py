@@ -13,7 +13,7 @@ import geopandas
 import numpy as np
 import pandas as pd
 import pytest
-from study_maker import StudyFolder, asos_text, make_study
+from study_maker import ONLY_WHERE_ASKED, StudyFolder, asos_text, make_study
 
 from climarisk.errors import OutputError
 from climarisk.outputs import tables
@@ -49,7 +49,7 @@ COLUMNS = {
 }
 CONTRACT = {*COLUMNS, "map.html", "fields.gpkg", "fields.geojson", "study.json"}
 #: What a run without scenarios writes: the contract, which is named here, and all that came since.
-FILES = set(tables.OUTPUT_FILES) - {"scenarios.csv"}
+FILES = set(tables.OUTPUT_FILES) - ONLY_WHERE_ASKED
 UNITS = {
     "density_altitude": "ft",
     "pressure_altitude": "ft",

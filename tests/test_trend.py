@@ -15,7 +15,7 @@ from scipy import stats
 from climarisk.climatology import completeness
 from climarisk.clock import hour_grid, local_clock
 from climarisk.fields import Field
-from climarisk.study import Season
+from climarisk.seasons import Season
 from climarisk.trend import (
     TREND_COLUMNS,
     TrendInput,

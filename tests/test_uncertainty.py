@@ -10,8 +10,10 @@ from study_maker import RUNWAYS, make_study, study_toml
 from climarisk.atmosphere import density_altitude_ft, pressure_altitude_ft, virtual_temperature_c
 from climarisk.clock import hour_grid, local_clock
 from climarisk.performance import TableAir, density_ratio, margins
-from climarisk.pipeline import evaluate, field_tables, shifted
+from climarisk.pipeline import evaluate, field_tables
 from climarisk.progress import quiet
+from climarisk.region import Region
+from climarisk.scene import shifted
 from climarisk.study import read_study
 from climarisk.transfer import air_at_field, candidates, on_grid
 from climarisk.transfer_error import planning_error
@@ -49,7 +51,7 @@ def scene(tmp_path_factory):
     airs = [on_grid(s.station, s.hours, grid, s.elevation_trusted) for s in weather.stations]
     tables = {
         (field.id, with_error): field_tables(
-            study, field, airs, grid, PLANNED if with_error else NONE
+            study, field, Region(grid, tuple(airs), PLANNED if with_error else NONE)
         )
         for field in study.fields
         for with_error in (True, False)

@@ -17,7 +17,7 @@ from climarisk.fields import Field
 from climarisk.performance import CHECKS, Margins
 from climarisk.pipeline import run_study
 from climarisk.risk import Hours, risk_tables
-from climarisk.study import Season
+from climarisk.seasons import Season
 
 YEAR = frozenset((m, d) for m in range(1, 13) for d in range(1, monthrange(2020, m)[1] + 1))
 ALL_YEAR = Season("year", YEAR)

@@ -219,6 +219,21 @@ COLUMNS = tuple(
             "Months in which that aircraft has the share of its worst one; above 1 that month "
             "is only the first of them.",
         ),
+        (
+            "fleet_hours",
+            "Float64",
+            "Usable hours of the fleet",
+            "h a month",
+            "Hours of the window in which the aeroplanes of the fleet do not fall short, mean over "
+            "the year; empty where a month has no data. A steep field is counted as any other.",
+        ),
+        (
+            "base_rank",
+            "Int64",
+            "Rank as a base of the fleet",
+            "place 1-n",
+            "Place of the field by these hours, 1 the best; empty where a month has no data.",
+        ),
     )
 )
 
@@ -247,11 +262,13 @@ def headline(result: StudyResult) -> list[dict[str, Any]]:
     damp = humidity.groupby("field")["p50"].mean()
     dampest = result.near_saturation_monthly.groupby("field")["share_2_5k"].max()
     equal = _equal_months(risk, worst)
+    bases = result.bases[result.bases["aircraft"] == ""].set_index("field").to_dict("index")
     sure = result.estimates.set_index("field").to_dict("index")
     told = Counter(f.id for f in result.findings if f.subject == "field" and f.severity != "note")
     rows = []
     for field in result.fields:
         hot, bad, errors = hottest.get(field.id, {}), worst.get(field.id, {}), sure[field.id]
+        base = bases.get(field.id, {})
         measured = errors["own_station"] > 0 or errors["stations"] > 0
         values = {
             "id": field.id,
@@ -277,6 +294,8 @@ def headline(result: StudyResult) -> list[dict[str, Any]]:
             "steep": _steep(field),
             "own_station": _rounded(errors["own_station"], 4) if measured else None,
             "worst_months": equal.get(field.id),
+            "fleet_hours": _rounded(base.get("usable_hours_month"), 1),
+            "base_rank": _whole(base.get("rank")),
         }
         rows.append({column.name: values[column.name] for column in COLUMNS})
     return rows

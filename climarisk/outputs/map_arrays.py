@@ -25,8 +25,8 @@ from climarisk.outputs.packing import (
 )
 from climarisk.results import StudyResult
 
-_MONTHS = range(1, 13)
-_HOURS = range(24)
+MONTHS = range(1, 13)
+HOURS = range(24)
 
 #: Percentiles of the monthly density altitude that the panel of a field shows.
 _ALTITUDE_PERCENTILES = ("p10", "p25", "p50", "p75", "p90", "p95")
@@ -80,22 +80,22 @@ def _aircraft_ids(result: StudyResult) -> dict[str, Sequence[Any]]:
     return {"aircraft": [profile.id for profile in result.aircraft]}
 
 
-def _cells(frame: pd.DataFrame, axes: Mapping[str, Sequence[Any]]) -> pd.DataFrame:
+def cells(frame: pd.DataFrame, axes: Mapping[str, Sequence[Any]]) -> pd.DataFrame:
     """The frame with exactly one row per combination of the axes, the last one fastest."""
     index = pd.MultiIndex.from_product([list(v) for v in axes.values()], names=list(axes))
     return frame.set_index(list(axes)).reindex(index)
 
 
-def _by_time(
+def by_time(
     frames: Mapping[str, pd.DataFrame], axes: Mapping[str, Sequence[Any]]
 ) -> dict[str, pd.DataFrame]:
     """Frames by month, hour and season, each with one row per cell."""
     times: dict[str, dict[str, Sequence[Any]]] = {
-        "month": {"month": _MONTHS},
-        "hour": {"month": _MONTHS, "hour": _HOURS},
+        "month": {"month": MONTHS},
+        "hour": {"month": MONTHS, "hour": HOURS},
         "season": {"season": axis_values(frames["season"], "season")},
     }
-    return {name: _cells(frame, {**axes, **times[name]}) for name, frame in frames.items()}
+    return {name: cells(frame, {**axes, **times[name]}) for name, frame in frames.items()}
 
 
 def _distributions(result: StudyResult, variable: str) -> dict[str, pd.DataFrame]:
@@ -105,7 +105,7 @@ def _distributions(result: StudyResult, variable: str) -> dict[str, pd.DataFrame
         "season": result.distributions_seasonal,
     }
     chosen = {name: frame[frame["variable"] == variable] for name, frame in frames.items()}
-    return _by_time(chosen, _field_ids(result))
+    return by_time(chosen, _field_ids(result))
 
 
 def _altitude_arrays(result: StudyResult, notes: Sequence[str]) -> tuple[_Arrays, int]:
@@ -150,7 +150,7 @@ def _humidity_arrays(result: StudyResult, levels: np.ndarray) -> _Arrays:
         "hour": result.near_saturation_hourly,
         "season": result.near_saturation_seasonal,
     }
-    near = _by_time(frames, _field_ids(result))
+    near = by_time(frames, _field_ids(result))
     made |= {f"near_{time}_2_5k": codes(near[time]["share_2_5k"]) for time in near}
     made["near_month_1k"] = codes(near["month"]["share_1k"])
     return made
@@ -164,7 +164,7 @@ def _risk_arrays(
         "hour": result.risk_hourly,
         "season": result.risk_seasonal,
     }
-    tables = _by_time(frames, {**_field_ids(result), **_aircraft_ids(result)})
+    tables = by_time(frames, {**_field_ids(result), **_aircraft_ids(result)})
     limit, note = ({w: n for n, w in enumerate(of)} for of in (limits, notes))
     made: _Arrays = {}
     for time in ("month", "season"):
@@ -184,7 +184,7 @@ def _risk_arrays(
     hourly = tables["hour"]
     made["hour_shortfall"] = packed(share_codes(hourly["shortfall"], levels))
     inside = (floats(hourly["in_window"]).to_numpy() > 0.0).reshape(len(result.fields), -1)
-    of_field = inside[:, : len(_MONTHS) * len(_HOURS)]  # the same for every aircraft
+    of_field = inside[:, : len(MONTHS) * len(HOURS)]  # the same for every aircraft
     made["window_bits"] = packed(np.packbits(of_field, axis=1))
     return made
 
@@ -195,9 +195,9 @@ def _margin_arrays(result: StudyResult, levels: np.ndarray) -> _Arrays:
         **_field_ids(result),
         **_aircraft_ids(result),
         "check": axis_values(result.margins_monthly, "check"),
-        "month": _MONTHS,
+        "month": MONTHS,
     }
-    table = _cells(result.margins_monthly, axes)
+    table = cells(result.margins_monthly, axes)
     margin = np.floor(floats(table["margin_p10"]).to_numpy() * 100.0)
     return {
         "check_margin_p10": packed(above(margin, _LOWEST_MARGIN_PCT)),
@@ -216,7 +216,7 @@ def _trend_arrays(result: StudyResult) -> _Arrays:
         "aircraft": ["", *(a.id for a in result.aircraft)],
         "season": axis_values(result.trends, "season"),
     }
-    table = _cells(result.trends, axes)
+    table = cells(result.trends, axes)
     fine = np.where(table.index.get_level_values("aircraft") == "", 1.0, 100.0)
     made = {
         f"trend_{name}": packed(feet(floats(table[name]) * fine))
@@ -238,9 +238,9 @@ def _scenario_arrays(result: StudyResult, levels: np.ndarray) -> _Arrays:
         "scenario": scenario_names(result),
         **_field_ids(result),
         **_aircraft_ids(result),
-        "month": _MONTHS,
+        "month": MONTHS,
     }
-    table = _cells(result.scenarios, axes)
+    table = cells(result.scenarios, axes)
     made = {
         f"scenario_{name}": packed(share_codes(table[name], levels))
         for name in ("shortfall", "ci_low", "ci_high")

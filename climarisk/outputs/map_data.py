@@ -14,6 +14,7 @@ from climarisk.fields import STEEP_SLOPE_PCT, Field, RunwayDirection
 from climarisk.outputs.background import drawn_longitudes, outlines_for
 from climarisk.outputs.colours import MOST_EDGES, NO_DATA_SHAPE, SHAPES, YLORBR
 from climarisk.outputs.map_arrays import arrays, axis_values, scenario_names
+from climarisk.outputs.map_planning import aircraft_entry, planning_arrays, planning_entries
 from climarisk.outputs.packing import feet, share_levels
 from climarisk.outputs.texts import CAUTIONS, METHOD, MONTH_NAMES, PRESSURE_TOLD_FT
 from climarisk.results import StudyResult
@@ -24,9 +25,6 @@ from climarisk.units import METRES_PER_FOOT
 #: Round numbers of our choice, no source.
 HUMIDITY_EDGES = (0.4, 0.6, 0.8, 0.9)
 NEAR_SATURATION_EDGES = (0.01, 0.05, 0.1, 0.25, 0.5)
-#: A field works in an hour of a month in which less than this share falls short; our choice, one
-#: day in twenty.
-WORKS_SHARE = 0.05
 
 #: Significant digits of the numbers that travel as text: more than the page shows of any.
 _DIGITS = 8
@@ -60,12 +58,17 @@ def payload(result: StudyResult) -> dict[str, Any]:
     limits = _words(result.risk_monthly, result.risk_seasonal, column="limiting")
     notes = _words(result.risk_monthly, result.risk_seasonal, column="interval_note")
     notes += _words(result.distributions_monthly, column="years_note")
+    others = (result.weights_monthly, result.weights_seasonal, result.windows_monthly)
+    notes = list(dict.fromkeys([*notes, *_words(*others, column="interval_note")]))
     bands = [float(edge) for edge in result.settings["bands"]][:MOST_EDGES]
     days = _days_offered(result.risk_hourly)
-    levels = share_levels([*bands, *HUMIDITY_EDGES, *NEAR_SATURATION_EDGES, WORKS_SHARE], days)
-    packed, base = arrays(result, levels, limits, notes)
     texts = _Texts()
     fields = _field_entries(result, texts)
+    planning = planning_entries(result, texts.rows)
+    edges = [*bands, *HUMIDITY_EDGES, *NEAR_SATURATION_EDGES, planning["target"]]
+    levels = share_levels(edges, days)
+    packed, base = arrays(result, levels, limits, notes)
+    packed |= planning_arrays(result, levels, notes)
     return {
         "title": result.title,
         "version": str(result.provenance.get("version", "")),
@@ -75,7 +78,7 @@ def payload(result: StudyResult) -> dict[str, Any]:
         "daysOffered": days,
         "altitudeBase": base,
         "edges": {"humidity": HUMIDITY_EDGES, "nearSaturation": NEAR_SATURATION_EDGES},
-        "worksShare": WORKS_SHARE,
+        "planning": planning,
         "seasons": axis_values(result.risk_seasonal, "season"),
         "checks": axis_values(result.margins_monthly, "check"),
         "limits": limits,
@@ -93,7 +96,7 @@ def payload(result: StudyResult) -> dict[str, Any]:
         },
         "texts": texts.all(),
         "fields": fields,
-        "aircraft": [_aircraft_entry(profile) for profile in result.aircraft],
+        "aircraft": [_aircraft_entry(a) | aircraft_entry(result, a) for a in result.aircraft],
         "findings": [finding.as_dict() for finding in result.findings],
         "attributions": list(result.attributions),
         "monthNames": list(MONTH_NAMES),

@@ -1,7 +1,9 @@
 """Numbers as short texts for the map page: packed arrays in base64, each with its kind.
 
-Kinds: ``u1`` bytes, ``u2`` and ``i2`` little-endian words, ``r1`` bytes with runs: a byte that
-comes twice is followed by a third that says how often more.
+A kind is a coding and a type.  Types: ``u1`` bytes, ``u2`` and ``i2`` words, which are coded as all
+their lower bytes and then all their upper ones.  Codings: none; ``r`` runs: a byte that comes twice
+is followed by a third that says how often more; ``h`` prefix codes of the runs; ``d`` prefix codes
+of the runs of the differences from byte to byte.
 """
 
 from __future__ import annotations
@@ -13,6 +15,8 @@ from collections.abc import Sequence
 import numpy as np
 import pandas as pd
 
+from climarisk.outputs.coding import prefix_coded
+
 #: Stand for "no value" in the packed arrays.
 NO_BYTE = 255
 NO_FEET = -32768
@@ -22,14 +26,16 @@ _LONGEST_RUN = 257
 
 
 def packed(values: np.ndarray) -> list[str]:
-    """The kind of an array and its numbers as base64; bytes with runs where that is shorter."""
+    """The kind of an array and its numbers as base64, in the coding that makes them shortest."""
     kind = {"uint8": "u1", "uint16": "u2", "int16": "i2"}[values.dtype.name]
-    raw = values.astype(values.dtype.newbyteorder("<")).tobytes()
-    if kind == "u1":
-        runs = run_lengths(values.reshape(-1))
-        if len(runs) < len(raw):
-            kind, raw = "r1", runs.tobytes()
-    return [kind, base64.b64encode(raw).decode("ascii")]
+    little = values.reshape(-1).astype(values.dtype.newbyteorder("<"))
+    raw = np.frombuffer(little.tobytes(), np.uint8).reshape(-1, little.itemsize).T.reshape(-1)
+    runs = run_lengths(raw)
+    steps = run_lengths(np.diff(raw, prepend=np.uint8(0)))
+    codings: dict[str, np.ndarray | bytes] = {"": raw, "r": runs}
+    codings |= {"h": prefix_coded(runs), "d": prefix_coded(steps)}
+    coding, shortest = min(codings.items(), key=lambda item: len(item[1]))
+    return [coding + kind, base64.b64encode(bytes(shortest)).decode("ascii")]
 
 
 def run_lengths(values: np.ndarray) -> np.ndarray:

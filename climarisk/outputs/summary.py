@@ -1,4 +1,4 @@
-"""What a run says at its end: the worst cells, what lacks data, the findings, where the files are.
+"""What a run says at its end: worst cells, planning answers, missing data, findings, files.
 
 Plain text in lines of 80 columns.  Names from files are cleaned and cut here; what else a
 console may take for a command is for the caller to escape.
@@ -9,7 +9,7 @@ from __future__ import annotations
 import math
 import textwrap
 import unicodedata
-from collections.abc import Iterable, Sequence
+from collections.abc import Iterable, Mapping, Sequence
 from dataclasses import dataclass
 from pathlib import Path
 
@@ -17,13 +17,16 @@ import pandas as pd
 
 from climarisk.findings import Finding
 from climarisk.outputs.texts import (
+    LOAD_LABELS,
     MONTH_NAMES,
     band_labels,
     grouped,
     interval_text,
+    schedule_words,
     share_text,
     short_months,
     unique_labels,
+    whole_down,
     window_text,
     worst_months,
 )
@@ -57,12 +60,9 @@ def summary_lines(result: StudyResult, folder: Path, files: Sequence[Path]) -> l
     Returns
     -------
     list of str
-        About 18 lines of at most 80 columns; only the path of the folder is never cut.
+        About 24 lines of at most 80 columns; only the path of the folder is never cut.
     """
-    names = _Names(
-        _labels([(f.name, f.id) for f in result.fields]),
-        _labels([(a.name, a.id) for a in result.aircraft]),
-    )
+    names = _names(result)
     settings = result.settings
     about = (
         f": {_counted(len(result.fields), 'field')} x {len(result.aircraft)} aircraft, "
@@ -74,6 +74,11 @@ def summary_lines(result: StudyResult, folder: Path, files: Sequence[Path]) -> l
         f"Share of hours that fall short ({sure} % interval), worst month of the worst fields:",
         *_aircraft_lines(result, names),
         *_steep_lines(result),
+        *_base_lines(result, names),
+        *_weight_lines(result, names),
+        *_schedule_lines(
+            result.schedule_flights, result.schedule_seasons, float(settings["confidence"])
+        ),
         *_data_lines(result, names),
         *_finding_lines(result.findings),
         *_file_lines(folder, files),
@@ -102,6 +107,13 @@ class _Names:
 
     fields: dict[str, _Label]
     aircraft: dict[str, _Label]
+
+
+def _names(result: StudyResult) -> _Names:
+    return _Names(
+        _labels([(f.name, f.id) for f in result.fields]),
+        _labels([(a.name, a.id) for a in result.aircraft]),
+    )
 
 
 def _labels(called: Sequence[tuple[str, str]]) -> dict[str, _Label]:
@@ -262,6 +274,87 @@ def _sure(equal: pd.DataFrame) -> str:
     return "(too few years)" if equal["n_years"].min() < YEARS.interval else "(no interval)"
 
 
+# Planning answers
+
+
+def _base_lines(result: StudyResult, names: _Names) -> list[str]:
+    """The best base for the fleet, its hours and how far the next one is behind."""
+    fleet = result.bases[result.bases["aircraft"] == ""]
+    ranked = fleet[fleet["rank"].notna()].sort_values("rank", kind="stable")
+    if ranked.empty:
+        told = "no field has figures in every month"
+        return [] if fleet.empty else [f"Best base for the fleet: none, {told}."]
+    best = ranked.iloc[0]
+    end = f"{_steep_tail(result, best)}: {_hours(best['usable_hours_month'])} a month,"
+    start = "Best base for the fleet: "
+    lines = [start + names.fields[best["field"]].within(WIDTH - len(start + end)) + end]
+    second = f"  {_hours_interval(result, best)}"
+    behind = ranked["usable_hours_month"] < best["usable_hours_month"]
+    if behind.any():
+        other = ranked[behind].iloc[0]
+        gap = float(best["usable_hours_month"] - other["usable_hours_month"])
+        end = f"{_steep_tail(result, other)}, {'< 1 h' if gap < 1.0 else _hours(gap)} fewer"
+        second += "; next "
+        second += names.fields[other["field"]].within(WIDTH - len(second + end) - 1) + end
+    return [*lines, f"{second}."]
+
+
+def _steep_tail(result: StudyResult, row: pd.Series) -> str:
+    return " (steep)" if row["field"] in _steep(result) else ""
+
+
+def _hours(hours: float) -> str:
+    return f"{grouped(whole_down(hours))} h"
+
+
+def _hours_interval(result: StudyResult, row: pd.Series) -> str:
+    if pd.isna(row["ci_low"]) or pd.isna(row["ci_high"]):
+        return "too few years for an interval"
+    ends = f"{grouped(whole_down(row['ci_low']))}-{grouped(-whole_down(-row['ci_high']))} h"
+    return f"{result.settings['confidence'] * 100:.4g} %: {ends}"
+
+
+def _weight_lines(result: StudyResult, names: _Names) -> list[str]:
+    """Where least weight holds: what cannot be met, else the least part of a full load."""
+    weights = result.weights_monthly
+    if weights.empty:
+        return []
+    often = share_text(float(weights["holds_in"].iloc[0]))
+    start = f"Least weight in {often} of hours: "
+    unmet = weights[weights["outcome"] == LOAD_LABELS[-1]]
+    known = weights[weights["useful_load_kg"].notna()]
+    if not unmet.empty:
+        row = unmet.loc[unmet["never_met"].idxmax()]
+        load = LOAD_LABELS[-1]
+    elif not known.empty:
+        full = {a.id: a.maximum_kg - a.empty_kg for a in result.aircraft}
+        row = known.loc[(known["useful_load_kg"] / known["aircraft"].map(full)).idxmin()]
+        most = grouped(whole_down(full[row["aircraft"]]))
+        load = f"load {grouped(whole_down(row['useful_load_kg']))} of {most} kg"
+        if (known["outcome"] == "maximum mass").all():
+            return [f"{start}the maximum mass wherever there are data."]
+    else:
+        return [f"{start}no data. That does not mean no risk."]
+    start += f"{load}, {MONTH_NAMES[int(row['month']) - 1]},"
+    # The names stand in a line of their own: both are told as whole as they can be.
+    plane = names.aircraft[row["aircraft"]].within(WIDTH // 2 - 4)
+    field = names.fields[row["field"]].within(WIDTH - columns(plane) - 5)
+    return [start, f"  {field}: {plane}."]
+
+
+def _schedule_lines(
+    flights: pd.DataFrame | None, seasons: pd.DataFrame | None, confidence: float
+) -> list[str]:
+    """What the schedule comes to, in two lines at most."""
+    words = schedule_words(flights, seasons, confidence)
+    if not words:
+        return []
+    line = f"Schedule: {' '.join(words)}"
+    return textwrap.wrap(
+        line, WIDTH, subsequent_indent="  ", max_lines=2, placeholder=" \N{HORIZONTAL ELLIPSIS}"
+    )
+
+
 # Data
 
 
@@ -316,6 +409,35 @@ def _finding_lines(findings: Iterable[Finding]) -> list[str]:
 
 
 # Files
+
+
+def bases_lines(result: StudyResult, folder: Path, files: Sequence[Path]) -> list[str]:
+    """What `climarisk bases` ends with: the best base and where the files are.
+
+    Parameters
+    ----------
+    result : StudyResult
+    folder : Path
+    files : sequence of Path
+    """
+    return [*_base_lines(result, _names(result)), *_file_lines(folder, files)]
+
+
+def schedule_lines(
+    frames: Mapping[str, pd.DataFrame], confidence: float, folder: Path, files: Sequence[Path]
+) -> list[str]:
+    """What `climarisk schedule` ends with: how many fall short and where the files are.
+
+    Parameters
+    ----------
+    frames : mapping of str to DataFrame
+        ``schedule_flights``, ``schedule_seasons``.
+    confidence : float
+    folder : Path
+    files : sequence of Path
+    """
+    flights, seasons = frames["schedule_flights"], frames["schedule_seasons"]
+    return [*_schedule_lines(flights, seasons, confidence), *_file_lines(folder, files)]
 
 
 def _file_lines(folder: Path, files: Sequence[Path]) -> list[str]:

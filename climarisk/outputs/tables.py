@@ -3,16 +3,20 @@
 from __future__ import annotations
 
 import json
+from collections.abc import Mapping
 from pathlib import Path
 
 import pandas as pd
 
+from climarisk.outputs.bases_page import render_bases
 from climarisk.outputs.layers import write_layers
 from climarisk.outputs.map import render_map
 from climarisk.outputs.report.document import render_report
+from climarisk.outputs.schedule_page import render_schedule
 from climarisk.outputs.workbook.book import write_workbook
 from climarisk.outputs.writing import write_files, write_texts
 from climarisk.results import StudyResult
+from climarisk.study import Study
 
 #: Decimals written to the CSV files.  Feet, kelvins, per cent and hectopascals are finer than
 #: any source; shares keep ten, so that they can be held against a count.
@@ -24,6 +28,11 @@ _DECIMALS = {
     "hours_offered": 4,
     "usable_hours": 4,
     "density_altitude_ft": 1,
+    **dict.fromkeys(("mass_kg", "useful_load_kg", "mass_that_holds_kg"), 3),
+    **dict.fromkeys(("daylight_hours", "usable_low", "usable_high", "usable_hours_month"), 4),
+    **dict.fromkeys(("year_p10", "year_p90", "worst_season_hours_month"), 4),
+    **dict.fromkeys(("difference_hours_month", "affected", "year_low", "year_high"), 4),
+    **{f"humidity_{what}_p{p}": 3 for what in ("power_pct", "ft") for p in (50, 90)},
     **{f"density_altitude_{p}_ft": 3 for p in ("p50", "p90")},
     **{f"density_altitude_{p}_change_ft": 3 for p in ("p50", "p90")},
     **{f"p{p:02d}": 3 for p in (1, 5, 10, 25, 50, 75, 90, 95, 99)},
@@ -46,6 +55,13 @@ _SHARES = (
     "share_1k",
     "share_2_5k",
     "in_window",
+    "share",
+    "never_met",
+    "days_with_run",
+    "icing_serious",
+    "nearest_shortfall",
+    *(f"power_p{p}" for p in (10, 50, 90)),
+    "optimistic_p50",
 )
 #: Frames of the result that are written as CSV, each where it is there.
 TABLES = (
@@ -60,14 +76,30 @@ TABLES = (
     "near_saturation_monthly",
     "near_saturation_hourly",
     "near_saturation_seasonal",
+    "weights_monthly",
+    "weights_hourly",
+    "weights_seasonal",
+    "windows_monthly",
+    "icing_monthly",
+    "icing_hourly",
+    "power_monthly",
+    "bases",
+    "base_differences",
+    "schedule_flights",
+    "schedule_seasons",
+    "schedule_days",
     "trends",
     "extremes",
     "scenarios",
 )
+#: Tables of a schedule, where the study has one.
+SCHEDULE_TABLES = ("schedule_flights", "schedule_seasons", "schedule_days")
 #: Every file that a run may write.
 OUTPUT_FILES = (
     "map.html",
     "report.html",
+    "bases.html",
+    "schedule.html",
     "tables.xlsx",
     *(f"{name}.csv" for name in TABLES),
     "study.json",
@@ -100,12 +132,59 @@ def write_outputs(result: StudyResult, folder: Path) -> list[Path]:
     return write_files(folder, lambda staging: _write_all(result, staging))
 
 
+def write_schedule(study: Study, frames: Mapping[str, pd.DataFrame], folder: Path) -> list[Path]:
+    """Write the page and the tables of a schedule alone.
+
+    Parameters
+    ----------
+    study : Study
+    frames : mapping of str to DataFrame
+        By the names of `SCHEDULE_TABLES`.
+    folder : Path
+
+    Raises
+    ------
+    OutputError
+        The folder cannot be written.
+    """
+    page = render_schedule(study.title, study.fields, study.aircraft, study.settings(), frames)
+    texts = {"schedule.html": page, **{f"{n}.csv": csv_text(frames[n]) for n in SCHEDULE_TABLES}}
+    return write_files(folder, lambda staging: write_texts(staging, texts))
+
+
+def write_bases(result: StudyResult, folder: Path) -> list[Path]:
+    """Write the page and the tables of the bases alone.
+
+    Parameters
+    ----------
+    result : StudyResult
+    folder : Path
+
+    Raises
+    ------
+    OutputError
+        The folder cannot be written.
+    """
+    texts = {
+        "bases.html": render_bases(result),
+        "bases.csv": csv_text(result.bases),
+        "base_differences.csv": csv_text(result.base_differences),
+    }
+    return write_files(folder, lambda staging: write_texts(staging, texts))
+
+
 def _write_all(result: StudyResult, folder: Path) -> list[str]:
     texts = {
         "map.html": render_map(result),
         "report.html": render_report(result),
+        "bases.html": render_bases(result),
         "study.json": json.dumps(result.provenance, indent=1, ensure_ascii=False) + "\n",
     }
+    if result.schedule_flights is not None:
+        frames = {name: getattr(result, name) for name in SCHEDULE_TABLES}
+        texts["schedule.html"] = render_schedule(
+            result.title, result.fields, result.aircraft, result.settings, frames
+        )
     for name in TABLES:
         frame = getattr(result, name)
         if frame is not None:

@@ -8,6 +8,9 @@ from collections import Counter
 from collections.abc import Sequence
 from fractions import Fraction
 
+import pandas as pd
+
+from climarisk.aircraft import AircraftProfile
 from climarisk.results import StudyResult
 
 #: What every output says about its own limits; the first one stands at the top.
@@ -26,6 +29,12 @@ CAUTIONS = (
     "Runway data may be incomplete or out of date; verify them in the current aeronautical "
     "publication and with the operator. Strips steeper than 2 % need a site-specific "
     "procedure and instruction.",
+    "A mass that held in past weather is not a permitted mass: the flight manual, the loading and "
+    "the fuel of the day decide. Landing is reckoned at the take-off mass.",
+    "Carburettor-icing shares use surface air and a generic chart, or a screening that is an "
+    "engineering assumption; engines differ. The zones of the chart are a reconstruction from "
+    "memory, each corner uncertain by 2 to 3 K, and were not checked against the official chart. "
+    "Hours with temperature and dew point close together are no forecast of fog or low cloud.",
     "Commercial, instructional or insurance decisions should be reviewed by a suitably "
     "qualified person.",
 )
@@ -52,6 +61,12 @@ METHOD = (
     "autocorrelation; a step beside the trend may be a station move. Return levels are a "
     "generalised extreme-value distribution fitted to annual maxima by L-moments, to twice "
     "the length of the record at most.",
+    "The mass that holds is found hour by hour: the largest at which every check of take-off, "
+    "climb and landing holds, linear between the tabulated masses and never beyond them; the "
+    "figure is the one that the stated share of the hours allows.",
+    "Power is what the air leaves at full throttle: Gagg and Ferrar on the density of the dry "
+    "part of the air, with the more favourable of that and SAE J1349 as the optimistic figure; "
+    "mixture, ignition and engine condition are not in it.",
     "Shown here: density altitude to the nearest 100 ft, shares to the whole per cent, “< 1 "
     "%” for anything above zero and below one. The CSV files hold the unrounded values.",
 )
@@ -191,3 +206,123 @@ def _visible(text: str) -> str:
 def invisible(character: str) -> bool:
     """Whether a character is a format mark: no width, or a direction for what follows it."""
     return unicodedata.category(character) == "Cf"
+
+
+#: Takes back the error of a product of floats: 0.29 * 100 is below 29.
+_SLACK = 1e-9
+#: Edges of the classes of a useful load, as shares of the one at maximum mass (our choice), and
+#: what the classes are called, the lightest load last.
+_LOAD_EDGES = (0.75, 0.5, 0.25)
+LOAD_LABELS = ("all of it", "75 % or more", "50-75 %", "25-50 %", "< 25 %", "cannot be met")
+
+
+def mass_text(kilograms: float) -> str:
+    """A mass in whole kilograms, rounded down: never more than holds."""
+    return NO_DATA if math.isnan(kilograms) else f"{grouped(whole_down(kilograms))} kg"
+
+
+def whole_down(value: float) -> int:
+    """The whole number below a value, which may itself lie a hair below a whole one."""
+    return math.floor(value + _SLACK * max(1.0, abs(value)))
+
+
+def load_class(share: float, outcome: str) -> int:
+    """The place of a useful load in `LOAD_LABELS`; -1 without data.
+
+    Parameters
+    ----------
+    share : float
+        Of the useful load at maximum mass.
+    outcome : str
+        As in the frames of the weights.
+    """
+    if outcome == LOAD_LABELS[-1]:
+        return len(LOAD_LABELS) - 1
+    if math.isnan(share):
+        return -1
+    return 0 if outcome == "maximum mass" else 1 + sum(share < edge for edge in _LOAD_EDGES)
+
+
+def flights_text(flights: float) -> str:
+    """Flights expected to fall short, rounded up: to a tenth below ten, else whole."""
+    if math.isnan(flights):
+        return NO_DATA
+    if flights < 10:
+        return f"{math.ceil(flights * 10 - _SLACK) / 10:g}"
+    return grouped(math.ceil(flights - _SLACK))
+
+
+def flights_interval(low: float, high: float) -> str:
+    """An interval of a number of flights in whole ones, outwards; ``none`` where there is none."""
+    if math.isnan(low) or math.isnan(high):
+        return "none"
+    return f"{grouped(math.floor(low + _SLACK))}-{grouped(math.ceil(high - _SLACK))}"
+
+
+def ranges_text(hours: str) -> str:
+    """Hours of the day as the windows have them, ``06-10 18``, for people: ``06-10, 18``."""
+    return ", ".join(hours.split())
+
+
+def either(clock: str) -> str:
+    """A clock time, or both where the clocks change in the month, as ``05:00 or 06:00``."""
+    return clock.replace(" / ", " or ")
+
+
+def icing_basis(method: str, verified: str) -> str:
+    """What the shares of carburettor icing rest on, told wherever such a figure stands."""
+    if method == "physical":
+        return "screening, not a published chart"
+    return "chart verified" if verified == "yes" else "chart not verified"
+
+
+def schedule_words(
+    flights: pd.DataFrame | None, seasons: pd.DataFrame | None, confidence: float
+) -> tuple[str, ...]:
+    """What a schedule comes to, a sentence each; none without a schedule.
+
+    Parameters
+    ----------
+    flights, seasons : DataFrame or None
+        ``schedule_flights`` and ``schedule_seasons`` of a result.
+    confidence : float
+
+    Returns
+    -------
+    tuple of str
+        How many flights are expected to fall short, with the interval; then, where there are
+        any, those without figures and those that can never be met.
+    """
+    if flights is None or seasons is None or seasons.empty:
+        return ()
+    whole = seasons.iloc[0]  # the first row is the whole schedule
+    planned, unknown = int(whole["flights"]), int(whole["unknown_flights"])
+    if unknown >= planned:
+        return (f"No figures for any of the {grouped(planned)} flights: not no risk.",)
+    sure = f"{round(confidence * 100, 2):g} %"
+    ends = flights_interval(float(whole["ci_low"]), float(whole["ci_high"]))
+    words = [
+        f"{flights_text(float(whole['affected']))} of {grouped(planned)} flights are expected to "
+        f"fall short ({'too few years for an interval' if ends == 'none' else f'{sure}: {ends}'})."
+    ]
+    if unknown:
+        words.append(f"{grouped(unknown)} {_have(unknown)} no figures: not no risk.")
+    never = int(flights["flights"][flights["never_met"] == "yes"].sum())
+    if never:
+        words.append(f"{grouped(never)} can never be met.")
+    return tuple(words)
+
+
+def _have(count: int) -> str:
+    return "has" if count == 1 else "have"
+
+
+def engine_groups(result: StudyResult) -> dict[str, list[AircraftProfile]]:
+    """Engines that the air treats differently by what they are called, each with its aircraft."""
+    engines: dict[str, list[AircraftProfile]] = {}
+    for profile in result.aircraft:
+        name = "naturally aspirated" if profile.aspiration == "natural" else profile.aspiration
+        if profile.aspiration == "turbocharged" and profile.critical_altitude_ft is not None:
+            name += f" to {profile.critical_altitude_ft:,.0f} ft"
+        engines.setdefault(name, []).append(profile)
+    return engines

@@ -28,10 +28,13 @@ SCENES = {
     "field without data": f"#field={EMPTY_FIELD}",
     "density altitude": "#field=field-2&measure=p90&month=7&hour=14",
     "compared": "#compare=field-0+field-2",
+    "weights": "#field=field-3&measure=weight&month=7&hour=14",
+    "bases": "#view=bases",
+    "schedule": "#view=schedule",
 }
 
 #: Scenes alike in structure are looked at in two of the views.
-ALIKE = {"steep field", "density altitude"}
+ALIKE = {"steep field", "density altitude", "weights"}
 CASES = [
     (view, name)
     for view in VIEWS

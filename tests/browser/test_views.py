@@ -123,40 +123,6 @@ def test_grid_shows_the_measure_with_its_own_legend(opened, result, measure):
 # One field
 
 
-def test_panel_says_when_the_field_works(opened, result):
-    page = opened().open("#field=field-0&aircraft=aircraft-0")
-    rows = [
-        row.locator("th, td").all_inner_texts() for row in page.locator(".works tbody tr").all()
-    ]
-    hourly = result.risk_hourly.query("field == 'field-0' and aircraft == 'aircraft-0'")
-    monthly = result.risk_monthly.query("field == 'field-0' and aircraft == 'aircraft-0'")
-    for month, (row, line) in enumerate(zip(monthly.itertuples(), rows, strict=True), start=1):
-        inside = hourly[(hourly["month"] == month) & (hourly["in_window"] > 0)]
-        working = list(inside[inside["shortfall"] < 0.05]["hour"])
-        told = line[1].removeprefix("all: ")
-        assert line[1].startswith("all: ") == (len(working) == len(inside))
-        assert _hours(told) == working
-        assert line[2] == f"{math.floor(row.usable_hours)} of {math.floor(row.hours_offered)}"
-        if math.isnan(row.ci_low):
-            assert line[3] == "none"
-        else:  # as wide as whole hours and the levels of the shares leave it, never narrower
-            low, high = (int(part) for part in line[3].split("-"))
-            exact = [row.hours_offered * (1 - share) for share in (row.ci_high, row.ci_low)]
-            assert exact[0] - 0.011 * row.hours_offered - 1 <= low <= exact[0]
-            assert exact[1] <= high <= exact[1] + 0.011 * row.hours_offered + 2
-            assert low <= math.floor(row.usable_hours) <= high
-
-
-def _hours(text: str) -> list[int]:
-    hours = []
-    for part in text.split(", "):
-        if part == "no hour":
-            continue
-        first, _, last = part.partition("-")
-        hours += range(int(first[:2]), int((last or first)[:2]) + 1)
-    return hours
-
-
 def test_panel_shows_the_margins_of_each_check(opened, result):
     page = opened().open("#field=field-3&aircraft=aircraft-0")
     frame = result.margins_monthly.query("field == 'field-3' and aircraft == 'aircraft-0'")

@@ -10,6 +10,7 @@ import math
 
 import numpy as np
 import pandas as pd
+from sample_planning import EMPTY_FIELD, planning_frames, planning_settings
 
 from climarisk.aircraft import AircraftProfile, PerformanceTable, ScaledFigures
 from climarisk.extremes import EXTREME_COLUMNS
@@ -46,7 +47,6 @@ HOSTILE = (
     "\"quotes\" 'and' &amp; \u202eover\u202c \u2028 \u05d0\u05d1\u05d2 \u6771\u4eac",
 )
 LONG_NAME = "Upper meadow of the long valley behind the second ridge " * 4 + "x" * 120
-EMPTY_FIELD = "field-5"
 LIMITS = ("take-off to 50 ft", "landing from 50 ft", "rate of climb")
 SEASONS = ("DJF", "MAM", "JJA", "</script>summer")
 SCENARIOS = ("air +2 K, relative humidity unchanged", "</script><b>2015-2024</b>")
@@ -68,6 +68,8 @@ def sample_result(n_fields: int = 6, n_aircraft: int = 2, seed: int = 7) -> Stud
     aircraft = tuple(_aircraft(i) for i in range(n_aircraft))
     risk_monthly = _risk(rng, fields, aircraft, "month")
     monthly = _distributions(rng, fields, hourly=False)
+    hourly = _distributions(rng, fields, hourly=True)
+    risk_hourly = _risk(rng, fields, aircraft, "hour")
     return StudyResult(
         title="Summer schedule </title><script>window.pwned=1</script> {{7*7}}",
         fields=fields,
@@ -80,12 +82,13 @@ def sample_result(n_fields: int = 6, n_aircraft: int = 2, seed: int = 7) -> Stud
             "confidence": 0.90,
             "seasons": {"JJA": ["06-01", "08-31"]},
             "radius_km": 100.0,
+            "planning": planning_settings(aircraft),
         },
         distributions_monthly=monthly,
-        distributions_hourly=_distributions(rng, fields, hourly=True),
+        distributions_hourly=hourly,
         distributions_seasonal=_of_seasons(monthly),
         risk_monthly=risk_monthly,
-        risk_hourly=_risk(rng, fields, aircraft, "hour"),
+        risk_hourly=risk_hourly,
         risk_seasonal=_risk(rng, fields, aircraft, "season"),
         risk_yearly=_yearly(risk_monthly),
         margins_monthly=_margins(risk_monthly),
@@ -118,6 +121,7 @@ def sample_result(n_fields: int = 6, n_aircraft: int = 2, seed: int = 7) -> Stud
         ),
         provenance={"version": "0.1.0"},
         scenarios=_scenarios(rng, risk_monthly, monthly),
+        **planning_frames(fields, aircraft, SEASONS, risk_monthly, risk_hourly),
     )
 
 
@@ -156,8 +160,8 @@ def _aircraft(i: int) -> AircraftProfile:
         id=f"aircraft-{i}",
         name="Two-seat trainer (invented)" if i != 1 else "Tourer <b onclick=pwned>",
         source="invented",
-        aspiration="natural",
-        carburettor=True,
+        aspiration="diesel" if i == 2 else "natural",
+        carburettor=i != 2,
         maximum_kg=760.0,
         planning_kg=720.0,
         empty_kg=520.0,

@@ -19,7 +19,7 @@ from hypothesis import given
 from hypothesis import strategies as st
 from sample_result import HOSTILE, SEASONS, sample_result
 
-from climarisk.outputs import background, packing
+from climarisk.outputs import background, coding, packing
 from climarisk.outputs import map as map_module
 from climarisk.outputs.map import render_map
 from climarisk.outputs.packing import NO_BYTE, NO_FEET, NO_WORD
@@ -82,9 +82,35 @@ def _study(parsed: _Parsed) -> dict:
 def _array(parsed: _Parsed, name: str) -> np.ndarray:
     kind, text = _study(parsed)["arrays"][name]
     raw = base64.b64decode(text)
-    if kind == "r1":
-        return _unrolled(raw)
-    return np.frombuffer(raw, {"u1": "u1", "u2": "<u2", "i2": "<i2"}[kind])
+    coding, width = kind[:-2], int(kind[-1])
+    if coding in ("h", "d"):
+        raw = _uncoded(raw)
+    values = _unrolled(raw) if coding else np.frombuffer(raw, "u1")
+    if coding == "d":
+        values = np.cumsum(values, dtype="u1")
+    if width == 1:
+        return values
+    # All lower bytes, then all upper ones.
+    return np.frombuffer(values.reshape(2, -1).T.tobytes(), {"u2": "<u2", "i2": "<i2"}[kind[-2:]])
+
+
+def _uncoded(coded: bytes) -> bytes:
+    """Prefix codes bit by bit, from the lengths of the codes in their head."""
+    count = int.from_bytes(coded[:4], "little")
+    lengths = [half for byte in coded[4:132] for half in (byte >> 4, byte & 15)]
+    codes, code, last = {}, 0, 0
+    for length, value in sorted((n, v) for v, n in enumerate(lengths) if n):
+        code <<= length - last
+        codes[f"{code:0{length}b}"] = value
+        code, last = code + 1, length
+    values, held = bytearray(), ""
+    for bit in "".join(f"{byte:08b}" for byte in coded[132:]):
+        held += bit
+        if held in codes and len(values) < count:
+            values.append(codes[held])
+            held = ""
+    assert len(values) == count
+    return bytes(values)
 
 
 def _unrolled(marks: bytes) -> np.ndarray:
@@ -249,7 +275,7 @@ def test_altitudes_further_apart_than_bytes_can_say_are_sent_whole(result):
 def test_every_class_edge_is_a_level_of_the_shares(result, parsed):
     study = _study(parsed)
     edges = [*study["bands"], *study["edges"]["humidity"], *study["edges"]["nearSaturation"]]
-    assert {*edges, study["worksShare"]} <= set(study["levels"])
+    assert {*edges, study["planning"]["target"]} <= set(study["levels"])
 
 
 def test_packed_usable_hours_are_those_of_the_frames_rounded_down(result, parsed):
@@ -346,6 +372,35 @@ def test_runs_unroll_to_what_was_rolled(runs):
     assert _unrolled(packing.run_lengths(values).tobytes()).tolist() == values.tolist()
 
 
+@given(
+    st.lists(st.tuples(st.integers(0, 255), st.integers(1, 3000)), min_size=1, max_size=40),
+    st.sampled_from(["uint8", "uint16", "int16"]),
+)
+def test_packed_numbers_come_back(runs, kind):
+    flat = np.concatenate([np.full(n, v * 131, "i8") for v, n in runs])
+    values = flat.astype(kind)
+    page = _Parsed(_PACKED_PAGE.format(json.dumps({"arrays": {"some": packing.packed(values)}})))
+    assert _array(page, "some").tolist() == values.tolist()
+
+
+#: A page with packed arrays alone.
+_PACKED_PAGE = "<script>{}</script>"
+
+
+def test_codes_are_as_short_as_their_frequencies_allow():
+    # Cover, T. M. and Thomas, J. A., Elements of Information Theory, 5.6, first example: weights
+    # .25 .25 .2 .15 .15 take 2 2 2 3 3 bits (from memory).
+    counts = np.zeros(256, int)
+    counts[[7, 9, 30, 31, 255]] = [25, 25, 20, 15, 15]
+    assert coding.code_lengths(counts)[[7, 9, 30, 31, 255]].tolist() == [2, 2, 2, 3, 3]
+    # Fibonacci numbers give the longest codes of all: 39 bits without the limit.
+    steep = np.zeros(256, int)
+    steep[:40] = [round(((1 + 5**0.5) / 2) ** n / 5**0.5) for n in range(1, 41)]
+    lengths = coding.code_lengths(steep)[:40].tolist()
+    assert max(lengths) <= coding.LONGEST_CODE
+    assert sum(Fraction(1, 2**n) for n in lengths) <= 1  # Kraft's inequality
+
+
 def test_codes_keep_no_data_apart():
     levels = packing.share_levels([0.01, 0.05, 0.2])
     codes = packing.share_codes(pd.Series([np.nan, 0.0, 1e-9, 1.0]), levels)
@@ -360,9 +415,11 @@ def _copied(result, times: int):
     """The fields of a result so many times, each copy under ids of its own."""
     copies = [
         {
-            name: frame.assign(field=frame["field"] + f"-{n}")
+            name: frame.assign(
+                **{c: frame[c] + f"-{n}" for c in ("field", "first", "second") if c in frame}
+            )
             for name, frame in vars(result).items()
-            if isinstance(frame, pd.DataFrame)
+            if isinstance(frame, pd.DataFrame) and {"field", "second"} & set(frame)
         }
         for n in range(times)
     ]

@@ -40,7 +40,10 @@ from climarisk.outputs.workbook import cells
 from climarisk.outputs.workbook.book import sheet_names, write_workbook
 from climarisk.outputs.workbook.cells import clean
 
-FIXED = ["Density altitude", "Humidity", "Margins", "Method and sources", "Cautions"]
+FIXED = [
+    *("Weights", "Windows", "Bases", "Schedule", "Carburettor icing", "Engine power"),
+    *("Density altitude", "Humidity", "Margins", "Method and sources", "Cautions"),
+]
 PLAIN = ("Two-seat trainer (invented)", "Tourer <b onclick=pwned>")
 #: Beginnings that a spreadsheet takes as a formula: OWASP, "CSV Injection", from memory.
 LEADS = ("=1+1", "+1+1", "-1+1", "@SUM(A1)", "\t=1+1", "\r=1+1")
@@ -608,7 +611,7 @@ def test_nothing_in_the_file_runs_or_loads(path, result):
     content = parts(path)
     assert not [n for n in content if re.search("vba|external|macro|embed|drawing|\\.bin", n)]
     assert {n for n in content if "sheet" in n and n.startswith("xl/worksheets")} == {
-        f"xl/worksheets/sheet{n}.xml" for n in range(1, len(result.aircraft) + 7)
+        f"xl/worksheets/sheet{n}.xml" for n in range(1, len(result.aircraft) + len(FIXED) + 2)
     }
     for name, text in content.items():
         assert not re.search(r"<f[ >/]|<formula|<hyperlink|TargetMode|<ddeLink", text), name
@@ -622,7 +625,7 @@ def test_a_footer_holds_the_title_with_its_ampersands_doubled(tmp_path):
         for name, text in parts(tmp_path / "tables.xlsx").items()
         if name.startswith("xl/worksheets/")
     ]
-    assert len(footers) == 7
+    assert len(footers) == len(FIXED) + 2  # the summary and one aircraft
     for footer in footers:
         assert footer.startswith("&L&8 Hills && dales &&D yyy") and "&P" in footer
         assert len(footer) <= 255  # what the format's readers take
@@ -712,7 +715,10 @@ def test_any_aircraft_names_give_valid_unique_sheet_names(names):
     # The rules of the common spreadsheet program for the name of a sheet, from memory.
     made = sheet_names(names)
     assert len(made) == len(names)
-    assert len({n.casefold() for n in [*made, "Summary", *FIXED, "History"]}) == len(made) + 7
+    assert (
+        len({n.casefold() for n in [*made, "Summary", *FIXED, "History"]})
+        == len(made) + len(FIXED) + 2
+    )
     for name in made:
         assert 1 <= len(name.encode("utf-16-le")) // 2 <= 31
         assert not re.search(r"[\[\]:*?/\\\x00-\x1f]", name)
@@ -726,16 +732,20 @@ def test_any_aircraft_names_give_valid_unique_sheet_names(names):
 def test_a_study_of_any_size_is_written(tmp_path, counts):
     base = sample_result(max(1, counts[0]), max(1, counts[1]))
     fields, aircraft = base.fields[: counts[0]], base.aircraft[: counts[1]]
-    frames = {
-        name: frame[frame["field"].isin([f.id for f in fields])]
-        for name, frame in vars(base).items()
-        if hasattr(frame, "columns")
+    keys = {
+        "field": [f.id for f in fields],
+        "aircraft": ["", *(a.id for a in aircraft)],
+        "first": [f.id for f in fields],
+        "second": [f.id for f in fields],
     }
-    for name in [n for n, frame in frames.items() if "aircraft" in frame]:
-        kept = [a.id for a in aircraft]
-        frames[name] = frames[name][frames[name]["aircraft"].isin(kept)]
+    frames = {name: frame for name, frame in vars(base).items() if hasattr(frame, "columns")}
+    for name, frame in frames.items():
+        for key in set(keys) & set(frame):
+            frame = frame[frame[key].isin(keys[key])]
+        frames[name] = frame
     book = written(replace(base, fields=fields, aircraft=aircraft, **frames), tmp_path)
-    assert len(book.sheetnames) == 6 + counts[1]
+    # Without an aircraft there is no carburettor either.
+    assert len(book.sheetnames) == 1 + len(FIXED) - (not aircraft) + counts[1]
     assert book["Summary"].max_row == 7 + counts[0]
 
 

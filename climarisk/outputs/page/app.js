@@ -38,6 +38,7 @@ const actions = {
   open(index) {
     state.field = index;
     state.comparing = false;
+    state.view = "";
     draw();
     moveTo(byId("field-heading"));
   },
@@ -48,6 +49,13 @@ const actions = {
     const buttons = [...byId("fields").querySelectorAll("button[data-field]")];
     const row = buttons.find((button) => button.dataset.field === id);
     (row || byId("fields-heading")).focus();
+  },
+  overview(view) {
+    state.view = view;
+    state.field = -1;
+    state.comparing = false;
+    draw();
+    moveTo(byId(shownHeading()));
   },
   compare() {
     state.comparing = true;
@@ -85,17 +93,28 @@ function showNotice() {
 
 function pageTitle() {
   if (state.field >= 0) return STUDY.fields[state.field].name + ": " + STUDY.title;
+  if (state.view) return OVERVIEWS[state.view].name + ": " + STUDY.title;
   return STUDY.title;
 }
 
 function shownHeading() {
   if (state.field >= 0) return "field-heading";
+  if (state.view) return "overview-heading";
   return state.comparing ? "compare-heading" : "fields-heading";
 }
 
 function showPart(id, shown, content) {
   byId(id).hidden = !shown;
   byId(id).replaceChildren(...(shown ? content() : []));
+}
+
+// The map is put away below an overview; what it missed meanwhile it catches up with.
+function showMap() {
+  const away = document.documentElement.classList.contains("overview");
+  document.documentElement.classList.toggle("overview", state.view !== "");
+  if (state.view) return;
+  if (away) map.invalidateSize({ animate: false, pan: false });
+  showMarkers(state);
 }
 
 function draw() {
@@ -106,14 +125,16 @@ function draw() {
   showList(state, actions.open, actions.sortBy);
   showCompareBar();
   const open = state.field >= 0;
-  byId("list-part").hidden = open || state.comparing;
+  byId("list-part").hidden = open || state.comparing || state.view !== "";
   showPart("field-part", open, () => fieldPanel(state, actions));
   showPart("compare-part", state.comparing, () => comparePanel(state, actions));
+  showPart("overview-part", state.view !== "", () => OVERVIEWS[state.view].content(state, actions));
+  showViews();
   showNotice();
   document.title = pageTitle();
   byId("skip").href = "#" + shownHeading();
-  document.documentElement.classList.toggle("one-part", open || state.comparing);
-  showMarkers(state);
+  document.documentElement.classList.toggle("one-part", open || state.comparing || state.view !== "");
+  showMap();
   writeFragment();
 }
 
@@ -147,6 +168,7 @@ function listen() {
     if (event.key !== "Escape" || event.defaultPrevented || event.target.closest("select, input")) return;
     if (state.field >= 0) actions.close();
     else if (state.comparing) actions.closeCompare();
+    else if (state.view) actions.overview("");
   });
 }
 
@@ -154,6 +176,7 @@ function start() {
   showTitle();
   byId("legend").className = "legend";
   fillControls();
+  fillViews(actions);
   showMethod();
   readFragment();
   addGround(map);

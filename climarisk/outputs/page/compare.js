@@ -22,9 +22,9 @@ function showCompareBar() {
 function monthSeries(index) {
   const periods = MONTHS.map((_, month) => ({ season: false, index: month }));
   const values = periods.map((period) => measured(state.measure, index, state.aircraft, period, -1));
-  if (state.measure !== "shortfall") return { values, low: null, high: null };
-  const bound = (column) => periods.map((period) => riskShare(column, index, state.aircraft, period));
-  return { values, low: bound("ci_low"), high: bound("ci_high") };
+  if (!["shortfall", "weight"].includes(state.measure)) return { values, low: null, high: null };
+  const ends = periods.map((period) => measureBounds(state.measure, index, state.aircraft, period));
+  return { values, low: ends.map(([low]) => low), high: ends.map(([, high]) => high) };
 }
 
 function hourSeries(index) {
@@ -43,9 +43,16 @@ function inPercent({ values, low, high }) {
   return { values: scaled(values), low: scaled(low), high: scaled(high) };
 }
 
+// No mass holds: the line goes down to the empty aircraft.
+function asDrawn(series) {
+  if (isShare()) return inPercent(series);
+  return { ...series, values: series.values.map((value) => (value === NOT_MET ? 0 : value)) };
+}
+
 function compareChart(title, series, ticks) {
-  const drawn = isShare() ? series.map(inPercent) : series;
-  const limits = isShare() ? [0, shareTop(drawn)] : state.measure === "usable" ? [0, highest(drawn)] : null;
+  const drawn = series.map(state.measure === "weight" || isShare() ? asDrawn : (one) => one);
+  const fromZero = state.measure === "usable" || state.measure === "weight";
+  const limits = isShare() ? [0, shareTop(drawn)] : fromZero ? [0, highest(drawn)] : null;
   const chart = lineChart(title, drawn, ticks, grouped, limits);
   return chart || el("p", { class: "empty" }, "No data for any of these fields.");
 }
@@ -99,11 +106,19 @@ function compareTable() {
   const cell = ({ values, low, high }, month) => {
     const text = measureText(state.measure, values[month]);
     if (!low || values[month] === null) return text;
-    return [text, el("small", null, interval(low[month], high[month]))];
+    return [text, el("small", null, measureInterval(state.measure, low[month], high[month]))];
   };
   const rows = MONTHS.map((name, month) => [name, ...series.map((one) => cell(one, month))]);
   const caption = MEASURES[state.measure].sentence("month") + ", whole window (" + windowText() + ")";
   return table(caption, heads, rows, "plain-table compared");
+}
+
+function compareNote() {
+  const what = {
+    shortfall: "Per cent of the hours of the window",
+    weight: "Useful load in kg; 0 where no mass can be met",
+  }[state.measure];
+  return what ? el("p", { class: "key" }, what + "; upright lines: " + confidenceText() + ".") : null;
 }
 
 function comparePanel(state, actions) {
@@ -118,17 +133,7 @@ function comparePanel(state, actions) {
     el("h2", { id: "compare-heading", tabindex: "-1" }, "Fields compared"),
     el("p", { class: "place" }, measure.name, ...(profile.length ? [", ", ...profile] : [])),
     compareKey(),
-    section(
-      "By month",
-      compareChart(byMonth, state.compare.map(monthSeries), MONTHS),
-      state.measure === "shortfall"
-        ? el(
-            "p",
-            { class: "key" },
-            "Per cent of the hours of the window; upright lines: " + confidenceText() + ".",
-          )
-        : null,
-    ),
+    section("By month", compareChart(byMonth, state.compare.map(monthSeries), MONTHS), compareNote()),
     state.period.season
       ? null
       : section(

@@ -36,15 +36,67 @@ function unrolled(marks) {
   return bytes;
 }
 
-const KINDS = {
+// Prefix codes (climarisk/outputs/coding.py): how many bytes, the lengths of the 256 codes, the codes.
+function uncoded(bytes) {
+  const count = bytes[0] | (bytes[1] << 8) | (bytes[2] << 16) | (bytes[3] << 24);
+  const lengths = Array.from(
+    { length: 256 },
+    (_, value) => (bytes[4 + (value >> 1)] >> (value & 1 ? 0 : 4)) & 15,
+  );
+  const most = Math.max(1, ...lengths);
+  // For whatever the next bits begin with: the value and how many of them it takes.
+  const found = new Uint16Array(1 << most);
+  let place = 0;
+  for (let length = 1; length <= most; length += 1)
+    for (let value = 0; value < 256; value += 1) {
+      if (lengths[value] !== length) continue;
+      const next = place + (1 << (most - length));
+      found.fill((value << 4) | length, place, next);
+      place = next;
+    }
+  const values = new Uint8Array(count);
+  let [at, held, waiting] = [4 + 128, 0, 0];
+  for (let i = 0; i < count; i += 1) {
+    while (held < most) {
+      waiting = ((waiting & 0xffff) << 8) | (at < bytes.length ? bytes[at] : 0);
+      at += 1;
+      held += 8;
+    }
+    const code = found[(waiting >> (held - most)) & ((1 << most) - 1)];
+    values[i] = code >> 4;
+    held -= code & 15;
+  }
+  return values;
+}
+
+function summed(steps) {
+  for (let i = 1; i < steps.length; i += 1) steps[i] += steps[i - 1];
+  return steps;
+}
+
+const CODINGS = {
+  "": (bytes) => bytes,
+  r: unrolled,
+  h: (bytes) => unrolled(uncoded(bytes)),
+  d: (bytes) => summed(unrolled(uncoded(bytes))),
+};
+
+// All lower bytes, then all upper ones.
+function wordsFrom(bytes, Kind) {
+  const words = new Kind(bytes.length / 2);
+  for (let i = 0; i < words.length; i += 1) words[i] = bytes[i] | (bytes[words.length + i] << 8);
+  return words;
+}
+
+const TYPES = {
   u1: (bytes) => bytes,
-  r1: unrolled,
-  u2: (bytes) => new Uint16Array(bytes.buffer),
-  i2: (bytes) => new Int16Array(bytes.buffer),
+  u2: (bytes) => wordsFrom(bytes, Uint16Array),
+  i2: (bytes) => wordsFrom(bytes, Int16Array),
 };
 
 const ARRAYS = {};
-for (const [name, [kind, text]] of Object.entries(STUDY.arrays)) ARRAYS[name] = KINDS[kind](decode(text));
+for (const [name, [kind, text]] of Object.entries(STUDY.arrays))
+  ARRAYS[name] = TYPES[kind.slice(-2)](CODINGS[kind.slice(0, -2)](decode(text)));
 
 // Rows travel without the names of their columns, and with numbers in place of their texts.
 function namedRow(columns, row) {
@@ -79,12 +131,6 @@ function altitudeAt(name, position) {
 function shareAt(name, position) {
   const level = countAt(name, position);
   return level === null ? null : STUDY.levels[level];
-}
-
-// The share up to which a share shown by this level may go.
-function nextLevel(share) {
-  const place = STUDY.levels.indexOf(share);
-  return share === 0 || place === STUDY.levels.length - 1 ? share : STUDY.levels[place + 1];
 }
 
 // Whole hours, rounded down.
@@ -187,6 +233,8 @@ function measured(measure, field, aircraft, period, hour) {
       return riskShare("shortfall", field, aircraft, period);
     case "usable":
       return usableHours(field, aircraft, period, hour);
+    case "weight":
+      return loadThatHolds(field, aircraft, period, hour);
     case "humidity":
       return shareAt("humidity_" + time + "_p50", place);
     case "near-saturation":

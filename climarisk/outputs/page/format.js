@@ -26,6 +26,15 @@ const MEASURES = {
     text: (value, time) => grouped(value) + (time === "hour" ? " days" : " h"),
     cell: grouped,
   },
+  weight: {
+    name: "Weight that holds",
+    short: "Useful load",
+    sentence: () => "Useful load that holds in " + percent(STUDY.planning.holdsIn) + " of the hours",
+    unit: () => "kg, rounded down",
+    ofAircraft: true,
+    text: loadText,
+    cell: (load) => (load === NOT_MET ? "none" : grouped(load)),
+  },
   median: {
     name: "Density altitude, median",
     short: "DA, median",
@@ -59,6 +68,8 @@ const MEASURES = {
     cell: percentNumber,
   },
 };
+
+if (!STUDY.planning.hasWeights) delete MEASURES.weight;
 
 function grouped(whole) {
   return (whole < 0 ? MINUS : "") + String(Math.abs(whole)).replace(/\B(?=(\d{3})+$)/g, ",");

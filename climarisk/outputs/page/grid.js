@@ -6,7 +6,12 @@ function gridCell(state, month, hour) {
   const text = measureText(state.measure, value, "hour");
   const inside = inWindow(state.field, month, hour);
   const told =
-    MONTH_NAMES[month] + ", " + hourText(hour) + ": " + text + (inside ? "" : ", outside the window");
+    MONTH_NAMES[month] +
+    ", " +
+    hourText(hour) +
+    ": " +
+    (state.measure === "weight" ? massText(value, STUDY.aircraft[state.aircraft]) : text) +
+    (inside ? "" : ", outside the window");
   const chosen = !state.period.season && state.period.index === month && state.hour === hour;
   return el(
     "td",

@@ -120,6 +120,7 @@ function listRow(field, index, choose) {
   const steep = isSteep(field);
   const picture = symbol(-1, steep);
   const value = el("span", null);
+  const second = el("small", null);
   const interval = el("td", { role: "cell", class: "number column-interval" });
   const pick = el("input", {
     type: "checkbox",
@@ -133,27 +134,44 @@ function listRow(field, index, choose) {
     { role: "row" },
     el("th", { scope: "row", role: "rowheader" }, fieldButton(field, index, choose)),
     el("td", { role: "cell", class: "number" }, grouped(Math.round(feetOf(field.elevation))) + " ft"),
-    el("td", { role: "cell", class: "number value" }, el("span", { class: "value-cell" }, picture, value)),
+    el(
+      "td",
+      { role: "cell", class: "number value" },
+      el("span", { class: "value-cell" }, picture, el("span", null, value, second)),
+    ),
     interval,
     el("td", { role: "cell", class: "column-compare" }, label),
   );
   const doubtful = isDoubtful(field);
   const words = plainText(field.name) + " " + plainText(field.id);
-  return { field, index, node, symbol: picture, doubtful, value, interval, pick, label, words, shown: {} };
+  return {
+    field,
+    index,
+    node,
+    symbol: picture,
+    doubtful,
+    value,
+    second,
+    interval,
+    pick,
+    label,
+    words,
+    shown: {},
+  };
 }
 
-// The interval of a share belongs to the whole window; hours have none.
+// The interval of a share or a mass belongs to the whole window; hours have none.
 function hasIntervals(state) {
   const wide = WIDE.matches || document.documentElement.classList.contains("printing");
-  return wide && state.measure === "shortfall" && (state.hour < 0 || state.period.season);
+  return wide && ["shortfall", "weight"].includes(state.measure) && (state.hour < 0 || state.period.season);
 }
 
 function readRow(row, state) {
   const { index } = row;
   row.number = measured(state.measure, index, state.aircraft, state.period, state.hour);
-  const bounds = (column) =>
-    hasIntervals(state) ? riskShare(column, index, state.aircraft, state.period) : null;
-  [row.low, row.high] = [bounds("ci_low"), bounds("ci_high")];
+  [row.low, row.high] = hasIntervals(state)
+    ? measureBounds(state.measure, index, state.aircraft, state.period)
+    : [null, null];
 }
 
 function showRow(row, state) {
@@ -161,9 +179,11 @@ function showRow(row, state) {
   const text = measureText(state.measure, row.number, timeOf(state.period, state.hour));
   patchSymbol(row, classOf(state.measure, row.number), false);
   patch(row, "value", text, (words) => (row.value.textContent = words));
+  const second = state.measure === "weight" ? listedMass(row.number, STUDY.aircraft[state.aircraft]) : "";
+  patch(row, "second", second, (words) => (row.second.textContent = words));
   patch(row, "none", none, (on) => row.node.classList.toggle("none", on));
   if (hasIntervals(state))
-    patch(row, "interval", none ? NO_DATA : interval(row.low, row.high), (words) => {
+    patch(row, "interval", none ? NO_DATA : measureInterval(state.measure, row.low, row.high), (words) => {
       row.interval.textContent = words;
       row.interval.classList.toggle("unknown", row.high === null);
     });

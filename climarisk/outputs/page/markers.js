@@ -122,6 +122,7 @@ function showMarker(entry, state) {
   const value = measured(state.measure, entry.index, state.aircraft, state.period, state.hour);
   entry.rank = classOf(state.measure, value);
   entry.text = measureText(state.measure, value, timeOf(state.period, state.hour));
+  entry.told = toldText(state, value);
   entry.chosen = state.field === entry.index;
   patch(entry, "text", entry.text, (text) => (entry.number.textContent = text));
   patch(entry, "chosen", entry.chosen, (chosen) => entry.root.classList.toggle("chosen", chosen));
@@ -129,7 +130,7 @@ function showMarker(entry, state) {
   const height = entry.chosen ? 100000 : (entry.rank + 1) * 1000;
   patch(entry, "height", height, (offset) => entry.marker.setZIndexOffset(offset));
   if (!entry.keyboard) return;
-  const name = [givenString(STUDY.fields[entry.index].name), entry.text, ...entry.marks].join(", ");
+  const name = [givenString(STUDY.fields[entry.index].name), entry.told, ...entry.marks].join(", ");
   patch(entry, "name", name, (words) => entry.box.setAttribute("aria-label", words));
 }
 
@@ -215,7 +216,7 @@ function fillTip(content, entry) {
   const field = STUDY.fields[entry.index];
   content.replaceChildren(
     el("b", null, given(field.name)),
-    ...[elevationText(field.elevation), entry.text, ...entry.marks].map((line) => el("span", null, line)),
+    ...[elevationText(field.elevation), entry.told, ...entry.marks].map((line) => el("span", null, line)),
   );
 }
 

@@ -18,6 +18,7 @@ function headlineFacts(state) {
     ...(central === null ? [] : [["Central share", percent(central) + " with the air as estimated"]]),
     [confidenceText(), intervalText(state)],
     ["Usable hours", usableText(state.field, state.aircraft, state.period)],
+    ...weightFacts(state),
     [
       "Years, coverage",
       (years || 0) + " years that count, " + shareBelowAll(risk("coverage")) + " of the period",
@@ -156,6 +157,7 @@ function pressureTable(field) {
 function figureParts(state, actions) {
   return [
     worksPart(state),
+    weightPart(state),
     section(
       "Month by hour",
       el("ul", { class: "legend small own-scale" }, classItems(scaleOf(state.measure, "hour"))),
@@ -165,6 +167,8 @@ function figureParts(state, actions) {
     marginsPart(state),
     altitudePart(state),
     humidityPart(state.field),
+    icingPart(state),
+    powerPart(state),
     evidencePart(state),
     scenarioPart(state),
   ].filter(Boolean);

@@ -3,6 +3,7 @@
 // The list and the map as they are on paper: with intervals, and fitted to the fields.
 function showPrinted(map) {
   draw();
+  if (state.view) return; // no map there
   map.invalidateSize({ animate: false, pan: false });
   fitFields(map);
 }
@@ -23,6 +24,7 @@ function preparePrint(map) {
     for (const details of closed) details.open = false;
     document.documentElement.classList.remove("printing");
     draw();
+    if (state.view) return;
     map.invalidateSize({ animate: false, pan: false });
     if (view) map.setView(view.centre, view.zoom, { animate: false });
   });

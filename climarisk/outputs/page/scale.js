@@ -54,14 +54,6 @@ function colourRules(scope, count, dark) {
 
 const scaleStyle = document.head.appendChild(el("style", null));
 
-// The colours of the map and the list, and those of the grid of a field, whose scale may have
-// another number of classes.
-function applyColours(count, gridCount) {
-  const rules = (dark) => colourRules(":root", count, dark) + colourRules(".own-scale", gridCount, dark);
-  scaleStyle.textContent =
-    rules(false) + "@media screen and (prefers-color-scheme:dark){" + rules(true) + "}";
-}
-
 function edgeText(share) {
   return String(Number((share * 100).toFixed(2)));
 }
@@ -113,6 +105,7 @@ function knownHours(name) {
 }
 
 const ALTITUDE_SCALE = altitudeScale();
+const ICING_SCALE = shareScale(STUDY.edges.nearSaturation);
 const SCALES = {
   shortfall: shareScale(STUDY.bands),
   "usable month": usableScale(knownHours("month_offered"), " h"),
@@ -125,7 +118,20 @@ const SCALES = {
 };
 
 function scaleOf(measure, time) {
+  if (measure === "weight") return weightScale(STUDY.aircraft[state.aircraft]);
   return SCALES[measure === "usable" ? "usable " + time : measure];
+}
+
+// The colours of the map and the list, and those of the grids of a field, whose scales may have
+// other numbers of classes.
+const COLOURED = { ".icing-scale": ICING_SCALE, ".share-scale": SCALES.shortfall };
+
+function applyColours(count, gridCount) {
+  const fixed = Object.entries(COLOURED).map(([scope, { labels }]) => [scope, labels.length]);
+  const scopes = [[":root", count], [".own-scale", gridCount], ...fixed];
+  const rules = (dark) => scopes.map(([scope, number]) => colourRules(scope, number, dark)).join("");
+  scaleStyle.textContent =
+    rules(false) + "@media screen and (prefers-color-scheme:dark){" + rules(true) + "}";
 }
 
 // The scale of the map and the list; each drawing sets it.

@@ -8,6 +8,10 @@ const state = {
   field: -1,
   compare: [],
   comparing: false,
+  view: "", // or an overview of the study: "bases", "schedule"
+  who: 0, // of the bases: the fleet, or an aircraft counted from 1
+  base: -1, // the base to compare with; the best one
+  flights: "share",
   sort: "value",
   direction: -1,
 };
@@ -65,7 +69,7 @@ function readPeriod(words) {
 
 // The direction in which the worst value leads the list.
 function worstFirst(measure) {
-  return measure === "usable" ? 1 : -1;
+  return measure === "usable" || measure === "weight" ? 1 : -1;
 }
 
 function readSort(words) {
@@ -98,8 +102,28 @@ function readFragment() {
   if (words.has("compare") && compared.includes(-1)) unknown.push("a field to compare");
   state.comparing = state.field < 0 && known.length > 1;
   if (state.comparing) state.compare = known;
+  readOverview(words);
   readSort(words);
   settle();
+}
+
+function readOverview(words) {
+  const view = words.get("view") || "";
+  if (view && !OVERVIEWS[view]) unknown.push("an overview");
+  state.view = OVERVIEWS[view] && state.field < 0 && !state.comparing ? view : "";
+  state.who = 1 + wanted(words, "of", STUDY.aircraft, "an aircraft of the bases");
+  state.base = wanted(words, "base", STUDY.fields, "a base to compare with");
+  state.flights = FLIGHT_ORDERS[words.get("flights")] ? words.get("flights") : "share";
+}
+
+function writeOverview(words) {
+  words.set("view", state.view);
+  if (state.view === "schedule") {
+    if (state.flights !== "share") words.set("flights", state.flights);
+    return;
+  }
+  if (state.who) words.set("of", STUDY.aircraft[state.who - 1].id);
+  if (state.base >= 0) words.set("base", STUDY.fields[state.base].id);
 }
 
 // Seasons have figures over the whole window only.
@@ -119,10 +143,11 @@ function writeFragment() {
   words.set("measure", state.measure);
   if (state.field >= 0) words.set("field", STUDY.fields[state.field].id);
   if (state.comparing) words.set("compare", state.compare.map((index) => STUDY.fields[index].id).join(" "));
+  if (state.view) writeOverview(words);
   if (state.sort !== "value" || state.direction !== worstFirst(state.measure))
     words.set("sort", state.sort + "." + (state.direction > 0 ? "up" : "down"));
   // Opening a field or a comparison is a step that Back takes back; a choice is not.
-  const part = state.field + " " + state.comparing;
+  const part = state.field + " " + state.comparing + " " + state.view;
   const step = writtenPart !== null && part !== writtenPart && !fromHistory;
   history[step ? "pushState" : "replaceState"](null, "", "#" + words);
   writtenPart = part;

@@ -1,19 +1,51 @@
 // works.js: when a field works for the aircraft, and what limits it: months, hours, margins.
 
-// Hours of the window with a share below the edge; null where no hour has a figure.
-function workingHours(field, aircraft, month) {
-  const inside = Array.from({ length: 24 }, (_, hour) => hour).filter((hour) => inWindow(field, month, hour));
-  const shares = inside.map((hour) => hourShare(field, aircraft, month, hour));
-  if (shares.every((share) => share === null)) return null;
-  const hours = inside.filter((_, i) => shares[i] !== null && shares[i] < STUDY.worksShare);
-  return { hours, inside: inside.length };
+function monthPlace(state, month) {
+  return riskPlace(state.field, state.aircraft, { season: false, index: month });
 }
 
-function workingText(found) {
-  if (found === null) return NO_DATA;
-  if (!found.hours.length) return "no hour";
-  const all = found.hours.length === found.inside ? "all: " : "";
-  return all + hourRanges(found.hours);
+// Hours of the window below the target; null where no hour of the window has a figure.
+function workingHours(state, month) {
+  const place = monthPlace(state, month);
+  if (countAt("clock_count", place) === null) return null;
+  const cells = ARRAYS.clock_bits.length / 3;
+  const isSet = (hour) => (ARRAYS.clock_bits[(hour >> 3) * cells + place] >> (7 - (hour & 7))) & 1;
+  return Array.from({ length: 24 }, (_, hour) => hour).filter(isSet);
+}
+
+function workingCell(state, month) {
+  const hours = workingHours(state, month);
+  if (hours === null) return NO_DATA;
+  const place = monthPlace(state, month);
+  const unknown = countAt("clock_unknown", place);
+  const [first, last] = ["first", "last"].map((end) => countAt("clock_" + end, place));
+  const clock =
+    first === null || last === null
+      ? null
+      : [...new Set([PLANNING.clocks[first], PLANNING.clocks[last]])].join(" to ");
+  return [
+    hours.length ? hourRanges(hours) : "no hour",
+    clock === null ? null : el("small", null, "clock ", given(clock)),
+    unknown ? el("small", null, unknown + (unknown === 1 ? " hour" : " hours") + " without figures") : null,
+  ];
+}
+
+function daylightCell(state, month, notes) {
+  const place = monthPlace(state, month);
+  const [usable, all, low, high] = ["usable_hours", "daylight_hours", "usable_low", "usable_high"].map(
+    (name) => hoursAt("daylight_" + name, place),
+  );
+  if (usable === null) return NO_DATA;
+  const note = countAt("daylight_note", place);
+  return [
+    grouped(usable) + " of " + grouped(all),
+    el(
+      "small",
+      null,
+      low === null || high === null ? "no interval" : grouped(low) + "-" + grouped(high),
+      notes.letter(note === null ? null : STUDY.notes[note]),
+    ),
+  ];
 }
 
 function usableText(field, aircraft, period) {
@@ -22,29 +54,15 @@ function usableText(field, aircraft, period) {
   return grouped(usable) + " of " + grouped(offeredHours(field, period));
 }
 
-// The lower and upper end of the usable hours, from the interval of the share.
-function usableInterval(field, aircraft, period) {
-  const [low, high] = ["ci_low", "ci_high"].map((column) => riskShare(column, field, aircraft, period));
-  if (low === null || high === null) return "none";
-  // Shares and hours are known to their levels and to whole hours: the interval is taken as wide as
-  // they leave it, so that it never looks better than it is.
-  const offered = offeredHours(field, period);
-  const least = Math.floor(offered * (1 - nextLevel(high)));
-  const most = Math.min(offered, Math.ceil((offered + 1) * (1 - low)));
-  return grouped(least) + "-" + grouped(most);
-}
-
 function worksPart(state) {
-  const limit = edgeText(STUDY.worksShare) + "\u00a0%";
-  const rows = MONTH_NAMES.map((name, index) => {
-    const period = { season: false, index };
-    return [
-      name,
-      workingText(workingHours(state.field, state.aircraft, index)),
-      usableText(state.field, state.aircraft, period),
-      usableInterval(state.field, state.aircraft, period),
-    ];
-  });
+  const limit = edgeText(PLANNING.target) + "\u00a0%";
+  const notes = new Notes();
+  const rows = MONTHS.map((name, month) => [
+    name,
+    workingCell(state, month),
+    daylightCell(state, month, notes),
+    percent(shareAt("run_days", monthPlace(state, month))),
+  ]);
   return section(
     "When it works",
     el(
@@ -52,15 +70,26 @@ function worksPart(state) {
       { class: "key" },
       "Hours of the window, first to last full hour of local standard time, in which less than " +
         limit +
-        " of the days fall short. " +
-        "Usable hours a month: hours of the window that do not fall short. Colours and hours go by the unrounded share.",
+        " of the days fall short; below them the first and the last by the civil clock" +
+        (PLANNING.year ? " of " + PLANNING.year : "") +
+        ". Usable hours a month: hours in daylight that do not fall short, with their " +
+        confidenceText() +
+        ". Days: at least " +
+        PLANNING.runHours +
+        " usable hours in a row.",
     ),
     table(
       ["When ", given(STUDY.aircraft[state.aircraft].name), " works here"],
-      ["Month", "Hours below " + limit, "Usable hours", confidenceText()],
+      [
+        "Month",
+        "Hours below " + limit,
+        "Usable in daylight",
+        "Days with " + PLANNING.runHours + " h in a row",
+      ],
       rows,
       "plain-table works",
     ),
+    notes.list(),
   );
 }
 

@@ -1,4 +1,4 @@
-"""The pages of the air: density altitude and humidity of the fields, whatever the aircraft."""
+"""The pages of the air: density altitude, humidity and what they do to engines."""
 
 from __future__ import annotations
 
@@ -8,6 +8,7 @@ from climarisk.outputs.report.aircraft import MOST_CHARTS, limit_sentence
 from climarisk.outputs.report.charts import air_chart, feet_scale
 from climarisk.outputs.report.data import N_MONTHS, PERCENTILES, ranked, worst
 from climarisk.outputs.report.key import chart_card, gap_words
+from climarisk.outputs.report.planning import icing_tables, power_tables
 from climarisk.outputs.report.tables import (
     Sheet,
     altitude_tables,
@@ -34,6 +35,8 @@ def air_section(sheet: Sheet) -> Html:
         altitude_tables(sheet, order),
         humidity_tables(sheet, order),
         saturation_tables(sheet, order),
+        icing_tables(sheet, order),
+        power_tables(sheet, order),
         class_="sheet",
         id="air",
     )

@@ -17,6 +17,7 @@ from climarisk.results import StudyResult
 
 N_MONTHS = len(MONTHS)
 PERCENTILES = ("p10", "p50", "p90")
+_WEIGHTS = ("mass_kg", "useful_load_kg", "ci_low_kg", "ci_high_kg", "never_met", "n_years")
 _RISK = ("shortfall", "ci_low", "ci_high", "outside_table", "usable_hours", "n_years", "coverage")
 
 
@@ -38,6 +39,10 @@ class Figures:
         ``p10, p50, p90`` in ft and in per cent.
     saturation : dict of str to ndarray, same shape
         ``share_1k, share_2_5k``, 0-1.
+    weights : dict of str to ndarray, shape (n_fields, n_aircraft, 12 + n_seasons)
+        ``mass_kg, useful_load_kg, ci_low_kg, ci_high_kg, never_met`` (0-1), ``n_years``.
+    outcome : ndarray of str, same shape
+        What a mass stands for, as in the frames of the weights; empty without data.
     order : ndarray of int, shape (n_fields,)
         Fields, the one with the highest monthly share of any aircraft first.
     numbers : ndarray of int, shape (n_fields,)
@@ -51,6 +56,8 @@ class Figures:
     altitude: dict[str, np.ndarray]
     humidity: dict[str, np.ndarray]
     saturation: dict[str, np.ndarray]
+    weights: dict[str, np.ndarray]
+    outcome: np.ndarray
     order: np.ndarray
     numbers: np.ndarray
 
@@ -99,6 +106,7 @@ def figures(result: StudyResult) -> Figures:
 
     risk = cube(result.risk_monthly, result.risk_seasonal, fields, aircraft)
     near = cube(result.near_saturation_monthly, result.near_saturation_seasonal, fields)
+    weights = cube(result.weights_monthly, result.weights_seasonal, fields, aircraft)
     numbers = {name: risk.floats(name) for name in _RISK}
     order = ranked(numbers["shortfall"][:, :, :N_MONTHS])
     return Figures(
@@ -109,6 +117,8 @@ def figures(result: StudyResult) -> Figures:
         air("density_altitude"),
         air("relative_humidity"),
         {name: near.floats(name) for name in ("share_1k", "share_2_5k")},
+        {name: weights.floats(name) for name in _WEIGHTS},
+        weights.texts("outcome"),
         order,
         np.argsort(order) + 1,
     )

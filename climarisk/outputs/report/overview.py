@@ -97,6 +97,10 @@ def _contents(sheet: Sheet) -> Html:
         el("li", el("a", isolated(name), href=f"#aircraft-{a + 1}"))
         for a, name in enumerate(sheet.aircraft)
     ]
+    further = [("Bases side by side", "bases", not sheet.result.bases.empty)]
+    flights = sheet.result.schedule_flights
+    further.append(("Schedule", "schedule", flights is not None and not flights.empty))
+    links += [el("li", el("a", text, href=f"#{to}")) for text, to, there in further if there]
     links.append(el("li", el("a", "Density altitude and humidity", href="#air")))
     links.append(el("li", el("a", "Method, sources and cautions", href="#sources")))
     return el("nav", "In this report: ", el("ol", links), class_="contents", aria_label="Contents")

@@ -157,6 +157,7 @@ def period_tables(
     cell: Callable[[int, int], Html],
     heads: tuple[object, object, object],
     last: tuple[str, Callable[[int], Html]] | None = None,
+    seasons: bool = True,
 ) -> list[Html]:
     """Tables of fields by months and seasons.
 
@@ -171,14 +172,16 @@ def period_tables(
         Caption, heading over the months, heading over the seasons.
     last : tuple of str and callable, optional
         Heading and cell of a last column of the first table.
+    seasons : bool
+        Whether there are columns for the seasons too; a steep runway is marked only then.
     """
     tables = []
-    for periods in _column_groups(len(sheet.figures.seasons)):
+    for periods in _column_groups(len(sheet.figures.seasons) if seasons else 0):
         end = last if periods[0] == 0 else None
         rows = [
             el(
                 "tr",
-                field_head(sheet, f, slope=last is not None),
+                field_head(sheet, f, slope=last is not None and seasons),
                 [cell(f, p) for p in periods],
                 end and end[1](f),
             )
@@ -287,7 +290,7 @@ def shortfall_tables(sheet: Sheet, aircraft: int, order: Sequence[int]) -> list[
             if period < N_MONTHS
             else _season_interval(figures, (field, aircraft, period))
         )
-        gap = _gap_mark(figures, figures.risk["shortfall"][field, aircraft], period)
+        gap = gap_mark(figures, figures.risk["shortfall"][field, aircraft], period)
         kind = f"b{band_of(share, sheet.edges)}" + (" first" if period == N_MONTHS else "")
         return el("td", number(share), gap, " ", el("small", below), class_=kind)
 
@@ -320,7 +323,8 @@ def _worst_cell(sheet: Sheet, aircraft: int, field: int) -> Html:
     return el("td", first, [(part, " ") for part in small], class_="end")
 
 
-def _gap_mark(figures: Figures, values: np.ndarray, period: int) -> Html | None:
+def gap_mark(figures: Figures, values: np.ndarray, period: int) -> Html | None:
+    """The mark of a season that has a figure although one of its months has none."""
     return el("span", GAP_MARK, class_="gap") if figures.lacks_month(values, period) else None
 
 
@@ -335,8 +339,8 @@ def altitude_tables(sheet: Sheet, order: Sequence[int]) -> list[Html]:
         if math.isnan(high[field][period]):
             return NO_CELL
         upper, lower = (altitude_text(v[field][period]).removesuffix(" ft") for v in (high, middle))
-        gap = _gap_mark(sheet.figures, sheet.figures.altitude["p90"][field], period)
-        return el("td", upper, gap, " ", el("small", lower), class_=_edge(period))
+        gap = gap_mark(sheet.figures, sheet.figures.altitude["p90"][field], period)
+        return el("td", upper, gap, " ", el("small", lower), class_=edge_class(period))
 
     heads = (
         "Density altitude, ft: 90th percentile, below it the median",
@@ -354,8 +358,8 @@ def humidity_tables(sheet: Sheet, order: Sequence[int]) -> list[Html]:
         if math.isnan(middle[field][period]):
             return NO_CELL
         text, *ends = (number(v[field][period] / 100.0) for v in (middle, low, high))
-        gap = _gap_mark(sheet.figures, sheet.figures.humidity["p50"][field], period)
-        return el("td", text, gap, " ", el("small", "-".join(ends)), class_=_edge(period))
+        gap = gap_mark(sheet.figures, sheet.figures.humidity["p50"][field], period)
+        return el("td", text, gap, " ", el("small", "-".join(ends)), class_=edge_class(period))
 
     heads = (
         "Relative humidity, %: median, below it the 10th and 90th percentile",
@@ -373,8 +377,8 @@ def saturation_tables(sheet: Sheet, order: Sequence[int]) -> list[Html]:
         if math.isnan(near[field][period]):
             return NO_CELL
         below = el("small", number(nearest[field][period]))
-        gap = _gap_mark(sheet.figures, sheet.figures.saturation["share_2_5k"][field], period)
-        return el("td", number(near[field][period]), gap, " ", below, class_=_edge(period))
+        gap = gap_mark(sheet.figures, sheet.figures.saturation["share_2_5k"][field], period)
+        return el("td", number(near[field][period]), gap, " ", below, class_=edge_class(period))
 
     heads = (
         "Near saturation, % of hours: within 2.5 K of the dew point, below it within 1 K",
@@ -384,7 +388,8 @@ def saturation_tables(sheet: Sheet, order: Sequence[int]) -> list[Html]:
     return period_tables(sheet, order, cell, heads)
 
 
-def _edge(period: int) -> str | None:
+def edge_class(period: int) -> str | None:
+    """The class of the first season's cells, which stand apart from the months."""
     return "first" if period == N_MONTHS else None
 
 

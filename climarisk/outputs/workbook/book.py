@@ -55,12 +55,27 @@ from climarisk.outputs.workbook.grids import (
     write_humidity,
     write_margins,
 )
+from climarisk.outputs.workbook.places import BASES, SCHEDULE, write_bases, write_schedule
+from climarisk.outputs.workbook.planning import (
+    ICING,
+    POWER,
+    WEIGHTS,
+    WINDOWS,
+    write_icing,
+    write_power,
+    write_weights,
+    write_windows,
+)
 from climarisk.outputs.workbook.words import air_text, error_shown, write_cautions, write_method
 from climarisk.results import StudyResult
 from climarisk.rules import YEARS
 
 SUMMARY = "Summary"
-OTHER_SHEETS = ("Density altitude", "Humidity", "Margins", "Method and sources", "Cautions")
+#: Sheets that a study may have besides those of its aircraft.
+OTHER_SHEETS = (
+    *(WEIGHTS, WINDOWS, BASES, SCHEDULE, ICING, POWER),
+    *("Density altitude", "Humidity", "Margins", "Method and sources", "Cautions"),
+)
 #: Excel keeps this name for itself.
 _RESERVED = "History"
 _LONGEST_NAME = 31
@@ -97,6 +112,12 @@ def write_workbook(result: StudyResult, path: Path) -> None:
     names = sheet_names([a.name for a in result.aircraft])
     for profile, name in zip(result.aircraft, names, strict=True):
         write_aircraft(book, name, result, profile)
+    write_weights(book, result)
+    write_windows(book, result)
+    write_bases(book, result)
+    write_schedule(book, result)
+    write_icing(book, result)
+    write_power(book, result)
     write_altitude(book, result)
     write_humidity(book, result)
     write_margins(book, result)
@@ -182,7 +203,7 @@ def _write_top(sheet: Sheet, result: StudyResult) -> None:
     sheet.line(
         "How often each aircraft falls short of its margins at each field, month by month, from "
         f"past hourly weather: {scope(result)}. One row per field, one sheet per aircraft, and "
-        "behind them the air, the margins, the method and every caution."
+        "behind them weights, windows, bases, the air, the margins, the method and every caution."
     )
     sheet.line(CAUTIONS[0], "caution")
     sheet.legend("Bands of the shortfall share", 1)

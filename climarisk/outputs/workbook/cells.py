@@ -159,7 +159,6 @@ class Book:
         self.workbook = workbook
         self.edges = [float(edge) for edge in bands][:MOST_EDGES]
         self.labels = band_labels(self.edges) if self.edges else ["any value"]
-        self.colours = YLORBR[len(self.labels)]
         self.title = " ".join(clean(title).split())
         self._formats: dict[tuple[Any, ...], Format] = {}
         self._keys: dict[Format, tuple[Any, ...]] = {}
@@ -180,7 +179,11 @@ class Book:
 
     def band(self, number: int, name: str = "number", **more: Any) -> Format:
         """The format of a cell in a band."""
-        colour = self.colours[number]
+        return self.step(number, len(self.labels), name, **more)
+
+    def step(self, number: int, of: int, name: str = "number", **more: Any) -> Format:
+        """The format of a cell in one of so many classes, the lowest first."""
+        colour = YLORBR[of][number]
         return self.style(name, bg_color=colour, font_color=ink_on(colour), **more)
 
     def numbers(self, num_format: str, **more: Any) -> Show:
@@ -325,10 +328,11 @@ class Sheet:
         self.fit([(word, column, column) for column, word in enumerate(words)], least=height)
         self.next_row()
 
-    def legend(self, label: str, column: int) -> None:
-        """A row with the bands by their numbers and no data from a column on, and its label."""
+    def legend(self, label: str, column: int, classes: Sequence[str] = ()) -> None:
+        """A row with the bands, or other classes, and no data from a column on, and its label."""
+        words = classes or self.book.labels
         keys = [
-            (label, self.book.band(number, "key")) for number, label in enumerate(self.book.labels)
+            (word, self.book.step(number, len(words), "key")) for number, word in enumerate(words)
         ]
         for at, shown in enumerate([*keys, self.book.no_data]):
             self.cell(column + at, shown)

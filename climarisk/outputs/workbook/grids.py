@@ -38,10 +38,10 @@ from climarisk.results import StudyResult
 from climarisk.rules import YEARS
 from climarisk.units import METRES_PER_FOOT
 
-_NUMBERS = tuple(range(1, 13))
-_MONTH_WIDTH = 8.8
+MONTH_NUMBERS = tuple(range(1, 13))
+MONTH_WIDTH = 8.8
 _FIGURE_WIDTH = 22.0
-_QUIET = {"font_color": QUIET}
+QUIETER = {"font_color": QUIET}
 NO_INTERVAL, NO_CHECK, NO_MARGIN = "too few years", "none", "a limit"
 #: What the marks and the colours say, below the title of the sheets that have them.
 FEW = (
@@ -134,7 +134,7 @@ def write_aircraft(
     """The sheet of one aircraft: its shares by field, month and season, and what stands behind."""
     months = result.risk_monthly[result.risk_monthly["aircraft"] == profile.id]
     seasons = result.risk_seasonal[result.risk_seasonal["aircraft"] == profile.id]
-    table = _periods(result, months, seasons, result.risk_seasonal)
+    table = periods_of(result, months, seasons, result.risk_seasonal)
     shares = table.values("shortfall")
     sure = f"{round(float(result.settings['confidence']) * 100)} % interval"
     whole, years = book.numbers(WHOLE), table.values("n_years")
@@ -150,14 +150,14 @@ def write_aircraft(
         Block("Hours in the window", hours("hours_offered"), whole),
         Block(
             "Limiting check",
-            _known(table.values("limiting"), shares, NO_CHECK),
+            known_or(table.values("limiting"), shares, NO_CHECK),
             _checks(book),
             height=22.0,
         ),
         *(
             Block(
                 f"{sure}, {end}",
-                _known(table.values(column), shares, NO_INTERVAL),
+                known_or(table.values(column), shares, NO_INTERVAL),
                 show,
                 None,
                 marks,
@@ -185,7 +185,7 @@ def write_aircraft(
     _write_blocks(sheet, table, blocks)
 
 
-def _known(values: np.ndarray, shares: np.ndarray, without: str) -> np.ndarray:
+def known_or(values: np.ndarray, shares: np.ndarray, without: str) -> np.ndarray:
     """The values, a word where there is none although the share is known."""
     missing = np.array([[v != v or v == "" for v in row] for row in values]).reshape(values.shape)
     unknown = pd.isna(shares)
@@ -245,9 +245,9 @@ def write_humidity(book: Book, result: StudyResult) -> None:
     _write_blocks(sheet, air, blocks)
 
 
-def _air(result: StudyResult, variable: str) -> _Periods:
+def _air(result: StudyResult, variable: str) -> Periods:
     monthly, seasonal = result.distributions_monthly, result.distributions_seasonal
-    return _periods(
+    return periods_of(
         result,
         monthly[monthly["variable"] == variable],
         seasonal[seasonal["variable"] == variable],
@@ -268,7 +268,7 @@ def write_margins(book: Book, result: StudyResult) -> None:
     }
     rows, margins, shares, marks = _margin_grids(result)
     widths = [label_width([*names["field"].values()]), label_width([*names["aircraft"].values()])]
-    sheet = book.sheet("Margins", [*widths, 21.0, 21.0, *[_MONTH_WIDTH] * 12])
+    sheet = book.sheet("Margins", [*widths, 21.0, 21.0, *[MONTH_WIDTH] * 12])
     sheet.line("Margins", "title")
     sheet.line(
         f"{scope(result)[0].upper()}{scope(result)[1:]}. Margin, P10: in 1 hour of 10 the margin "
@@ -310,11 +310,11 @@ def _margin_grids(
     years = dict(zip(zip(*(risk[c] for c in cell), strict=True), risk["n_years"], strict=True))
     known = [years.get(key, 0) for key in zip(*(frame[c] for c in cell), strict=True)]
     numbered = frame.assign(row=codes, n_years=known)
-    axes = ("row", range(len(rows))), ("month", _NUMBERS)
+    axes = ("row", range(len(rows))), ("month", MONTH_NUMBERS)
     shares, margins, counts = (
         grid(numbered, name, *axes) for name in ("shortfall", "margin_p10", "n_years")
     )
-    margins = _known(mapped(lambda v: rounded_down(v, 0.01), margins), shares, NO_MARGIN)
+    margins = known_or(mapped(lambda v: rounded_down(v, 0.01), margins), shares, NO_MARGIN)
     steep = {f.id for f in result.fields if f.is_steep}
     marks = np.array([STEEP if row[0] in steep else "" for row in rows], object).reshape(-1, 1)
     return list(rows), margins, shares, few_years(counts, YEARS.settled_interval) + marks
@@ -330,7 +330,7 @@ def _margin(book: Book) -> Show:
 
 
 @dataclass(frozen=True)
-class _Periods:
+class Periods:
     """Monthly and seasonal rows of the fields, read as one grid."""
 
     fields: tuple[Field, ...]
@@ -342,7 +342,7 @@ class _Periods:
     def values(self, column: str) -> np.ndarray:
         """A column, shape (n_fields, 12 + n_seasons)."""
         rows = ("field", [f.id for f in self.fields])
-        months = grid(self.monthly, column, rows, ("month", _NUMBERS))
+        months = grid(self.monthly, column, rows, ("month", MONTH_NUMBERS))
         return np.hstack([months, grid(self.seasonal, column, rows, ("season", self.seasons))])
 
     def gaps(self, values: np.ndarray) -> np.ndarray:
@@ -354,14 +354,14 @@ class _Periods:
         return marks
 
 
-def _periods(
+def periods_of(
     result: StudyResult, monthly: pd.DataFrame, seasonal: pd.DataFrame, whole: pd.DataFrame
-) -> _Periods:
+) -> Periods:
     """Rows of the fields, with the seasons in the order of the whole frame."""
     seasons = [str(season) for season in pd.unique(whole["season"])]
     days = result.settings.get("seasons", {})
     months = [_months_of(days.get(season, ())) for season in seasons]
-    return _Periods(result.fields, monthly, seasonal, seasons, months)
+    return Periods(result.fields, monthly, seasonal, seasons, months)
 
 
 def _months_of(days: Sequence[str]) -> list[int]:
@@ -375,14 +375,19 @@ def _months_of(days: Sequence[str]) -> list[int]:
 
 
 def _open(
-    book: Book, name: str, result: StudyResult, table: _Periods, figure: float = _FIGURE_WIDTH
+    book: Book, name: str, result: StudyResult, table: Periods, figure: float = _FIGURE_WIDTH
 ) -> Sheet:
     width = label_width(field_labels(result))
-    seasons = [min(max(_MONTH_WIDTH + 1, len(season) * 0.75), 14.0) for season in table.seasons]
-    return book.sheet(name, [figure, width, 10.0, *[_MONTH_WIDTH] * 12, *seasons])
+    return book.sheet(name, [figure, width, 10.0, *period_widths(table.seasons)])
 
 
-def _write_blocks(sheet: Sheet, table: _Periods, blocks: Sequence[Block]) -> None:
+def period_widths(seasons: Sequence[str]) -> list[float]:
+    """Widths of the columns of the months and the seasons."""
+    widths = [min(max(MONTH_WIDTH + 1, len(season) * 0.75), 14.0) for season in seasons]
+    return [*[MONTH_WIDTH] * 12, *widths]
+
+
+def _write_blocks(sheet: Sheet, table: Periods, blocks: Sequence[Block]) -> None:
     """The headings, and the rows of all figures below each other as one table to filter."""
     sheet.head(["Figure", "Field", "Elevation, ft", *MONTHS, *table.seasons])
     head, book = sheet.row - 1, sheet.book
@@ -390,10 +395,10 @@ def _write_blocks(sheet: Sheet, table: _Periods, blocks: Sequence[Block]) -> Non
     for block in blocks:
         for at, field in enumerate(table.fields):
             cells: list[Shown] = [
-                (block.name, book.style("text") if at == 0 else book.style("text", **_QUIET)),
+                (block.name, book.style("text") if at == 0 else book.style("text", **QUIETER)),
                 (labels[at], book.style("text")),
                 (float(whole_feet(field.elevation_m)), book.style("number", num_format=WHOLE)),
-                *_shown(book, block, at),
+                *shown_cells(book, block, at),
             ]
             if at == 0:
                 cells = [(value, book.varied(shape, **EDGE)) for value, shape in cells]
@@ -406,7 +411,7 @@ def _write_blocks(sheet: Sheet, table: _Periods, blocks: Sequence[Block]) -> Non
     sheet.finish(head, 3)
 
 
-def _shown(book: Book, block: Block, at: int) -> list[Shown]:
+def shown_cells(book: Book, block: Block, at: int) -> list[Shown]:
     """The figures of one field."""
     cells = [block.show(value) for value in block.values[at]]
     if block.marks is None:

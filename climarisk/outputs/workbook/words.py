@@ -111,6 +111,52 @@ _MEANINGS = (
         f"“{MEASURED}”: nothing is transferred and the pressure error is below "
         f"{PRESSURE_TOLD_FT:g} ft.",
     ),
+    (
+        "Mass, useful load",
+        "The largest mass at which every check of take-off, climb and landing held in the stated "
+        "share of the hours, and what it leaves above the empty mass, rounded down; never above "
+        "the maximum mass. “cannot be met”: at no tabulated mass did they hold that often.",
+    ),
+    ("Hours in which no mass holds", "Hours in which some check fails at every tabulated mass."),
+    (
+        "Hours of the day, LST",
+        "Hours of the hours window whose own shortfall share is below the target, by local "
+        "standard time; “h no data” counts hours of the day without a figure.",
+    ),
+    (
+        "Usable daylight hours",
+        "Hours of civil daylight that do not fall short, whatever the hours window; known hours "
+        "stand for the others.",
+    ),
+    (
+        "Days with hours in a row",
+        "Share of the days, of those known, with so many usable hours one after the other.",
+    ),
+    (
+        "Usable hours a month",
+        "Hours of the window that do not fall short, mean over the twelve months; of the fleet, "
+        "the mean over its aeroplanes.",
+    ),
+    (
+        "Expected to fall short",
+        "The sum of the shares of the flights, rounded up; single years of the record beside it.",
+    ),
+    (
+        "Carburettor icing",
+        "Daylight hours whose surface air lies in a band of the chart or the screening; serious in "
+        "some phase of a flight includes a descent at low power. Wherever such a figure stands, so "
+        "does whether the chart was verified.",
+    ),
+    (
+        "Power",
+        "At full throttle, in per cent of that in standard air at sea level. “not computed”: the "
+        "profile lacks what the method needs.",
+    ),
+    (
+        "Humidity, ft and % of power",
+        "What the vapour alone adds to the density altitude and takes from the power, against "
+        "dry air of the same pressure and temperature.",
+    ),
     ("Cautions", "Findings about the field that are more than a note; see the sheet “Cautions”."),
     ("no data", "The record does not meet the completeness rule: it does not mean no risk."),
 )
@@ -159,15 +205,21 @@ def _told(sheet: Sheet, name: str, text: str) -> None:
 
 def _plain(value: Any) -> str:
     if isinstance(value, Mapping):
-        # Seasons by their first and last day.
-        return "; ".join(
-            f"{name}: {' to '.join(map(_plain, days))}" for name, days in value.items()
-        )
+        return "; ".join(f"{name}: {_within(part)}" for name, part in value.items()) or "none"
     if isinstance(value, list | tuple):
-        return ", ".join(_plain(part) for part in value)
+        # Texts are the first and the last day of a season, or the ends of a window.
+        between = " to " if all(isinstance(part, str) for part in value) else ", "
+        return between.join(_plain(part) for part in value)
     if isinstance(value, bool):
         return "yes" if value else "no"
-    return str(value)
+    return f"{value:g}" if isinstance(value, float) else str(value)
+
+
+def _within(value: Any) -> str:
+    """A value inside another one; a mapping there in brackets."""
+    if isinstance(value, Mapping):
+        return f"({', '.join(f'{name} {_plain(part)}' for name, part in value.items())})"
+    return _plain(value)
 
 
 def _aircraft_text(profile: AircraftProfile) -> str:

@@ -1,0 +1,1 @@
+"""The evidence folder: what is filed, its method statement, its check."""
