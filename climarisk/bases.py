@@ -306,6 +306,7 @@ def _bases(sides: _Sides) -> pd.DataFrame:
                 "worst_season": "",
                 "n_years": int(sides.n_years[f, a]),
                 "interval_note": _note(sides, f, a),
+                "steep": "yes" if sides.study.fields[f].is_steep else "",
             }
             if np.isfinite(sides.usable[f, a]):
                 n_years = row["n_years"]

@@ -19,6 +19,9 @@ if TYPE_CHECKING:
     from climarisk.store import Store
     from climarisk.study import Study
 
+#: Where the findings are of commands that write no study.json.
+_CHECK_TELLS = "what climarisk check tells"
+
 app = typer.Typer(
     name="climarisk",
     help="Seasonal density-altitude and humidity risk of airfields: which months and hours "
@@ -200,6 +203,7 @@ def evidence(
 
 def _check_evidence(folder: Path, study: Path | None, store: Path | None) -> None:
     from climarisk.outputs.evidence.check import check_evidence, is_repeatable
+    from climarisk.outputs.evidence.words import check_words
 
     with Bars() as progress:
         problems = check_evidence(folder, study, _store(store), progress)
@@ -207,12 +211,8 @@ def _check_evidence(folder: Path, study: Path | None, store: Path | None) -> Non
         results.print(escaped(problem))
     if problems:
         raise ClimariskError(f"{folder}: the evidence does not hold; see above.")
-    told = "every file is as written, and the numbers fit together"
-    if study is not None or is_repeatable(folder):
-        told += "; run again, the study gives the same"
-    else:
-        told += "; the study was not run again: name it with --study"
-    results.print(escaped(f"{folder}: {told}."))
+    repeated = study is not None or is_repeatable(folder)
+    results.print(escaped(f"{folder}: {check_words(repeated)}."))
 
 
 @app.command(epilog="Example: climarisk fetch strips/study.toml")
@@ -263,7 +263,7 @@ def schedule(
         weather = load_weather(read, kept, progress, offline)
         frames, findings = evaluate_schedule(read, weather, progress)
         files = write_schedule(read, frames, folder)
-    print_findings(findings)
+    print_findings(findings, _CHECK_TELLS)
     for line in schedule_lines(frames, read.confidence, folder, files):
         results.print(escaped(line))
 
@@ -290,7 +290,7 @@ def bases(
         weather = load_weather(read, kept, progress, offline)
         result = evaluate(read, weather, progress)
         files = write_bases(result, folder)
-    print_findings(result.findings)
+    print_findings(result.findings, _CHECK_TELLS)
     for line in bases_lines(result, folder, files):
         results.print(escaped(line))
 

@@ -3,22 +3,22 @@
 from __future__ import annotations
 
 import datetime as dt
+import math
 import re
 from collections.abc import Iterable, Mapping, Sequence
 from dataclasses import dataclass, field
 from pathlib import Path
-from typing import Annotated, Literal
-
-from annotated_types import Ge, Gt, Le
-from pydantic import Field as Key
+from typing import Literal, cast, get_args
 
 from climarisk.aircraft import AircraftProfile
 from climarisk.fields import Field
-from climarisk.inputs import Label, Row, Text, nearest, read_table, validate
+from climarisk.inputs import Label, Row, nearest, read_table, repeated, validate
 from climarisk.seasons import Season
 
 Operation = Literal["takeoff", "landing", "both"]
 WEEKDAYS = ("Mon", "Tue", "Wed", "Thu", "Fri", "Sat", "Sun")
+#: Flights on one date that a row may hold.
+MOST_REPEATS = 1000
 #: Rows of a file, dates of a row, and dates of all rows together that are read at most.
 MOST_ROWS, MOST_DATES, MOST_DATES_OF_ALL = 100_000, 5000, 2_000_000
 #: Years whose calendar and time zones are known well enough to plan in.
@@ -26,8 +26,14 @@ _YEARS = range(1800, 2201)
 #: Problems told one by one; of the rest the number is told.
 _MOST_TOLD = 200
 
+#: Words of one cell that are quoted in a problem; of the rest the number is told.
+_MOST_QUOTED = 3
+
 _ISO = re.compile(r"[0-9]{4}-[0-9]{2}-[0-9]{2}")
+_SLASHED = re.compile(r"[0-9]{1,4}/[0-9]{1,2}(/[0-9]{1,4})?")
 _CLOCK = re.compile(r"([0-9]{1,2}):([0-9]{2})")
+#: A whole number, also as spreadsheets write it with a decimal point.
+_WHOLE = re.compile(r"([0-9]{1,9})(\.0*)?")
 
 
 @dataclass(frozen=True)
@@ -63,17 +69,10 @@ class Flight:
     when: str
 
 
-class _FlightRow(Row):
+class _Named(Row):
+    """The cell that stands in the tables as it is; all the others are read word by word."""
+
     flight: Label
-    field: Text
-    aircraft: Text
-    operation: Operation
-    time: Text
-    dates: str | None = None
-    season: Text | None = None
-    weekdays: Text | None = None
-    mass_kg: Annotated[float, Gt(0)] | None = None
-    repeats: Annotated[int, Ge(1), Le(1000)] = Key(default=1)
 
 
 _REQUIRED = ("flight", "field", "aircraft", "operation", "time")
@@ -115,24 +114,24 @@ def read_flights(
             f"{path}: the schedule has {len(rows):,} rows; at most {MOST_ROWS:,} are read. "
             "Split it, or give repeated flights as one row."
         ]
-    book = _Book(path, {f.id: f for f in fields}, aircraft, seasons, year)
+    book = _Book({f.id: f for f in fields}, aircraft, seasons, year)
     flights: list[Flight] = []
     lines: dict[str, int] = {}
     n_dates = 0
     for number, row in rows:
         where = f"{path}, line {number}"
-        given = {name: cell for name, cell in row.items() if cell is not None}
-        checked = validate(_FlightRow, given, where, problems)
-        if checked is None:
-            continue
-        if checked.flight in lines:
+        cells = {name: cell for name, cell in row.items() if cell is not None}
+        before, name = len(problems), cells.get("flight", "")
+        named = {"flight": name} if name else {}
+        if validate(_Named, named, where, problems) is not None and name in lines:
             problems.append(
-                f"{where}: the flight {checked.flight!r} stands in line {lines[checked.flight]} "
-                "too; give each row its own."
+                f"{where}: the flight {name!r} stands in line {lines[name]} too; give each row "
+                "its own."
             )
-        lines.setdefault(checked.flight, number)
-        flight = _flight(checked, book, where, problems)
-        if flight is not None:
+        lines.setdefault(name, number)
+        flight, told = _flight(cells, book)
+        problems += [f"{where}: {problem}" for problem in told]
+        if flight is not None and len(problems) == before:
             flights.append(flight)
             n_dates += len(flight.dates)
     if n_dates > MOST_DATES_OF_ALL:
@@ -150,190 +149,256 @@ def _shortened(problems: list[str], path: Path) -> list[str]:
 
 @dataclass
 class _Book:
-    """What a row is read against; dates already worked out are kept."""
+    """What a row is read against; dates and hints already worked out are kept."""
 
-    path: Path
     fields: Mapping[str, Field]
     aircraft: Mapping[str, AircraftProfile]
     seasons: Mapping[str, Season]
     year: int
-    known: dict[tuple[str | None, ...], tuple[dt.date, ...] | str] = field(default_factory=dict)
+    known: dict[tuple[str | None, ...], tuple[tuple[dt.date, ...], list[str]]] = field(
+        default_factory=dict
+    )
+    hints: dict[tuple[str, str], str] = field(default_factory=dict)
 
-    def dates(self, row: _FlightRow) -> tuple[dt.date, ...]:
-        """The dates of a row.
-
-        Raises
-        ------
-        ValueError
-            They cannot be told; the reason is a sentence.
-        """
-        key = (row.dates, row.season, row.weekdays)
+    def dates(self, cells: Mapping[str, str]) -> tuple[tuple[dt.date, ...], list[str]]:
+        """The dates of a row, and every problem of them."""
+        key = cells.get("dates"), cells.get("season"), cells.get("weekdays")
         if key not in self.known:
-            try:
-                self.known[key] = _dates(row, self.seasons, self.year)
-            except ValueError as error:
-                self.known[key] = str(error)
-        found = self.known[key]
-        if isinstance(found, str):
-            raise ValueError(found)
-        return found
+            told: list[str] = []
+            self.known[key] = _dates(*key, self, told), told
+        return self.known[key]
+
+    def unknown(self, name: str, what: str, known: Iterable[str]) -> str:
+        """What is wrong with a name that the study does not have."""
+        if (name, what) not in self.hints:
+            self.hints[name, what] = (
+                f"{_quoted(name)} is no {what} of the study; {nearest(name[:80], known)}"
+            )
+        return self.hints[name, what]
 
 
-def _flight(row: _FlightRow, book: _Book, where: str, problems: list[str]) -> Flight | None:
-    """The flight of a row, or None with the problems appended."""
-    before = len(problems)
-    if row.field not in book.fields:
-        problems.append(
-            f"{where}: {row.field!r} is no field of the study; {nearest(row.field, book.fields)}"
-        )
-    profile = book.aircraft.get(row.aircraft)
-    if profile is None:
-        problems.append(
-            f"{where}: {row.aircraft!r} is no aircraft of the study; "
-            f"{nearest(row.aircraft, book.aircraft)}"
-        )
-    elif row.mass_kg is not None and not profile.empty_kg < row.mass_kg <= profile.maximum_kg:
-        problems.append(
-            f"{where}: 'mass_kg' is {row.mass_kg:g}; for {profile.id!r} it must be above the empty "
-            f"mass of {profile.empty_kg:g} kg and at most {profile.maximum_kg:g} kg."
-        )
-    time: dt.time | None = None
-    dates: tuple[dt.date, ...] = ()
-    try:
-        time = _time(row.time)
-    except ValueError as error:
-        problems.append(f"{where}: {error}")
-    try:
-        dates = book.dates(row)
-    except ValueError as error:
-        problems.append(f"{where}: {error}")
-    if len(problems) > before or time is None:
-        return None
+def _quoted(text: str, most: int = 40) -> str:
+    return repr(text if len(text) <= most else text[:most] + "...")
+
+
+def _all_quoted(words: Sequence[str]) -> str:
+    """Words of a cell in quotes, of many the first and how many more."""
+    told = [_quoted(word) for word in words[:_MOST_QUOTED]]
+    if len(words) > _MOST_QUOTED:
+        told.append(f"{len(words) - _MOST_QUOTED:,} more")
+    return " and ".join([", ".join(told[:-1]), told[-1]] if len(told) > 1 else told)
+
+
+def _flight(cells: Mapping[str, str], book: _Book) -> tuple[Flight | None, list[str]]:
+    """The flight of a row, or None, and every problem of its cells but the name."""
+    # The name has its own check, by which a row without one is told and left out.
+    told = [f"{name!r} is missing; add it." for name in _REQUIRED[1:] if name not in cells]
+    if "field" in cells and cells["field"] not in book.fields:
+        told.append(book.unknown(cells["field"], "field", book.fields))
+    profile = book.aircraft.get(cells.get("aircraft", ""))
+    if "aircraft" in cells and profile is None:
+        told.append(book.unknown(cells["aircraft"], "aircraft", book.aircraft))
+    if "operation" in cells and cells["operation"] not in get_args(Operation):
+        told.append(f"'operation' is {_quoted(cells['operation'])}; give takeoff, landing or both.")
+    time = _time(cells["time"], told) if "time" in cells else None
+    dates, of_dates = book.dates(cells)
+    told += of_dates
+    mass_kg = _mass_kg(cells["mass_kg"], profile, told) if "mass_kg" in cells else None
+    repeats = _repeats(cells["repeats"], told) if "repeats" in cells else 1
+    if told or time is None:
+        return None, told
     return Flight(
-        row.flight,
-        row.field,
-        row.aircraft,
-        row.operation,
+        cells.get("flight", ""),
+        cells["field"],
+        cells["aircraft"],
+        cast(Operation, cells["operation"]),
         dates,
         time,
-        row.mass_kg,
-        row.repeats,
-        _when(row, book.year),
-    )
+        mass_kg,
+        repeats,
+        _when(cells, book.year),
+    ), told
 
 
-def _when(row: _FlightRow, year: int) -> str:
+def _when(cells: Mapping[str, str], year: int) -> str:
     """The dates as the file gives them, a season with its year."""
-    days = " ".join((row.dates or "").split()) if row.dates else f"{row.season} {year}"
-    return f"{days}, {' '.join(row.weekdays.split())}" if row.weekdays else days
+    days = " ".join(cells["dates"].split()) if "dates" in cells else f"{cells['season']} {year}"
+    return f"{days}, {' '.join(cells['weekdays'].split())}" if "weekdays" in cells else days
 
 
-def _time(text: str) -> dt.time:
+def _time(text: str, told: list[str]) -> dt.time | None:
     found = _CLOCK.fullmatch(text)
     if found is None or int(found[1]) > 23 or int(found[2]) > 59:
-        raise ValueError(
-            f"'time' is {text[:40]!r}; give the local clock time as HH:MM, 00:00 to 23:59."
+        told.append(
+            f"'time' is {_quoted(text)}; give the local clock time as HH:MM, 00:00 to 23:59."
         )
+        return None
     return dt.time(int(found[1]), int(found[2]))
 
 
-def _dates(row: _FlightRow, seasons: Mapping[str, Season], year: int) -> tuple[dt.date, ...]:
-    """The dates of a row, in order, each once."""
-    if (row.dates is None) == (row.season is None):
-        came = "neither is there" if row.dates is None else "both are there"
-        raise ValueError(f"exactly one of 'dates' and 'season' must be filled in; {came}.")
-    if row.dates is not None and "/" not in row.dates:
-        if row.weekdays is not None:
-            raise ValueError(
-                "'weekdays' goes with a season or with an interval such as "
-                "2027-06-15/2027-09-15; leave it empty beside single dates."
-            )
-        return _listed(row.dates.split())
-    days = _weekdays(row.weekdays)
-    span = (
-        _interval(row.dates) if row.dates is not None else _season(str(row.season), seasons, year)
-    )
+def _mass_kg(text: str, profile: AircraftProfile | None, told: list[str]) -> float:
+    """A mass that the aircraft can have; of an unknown aircraft any above 0."""
+    try:
+        mass = float(text) if text.isascii() and "_" not in text else math.nan
+    except ValueError:
+        mass = math.nan
+    if not math.isfinite(mass) or (profile is None and mass <= 0.0):
+        told.append(
+            f"'mass_kg' is {_quoted(text)}; give a mass in kilograms above 0 as a plain number, "
+            "such as 1050 or 612.5, or nothing for the planning mass."
+        )
+    elif profile is not None and not profile.empty_kg < mass <= profile.maximum_kg:
+        told.append(
+            f"'mass_kg' is {mass:g}; for {profile.id!r} it must be above the empty mass of "
+            f"{profile.empty_kg:g} kg and at most {profile.maximum_kg:g} kg."
+        )
+    return mass
+
+
+def _repeats(text: str, told: list[str]) -> int:
+    found = _WHOLE.fullmatch(text)
+    if found is None or not 1 <= int(found[1]) <= MOST_REPEATS:
+        told.append(
+            f"'repeats' is {_quoted(text)}; give a whole number of flights, 1 to "
+            f"{MOST_REPEATS:,}, or nothing for one."
+        )
+        return 1
+    return int(found[1])
+
+
+def _dates(
+    text: str | None, season: str | None, weekdays: str | None, book: _Book, told: list[str]
+) -> tuple[dt.date, ...]:
+    """The dates of a row, in order, each once; the problems of every cell are told."""
+    before = len(told)
+    if (text is None) == (season is None):
+        came = "neither is there" if text is None else "both are there"
+        told.append(f"exactly one of 'dates' and 'season' must be filled in; {came}.")
+    span: Iterable[dt.date] = ()
+    if text is not None:
+        span = _interval(text, told) if "/" in text else _listed(text.split(), told)
+    if season is not None:
+        span = _season(season, book, told)
+    if weekdays is None:
+        return tuple(span)
+    if text is not None and "/" not in text and season is None:
+        told.append(
+            "'weekdays' goes with a season or with an interval such as 2027-06-15/2027-09-15; "
+            "leave it empty beside single dates."
+        )
+    days = _weekdays(weekdays, told)
     dates = tuple(date for date in span if date.weekday() in days)
-    if not dates:
-        raise ValueError(
-            f"no date of {(row.dates or row.season)!r} is a {row.weekdays}; correct the weekdays "
+    if not dates and len(told) == before:
+        told.append(
+            f"no date of {_quoted(str(text or season))} is a {weekdays[:40]}; correct the weekdays "
             "or the dates."
         )
     return dates
 
 
-def _listed(words: Sequence[str]) -> tuple[dt.date, ...]:
+def _listed(words: Sequence[str], told: list[str]) -> list[dt.date]:
     if len(words) > MOST_DATES:
-        raise ValueError(f"'dates' holds {len(words):,} dates; at most {MOST_DATES:,} are read.")
-    dates = [_date(word) for word in words]
-    for earlier, date in enumerate(dates):
-        if date in dates[:earlier]:
-            raise ValueError(
-                f"'dates' holds {date} twice; give it once, and the number of flights in 'repeats'."
-            )
-    return tuple(sorted(dates))
+        told.append(f"'dates' holds {len(words):,} dates; at most {MOST_DATES:,} are read.")
+        return []
+    dates = _read_dates(words, told)
+    twice = repeated(date.isoformat() for date in dates)
+    if twice:
+        more = f" and {len(twice) - 1:,} more" if len(twice) > 1 else ""
+        told.append(
+            f"'dates' holds {twice[0]}{more} twice; give each once, and the number of flights in "
+            "'repeats'."
+        )
+    return sorted(dates)
 
 
-def _date(word: str) -> dt.date:
-    try:
-        if _ISO.fullmatch(word) is None:
-            raise ValueError
-        date = dt.date.fromisoformat(word)
-    except ValueError:
-        raise ValueError(
-            f"{word[:40]!r} is no date; give dates that exist as YYYY-MM-DD, separated by "
+def _read_dates(words: Sequence[str], told: list[str]) -> list[dt.date]:
+    """The words that are dates; the others are told together."""
+    dates: list[dt.date] = []
+    far: list[dt.date] = []
+    wrong: list[str] = []
+    for word in words:
+        try:
+            if _ISO.fullmatch(word) is None:
+                raise ValueError
+            date = dt.date.fromisoformat(word)
+        except ValueError:
+            wrong.append(word)
+            continue
+        (dates if date.year in _YEARS else far).append(date)
+    if wrong:
+        are = "is no date" if len(wrong) == 1 else "are no dates"
+        told.append(
+            f"{_all_quoted(wrong)} {are}; give dates that exist as YYYY-MM-DD, separated by "
             "spaces, or an interval such as 2027-06-15/2027-09-15."
-        ) from None
-    if date.year not in _YEARS:
-        raise ValueError(
-            f"the date {word} is outside the years {_YEARS[0]} to {_YEARS[-1]}; correct it."
         )
-    return date
+    if far:
+        told.append(
+            f"{_all_quoted([str(date) for date in far])} in 'dates': outside the years "
+            f"{_YEARS[0]} to {_YEARS[-1]}; correct this."
+        )
+    return dates
 
 
-def _interval(text: str) -> Iterable[dt.date]:
+def _interval(text: str, told: list[str]) -> Iterable[dt.date]:
+    if any(_SLASHED.fullmatch(word) for word in text.split()) or not _ISO.search(text):
+        told.append(
+            f"'dates' is {_quoted(text, 60)}; write the date as 2027-06-15, and an interval as "
+            "2027-06-15/2027-09-15."
+        )
+        return ()
     ends = [part.strip() for part in text.split("/")]
-    if len(ends) != 2:
-        raise ValueError(
-            f"'dates' is {text[:60]!r}; an interval is two dates, such as 2027-06-15/2027-09-15."
+    if len(ends) != 2 or not all(ends):
+        told.append(
+            f"'dates' is {_quoted(text, 60)}; an interval is two dates, such as "
+            "2027-06-15/2027-09-15."
         )
-    first, last = (_date(end) for end in ends)
-    if last < first:
-        raise ValueError(f"the interval {text[:60]!r} ends before it begins; swap its dates.")
+        return ()
+    dates = _read_dates(ends, told)
+    if len(dates) != 2:
+        return ()
+    first, last = dates
     days = (last - first).days + 1
+    if days < 1:
+        told.append(f"the interval {_quoted(text)} ends before it begins; swap its dates.")
     if days > MOST_DATES:
-        raise ValueError(
-            f"the interval {text[:60]!r} has {days:,} days; at most {MOST_DATES:,} are read."
+        told.append(
+            f"the interval {_quoted(text)} has {days:,} days; at most {MOST_DATES:,} are read."
         )
+        return ()
     return (first + dt.timedelta(days=n) for n in range(days))
 
 
-def _season(name: str, seasons: Mapping[str, Season], year: int) -> Iterable[dt.date]:
-    """The days of a season in a calendar year, both ends of one that runs over New Year."""
-    if name not in seasons:
-        raise ValueError(f"{name!r} is no season of the study; {nearest(name, seasons)}")
-    first = dt.date(year, 1, 1)
-    whole = (dt.date(year, 12, 31) - first).days + 1
+def _season(name: str, book: _Book, told: list[str]) -> Iterable[dt.date]:
+    """The days of a season in the planning year, both ends of one that runs over New Year."""
+    if name not in book.seasons:
+        told.append(book.unknown(name, "season", book.seasons))
+        return ()
+    first = dt.date(book.year, 1, 1)
+    whole = (dt.date(book.year, 12, 31) - first).days + 1
     dates = (first + dt.timedelta(days=n) for n in range(whole))
-    return (date for date in dates if (date.month, date.day) in seasons[name].days)
+    return (date for date in dates if (date.month, date.day) in book.seasons[name].days)
 
 
-def _weekdays(text: str | None) -> frozenset[int]:
-    """Weekdays of a text such as ``Mon Wed Fri`` or ``Fri-Mon``, Monday 0; all of an empty one."""
-    if text is None:
-        return frozenset(range(7))
+def _weekdays(text: str, told: list[str]) -> frozenset[int]:
+    """Weekdays of a text such as ``Mon Wed Fri`` or ``Fri-Mon``, Monday 0."""
     days: set[int] = set()
+    numbers = {name.casefold(): number for number, name in enumerate(WEEKDAYS)}
+    wrong: list[str] = []
     for word in text.replace(",", " ").split():
-        first, *rest = (_weekday(part) for part in word.split("-"))
-        if len(rest) > 1:
-            raise ValueError(f"'weekdays' holds {word[:40]!r}; a range has two ends, as Mon-Fri.")
-        last = rest[0] if rest else first
-        days |= {(first + n) % 7 for n in range((last - first) % 7 + 1)}
+        parts = word.split("-")
+        ends = [numbers[part.casefold()] for part in parts if part.casefold() in numbers]
+        if len(parts) > 2:
+            wrong.append(f"'weekdays' holds {_quoted(word)}; a range has two ends, as Mon-Fri.")
+        elif len(ends) < len(parts):
+            unknown = [part for part in parts if part.casefold() not in numbers]
+            hints = (nearest(part[:80].title(), WEEKDAYS) for part in unknown)
+            wrong += [
+                f"'weekdays' holds {_quoted(part)}; {hint}"
+                for part, hint in zip(unknown, hints, strict=True)
+            ]
+        else:
+            days |= {(ends[0] + n) % 7 for n in range((ends[-1] - ends[0]) % 7 + 1)}
+    told += wrong[:_MOST_QUOTED]
+    if len(wrong) > _MOST_QUOTED:
+        told.append(f"'weekdays' holds {len(wrong) - _MOST_QUOTED:,} wrong words more.")
     return frozenset(days)
-
-
-def _weekday(word: str) -> int:
-    for number, name in enumerate(WEEKDAYS):
-        if word.casefold() == name.casefold():
-            return number
-    raise ValueError(f"'weekdays' holds {word[:40]!r}; {nearest(word.title(), WEEKDAYS)}")

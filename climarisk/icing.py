@@ -25,11 +25,11 @@ NONE, UNKNOWN = -1, -2
 
 #: What people read for each band of either method.
 LABELS = {
-    "serious_any_power": "serious at any power",
+    "serious_any_power": "serious even in cruise",
     "moderate_cruise_serious_descent": "moderate in cruise, serious in descent",
     "serious_descent": "serious in descent",
     "light_cruise_or_descent": "light in cruise or descent",
-    "serious_cruise": "serious in cruise and descent",
+    "serious_cruise": "serious even in cruise",
     "possible_cruise_serious_descent": "possible in cruise, serious in descent",
     "serious_descent_only": "serious in descent only",
     "possible_cruise": "possible in cruise and descent",

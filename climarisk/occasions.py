@@ -14,16 +14,28 @@ from functools import cached_property, lru_cache
 
 import numpy as np
 
+from climarisk.climatology import Completeness, completeness
 from climarisk.clock import LocalClock, in_window, local_clock
 from climarisk.fields import Field
 from climarisk.localtime import standard_offset_s, zone_info
-from climarisk.rules import DAYS
 
 #: Days to either side of a date whose hours stand for it.
 HALF_WINDOW_DAYS = 15
-_WINDOW_DAYS = 2 * HALF_WINDOW_DAYS + 1
 _DAY_S, _HOUR_S = 86_400, 3600
 _EPOCH_CLOCK = dt.datetime(1970, 1, 1)
+
+
+@lru_cache(maxsize=256)
+def date_array(dates: tuple[dt.date, ...]) -> np.ndarray:
+    """Dates as an array of datetime64[D], shape (n_dates,), not to be written to.
+
+    Parameters
+    ----------
+    dates : tuple of date
+    """
+    array = np.array(dates, "datetime64[D]")
+    array.flags.writeable = False
+    return array
 
 
 def instants_s(zone: str, clock_s: np.ndarray) -> np.ndarray:
@@ -43,11 +55,37 @@ def instants_s(zone: str, clock_s: np.ndarray) -> np.ndarray:
         first; one that does not exist, when they go forward, is read with the offset before
         the change: 02:30 is the instant that clocks call 03:30.
     """
-    days = np.floor_divide(clock_s, _DAY_S)
-    offsets = np.array([_offset_of_day_s(zone, int(day)) for day in days], float)
+    offsets = _offsets_by_day_s(zone, clock_s)
     for i in np.flatnonzero(np.isnan(offsets)):
         offsets[i] = _offset_s(zone, int(clock_s[i]))
     return clock_s - np.rint(offsets).astype(np.int64)
+
+
+def skipped_s(zone: str, clock_s: np.ndarray) -> np.ndarray:
+    """What clocks jump at legal local readings that they skip or show twice.
+
+    Parameters
+    ----------
+    zone, clock_s
+        As for `instants_s`.
+
+    Returns
+    -------
+    ndarray of int64, shape (n,)
+        Of a reading that does not exist, by how many seconds clocks go forward over it; of one
+        that comes twice, by how many they go back, as a negative number; else 0.
+    """
+    jumps = np.zeros(len(clock_s), np.int64)
+    for i in np.flatnonzero(np.isnan(_offsets_by_day_s(zone, clock_s))):
+        first, second = (_offset_s(zone, int(clock_s[i]), fold) for fold in (0, 1))
+        jumps[i] = round(second - first)
+    return jumps
+
+
+def _offsets_by_day_s(zone: str, clock_s: np.ndarray) -> np.ndarray:
+    """Offset of each reading's day from UTC; NaN near a change."""
+    days = np.floor_divide(clock_s, _DAY_S).tolist()
+    return np.array([_offset_of_day_s(zone, day) for day in days], float)
 
 
 @lru_cache(maxsize=100_000)
@@ -57,10 +95,13 @@ def _offset_of_day_s(zone: str, day: int) -> float:
     return around.pop() if len(around) == 1 else np.nan
 
 
-def _offset_s(zone: str, clock_s: int) -> float:
-    """Offset of a clock reading from UTC: of two the earlier, in a gap the one before it."""
+def _offset_s(zone: str, clock_s: int, fold: int = 0) -> float:
+    """Offset of a clock reading from UTC: of two the earlier, in a gap the one before it.
+
+    With `fold` 1 of two the later, in a gap the one after it (Python's `datetime`, PEP 495).
+    """
     reading = _EPOCH_CLOCK + dt.timedelta(seconds=clock_s)
-    offset = reading.replace(tzinfo=zone_info(zone), fold=0).utcoffset()
+    offset = reading.replace(tzinfo=zone_info(zone), fold=fold).utcoffset()
     assert offset is not None  # of an aware time
     return offset.total_seconds()
 
@@ -96,13 +137,45 @@ def standard_hours(zone: str, dates: np.ndarray, time: dt.time, shift_h: int = 0
     shift_h : int
         Hours added to the clock reading, across midnight where it comes to that.
     """
-    reading = dates.astype("int64") * _DAY_S + (time.hour + shift_h) * _HOUR_S + time.minute * 60
+    reading = _readings_s(dates, time) + shift_h * _HOUR_S
     utc_s = instants_s(zone, reading)
     offset_s = standard_offset_s(zone, utc_s)
     hours = (utc_s + offset_s + _HOUR_S // 2) // _HOUR_S
     # The one UTC hour whose local standard time rounds to this hour.
     grid = -((offset_s + _HOUR_S // 2 - hours * _HOUR_S) // _HOUR_S)
     return StandardHours((hours // 24).astype("datetime64[D]"), hours % 24, grid)
+
+
+def _readings_s(dates: np.ndarray, time: dt.time) -> np.ndarray:
+    return dates.astype("int64") * _DAY_S + time.hour * _HOUR_S + time.minute * 60
+
+
+def odd_readings(zone: str, dates: np.ndarray, time: dt.time) -> list[str]:
+    """What to know of a clock time on the dates on which clocks skip it or show it twice.
+
+    Parameters
+    ----------
+    zone : str
+        IANA name.
+    dates : ndarray of datetime64[D], shape (n_dates,)
+    time : time
+    """
+    jumps = skipped_s(zone, _readings_s(dates, time))
+    notes = []
+    for jump in np.unique(jumps[jumps != 0]).tolist():
+        on = f"on {', '.join(dates[jumps == jump].astype(str))}"
+        if jump < 0:
+            notes.append(f"{time:%H:%M} comes twice {on}; the first is taken")
+        else:
+            later = "an hour" if jump == _HOUR_S else f"{jump // 60} minutes"
+            notes.append(f"{time:%H:%M} does not exist {on}; the reading {later} later is taken")
+    return notes
+
+
+def is_skipped(zone: str, dates: np.ndarray, time: dt.time, shift_h: int = 0) -> bool:
+    """Whether clocks skip a time, or the reading so many hours later, on any of some dates."""
+    readings = _readings_s(dates, time) + shift_h * _HOUR_S
+    return bool((skipped_s(zone, readings) > 0).any())
 
 
 def inside_window(window: str | tuple[int, int], field: Field, when: StandardHours) -> np.ndarray:
@@ -114,22 +187,32 @@ def inside_window(window: str | tuple[int, int], field: Field, when: StandardHou
 
 @dataclass(frozen=True)
 class Record:
-    """The hours of a field's record that have a value, by hour of the day.
+    """The hours of a field's record that enter figures, by hour of the day.
+
+    Those that have a value and belong to a (year, month, hour) cell that counts
+    (`climarisk.climatology.completeness`), as in the hourly tables.
 
     Parameters
     ----------
     clock : LocalClock
     known : ndarray of int, shape (n_known,)
-        Places on the grid, within the period, rising.
+        Hours that have a value: places on the grid, within the period, rising.
     """
 
     clock: LocalClock
     known: np.ndarray
 
     @cached_property
+    def complete(self) -> Completeness:
+        """Which cells count, and which hours enter."""
+        on_grid = np.zeros(len(self.clock.hour), bool)
+        on_grid[self.known] = True
+        return completeness(on_grid, self.clock)
+
+    @cached_property
     def by_hour(self) -> tuple[np.ndarray, ...]:
-        """Places in `known` of each local standard hour of the day, in order of time."""
-        hour = self.clock.hour[self.known]
+        """Places in `known` of the hours that enter, by hour of the day in order of time."""
+        hour = np.where(self.complete.used[self.known], self.clock.hour[self.known], -1)
         return tuple(np.flatnonzero(hour == h) for h in range(24))
 
     @cached_property
@@ -139,11 +222,23 @@ class Record:
 
     @cached_property
     def before(self) -> np.ndarray:
-        """Known hours at each hour of the day before each day, shape (24, n_days + 1)."""
+        """Hours that enter, at each hour of the day, before each day; (24, n_days + 1)."""
         counts = np.zeros((24, self.n_days + 1), int)
         for h, places in enumerate(self.by_hour):
             counts[h, 1:] = np.cumsum(np.bincount(self.day[places], minlength=self.n_days))
         return counts
+
+    @cached_property
+    def counting_before(self) -> np.ndarray:
+        """Days before each day whose cell counts, by hour of the day, shape (24, n_days + 1)."""
+        months = self.complete.counts.reshape(-1, 24)
+        days = np.repeat(months, self.clock.days_in_month.reshape(-1), axis=0)
+        return np.concatenate([np.zeros((24, 1), int), np.cumsum(days.T, axis=1)], axis=1)
+
+    def has_figures(self, date: np.ndarray, hour: np.ndarray) -> np.ndarray:
+        """Whether the (month, hour) cells of some dates and hours have figures: a year counts."""
+        month = date.astype("datetime64[M]").astype(int) % 12
+        return self.complete.counts.max(axis=0)[month, hour]
 
     @cached_property
     def n_days(self) -> int:
@@ -189,20 +284,24 @@ class Windows:
     places : ndarray of int, shape (n,)
         Places in `Record.known` of the hours that enter any window, each once.
     first, last : ndarray of int, shape (n_dates, n_years)
-        Each window as a range of `places`, the end not included; empty where the year does
-        not count.
+        Each window as a range of `places`, the end not included; empty where no hour of the
+        year enters, or the date has no figures.
     weight : ndarray, shape (n,)
         How much each hour counts when every date with figures counts the same.
+    counting : ndarray, shape (n_dates, n_years)
+        Share of the window's days within the period whose cell counts; 0 where the date has no
+        figures.
     """
 
     places: np.ndarray
     first: np.ndarray
     last: np.ndarray
     weight: np.ndarray
+    counting: np.ndarray
 
     @property
     def total(self) -> np.ndarray:
-        """Hours of each date and year, shape (n_dates, n_years); 0 where it does not count."""
+        """Hours of each date and year, shape (n_dates, n_years)."""
         return self.last - self.first
 
     @cached_property
@@ -244,22 +343,45 @@ def windows(record: Record, when: StandardHours) -> Windows:
     Windows
         Of each date, in each year of the record, the hours at its hour of the day on the 31
         days around its month and day, across the ends of months and years; a window belongs to
-        the year of the day in its middle.  A year counts for a date when at least
-        `rules.DAYS.share_of_days` of the window's hours have a value.
+        the year of the day in its middle.
+
+    Notes
+    -----
+    An hour enters when its own (year, month, hour) cell counts, and a year takes part with the
+    hours it has, so that months known from different years serve the dates between them.  A
+    date has figures when its own (month, hour) cell has: when some year counts for it.  At
+    least 16 of a window's 31 days lie in the month of the date, and a month that counts misses
+    at most 6 days.
     """
     centre = record.centres(when.date)
     ends = np.clip([centre - HALF_WINDOW_DAYS, centre + HALF_WINDOW_DAYS + 1], 0, record.n_days)
-    first, last = record.before[when.hour[:, None], ends]
-    counts = last - first >= DAYS.share_of_days * _WINDOW_DAYS
-    first, last = np.where(counts, first, 0), np.where(counts, last, 0)
+    hour, known = when.hour[:, None], record.has_figures(when.date, when.hour)[:, None]
+    first, last = np.where(known, record.before[hour, ends], 0)
+    counting = np.diff(record.counting_before[hour, ends], axis=0)[0] / np.diff(ends, axis=0)[0]
+    places, weight = _compacted(record, when.hour, first, last)
+    return Windows(places, first, last, weight, counting * known)
+
+
+def _compacted(
+    record: Record, hours: np.ndarray, first: np.ndarray, last: np.ndarray
+) -> tuple[np.ndarray, np.ndarray]:
+    """The hours in any window, each once, with their weight; the ranges made ranges of these.
+
+    Parameters
+    ----------
+    record : Record
+    hours : ndarray of int, shape (n_dates,)
+    first, last : ndarray of int, shape (n_dates, n_years)
+        Ranges of `Record.by_hour`; written over.
+    """
     totals = (last - first).sum(axis=1)
     each = totals[totals > 0]
     # Whole numbers where all dates have as many hours, so that no rounding decides a tie.
     share = np.ones(len(totals)) if len(set(each.tolist())) <= 1 else 1.0 / np.maximum(totals, 1)
     parts, weights, offset = [], [], 0
-    for h in np.unique(when.hour):
-        at = when.hour == h
-        kept = counts[at]
+    for h in np.unique(hours):
+        at = hours == h
+        kept = first[at] < last[at]
         n = len(record.by_hour[h])
         times = _times(first[at][kept], last[at][kept], n)
         used = times > 0
@@ -270,7 +392,7 @@ def windows(record: Record, when: StandardHours) -> Windows:
         first[at] = np.where(kept, position[first[at]], 0)
         last[at] = np.where(kept, position[last[at]], 0)
         offset += int(used.sum())
-    return Windows(np.concatenate(parts), first, last, np.concatenate(weights))
+    return np.concatenate(parts), np.concatenate(weights)
 
 
 def _times(

@@ -2,17 +2,19 @@
 
 from __future__ import annotations
 
+import itertools
 from collections.abc import Sequence
 from dataclasses import dataclass
 
 import numpy as np
 import pandas as pd
 
-from climarisk.aircraft import OPERATIONS, AircraftProfile
+from climarisk.aircraft import OPERATIONS, AircraftProfile, PerformanceTable
 from climarisk.atmosphere import P0_HPA
 from climarisk.clock import LocalClock
 from climarisk.fields import STEEP_SLOPE_PCT, Field
 from climarisk.findings import Finding
+from climarisk.performance import read_off
 from climarisk.pressure import (
     NO_PRESSURE,
     SEA_LEVEL_LIMIT_M,
@@ -428,4 +430,36 @@ def aircraft_findings(aircraft: Sequence[AircraftProfile]) -> list[Finding]:
                         "the table.",
                     )
                 )
+            if lighter_gaps(tables):
+                findings.append(
+                    Finding(
+                        "caution",
+                        "aircraft",
+                        profile.id,
+                        "lighter-blank",
+                        f"a lighter {operation} table is blank, or ends, where a heavier one has "
+                        "figures: between them no mass is shown to hold, so that a lighter mass "
+                        "may fail where the mass that holds does not; check the figures against "
+                        "the handbook.",
+                    )
+                )
     return findings
+
+
+def lighter_gaps(tables: Sequence[PerformanceTable]) -> bool:
+    """Whether a table says nothing at a point where one at a greater mass has a figure.
+
+    Parameters
+    ----------
+    tables : sequence of PerformanceTable
+        Of one operation, by mass.
+    """
+    for light, heavy in itertools.pairwise(tables):
+        altitude, temperature = np.meshgrid(
+            heavy.pressure_altitude_ft, heavy.temperature_c, indexing="ij"
+        )
+        for name in set(heavy.values) & set(light.values):
+            below = read_off(light, name, altitude.ravel(), temperature.ravel())
+            if (np.isnan(below) & np.isfinite(heavy.values[name].ravel())).any():
+                return True
+    return False

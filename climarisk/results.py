@@ -106,6 +106,7 @@ WINDOWS_MONTHLY_COLUMNS = [
     "last_hour",
     "clock_first",  # the same by the civil clock of the planning year
     "clock_last",
+    "clock_hours",  # every stretch of hours by the civil clock
     "hours_without_figures",
     "daylight_hours",  # hours of a year's month in daylight
     "usable_hours",  # of those, hours that do not fall short
@@ -160,6 +161,7 @@ BASES_COLUMNS = [
     "icing_serious",  # share of the daylight hours with carburettor icing serious even in cruise
     "n_years",
     "interval_note",
+    "steep",  # yes: a strip of more than 2 % slope, where no figure is a pass
 ]
 BASE_DIFFERENCES_COLUMNS = [
     "first",
@@ -183,22 +185,25 @@ SCHEDULE_FLIGHTS_COLUMNS = [
     "mass_kg",
     "flights",
     "n_hours",
-    "n_years",
-    "coverage",
+    "n_years",  # that take part in the figures of a date, on average, rounded down
+    "coverage",  # share of the days around its dates whose (year, month, hour) cell counts
     "shortfall",
     "ci_low",
     "ci_high",
-    "affected",  # flights of the season expected to fall short
+    "affected",  # flights with figures expected to fall short: the share of these
     "limiting",
     "holds_in",
     "mass_that_holds_kg",
     "useful_load_kg",
     "outcome",
-    "nearest_time",  # nearest clock time at which the shortfall is below the target
+    "nearest_time",  # nearest clock time with a shortfall below the target, on the known dates
     "nearest_shift_h",
     "nearest_shortfall",
     "never_met",  # yes: it fell short in every hour of the record
     "interval_note",
+    "steep",  # yes: a strip of more than 2 % slope, where no figure is a pass
+    "note",  # of its time: outside the hours window, one that clocks skip, nearest not to be told
+    "unknown_flights",  # of `flights`, those on dates without figures
 ]
 SCHEDULE_SEASONS_COLUMNS = [
     "season",  # empty: the whole schedule
@@ -207,7 +212,7 @@ SCHEDULE_SEASONS_COLUMNS = [
     "affected",
     "ci_low",
     "ci_high",
-    "year_low",  # the best and the worst year of the record
+    "year_low",  # the best and the worst year of the record; empty below 5 counting years
     "year_high",
     "worst_year",
     "n_years",

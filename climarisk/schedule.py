@@ -21,8 +21,12 @@ from climarisk.largest_mass import largest_mass
 from climarisk.occasions import (
     HALF_WINDOW_DAYS,
     Record,
+    StandardHours,
+    date_array,
     hours_text,
     inside_window,
+    is_skipped,
+    odd_readings,
     standard_hours,
     windows,
 )
@@ -32,7 +36,7 @@ from climarisk.results import (
     SCHEDULE_FLIGHTS_COLUMNS,
     SCHEDULE_SEASONS_COLUMNS,
 )
-from climarisk.rules import DAYS, interval_notes
+from climarisk.rules import DAYS, YEARS, interval_notes
 from climarisk.scene import Scene
 from climarisk.schedule_sums import FlightScores, Occasion, Tally, bounds_of, summed
 from climarisk.study import Study
@@ -46,6 +50,8 @@ OPERATION_CHECKS = {
 #: Another clock time is looked for so many hours to either side, the nearest first and of two
 #: the earlier one.
 MOST_SHIFT_H = 12
+#: The note where neither a time nor that there is none can be told.
+NEAREST_NOT_TOLD = "the nearest time cannot be told"
 _SHIFTS = tuple(sign * h for h in range(1, MOST_SHIFT_H + 1) for sign in (-1, 1))
 #: Dates and hours kept ready for the flights that share them.
 _KEPT = 64
@@ -78,8 +84,15 @@ def score_flights(scene: Scene, flights: Sequence[Flight]) -> FlightScores:
     low, high = tally.intervals()
     for place, i in enumerate(order):
         rows[i] |= {"ci_low": low[place], "ci_high": high[place]}
-    table = pd.DataFrame([rows[i] for i in range(len(own))], columns=SCHEDULE_FLIGHTS_COLUMNS)
+    table = _flight_table([rows[i] for i in range(len(own))])
     return tally.scores(scene.field.id, table)
+
+
+def _flight_table(rows: Sequence[dict]) -> pd.DataFrame:
+    """Rows of flights with whole numbers as such, however few of them have a value."""
+    table = pd.DataFrame(rows, columns=SCHEDULE_FLIGHTS_COLUMNS)
+    whole = dict.fromkeys(("flights", "n_hours", "n_years", "unknown_flights"), "int64")
+    return table.astype(whole | {"nearest_shift_h": "Int64"})
 
 
 def lighter_holds(profile: AircraftProfile) -> bool:
@@ -120,6 +133,7 @@ class _Scorer:
         self.profiles = {profile.id: profile for profile in scene.study.aircraft}
         self.monotone = {p.id: lighter_holds(p) for p in scene.study.aircraft}
         self.n_levels = max(len(scene.shifts), 1)
+        self._when: dict[tuple, StandardHours] = {}
         self._occasions: dict[tuple, Occasion] = {}
         self._masses: dict[tuple[str, str], tuple[np.ndarray, set[int]]] = {}
         self._dates = np.unique(np.array([d for f in flights for d in f.dates], "datetime64[D]"))
@@ -128,10 +142,9 @@ class _Scorer:
 
     def occasion(self, flight: Flight, shift_h: int = 0) -> Occasion:
         """The dates of a flight at its clock time, or so many hours later."""
-        dates = np.array(flight.dates, "datetime64[D]")
-        when = standard_hours(self.scene.field.timezone, dates, flight.time, shift_h)
+        when = self.when(flight, shift_h)
         # Clock times that round to the same hours share everything.
-        key = dates.tobytes(), when.date.tobytes(), when.hour.tobytes()
+        key = flight.dates, when.date.tobytes(), when.hour.tobytes()
         if key not in self._occasions:
             if len(self._occasions) >= _KEPT:
                 del self._occasions[next(iter(self._occasions))]
@@ -139,9 +152,19 @@ class _Scorer:
                 [(date.month, date.day) in season.days for date in flight.dates]
                 for season in self.scene.study.seasons
             ]
-            members = np.array([np.ones(len(dates)), *of_seasons], float)
+            members = np.array([np.ones(len(flight.dates)), *of_seasons], float)
             self._occasions[key] = Occasion(when, windows(self.record, when), members)
         return self._occasions[key]
+
+    def when(self, flight: Flight, shift_h: int) -> StandardHours:
+        """The hours of local standard time of a flight, or of one so many hours later."""
+        key = flight.dates, flight.time, shift_h
+        if key not in self._when:
+            if len(self._when) >= _KEPT:
+                del self._when[next(iter(self._when))]
+            dates, zone = date_array(flight.dates), self.scene.field.timezone
+            self._when[key] = standard_hours(zone, dates, flight.time, shift_h)
+        return self._when[key]
 
     def air(self, places: np.ndarray) -> tuple[TableAir, np.ndarray]:
         """The air of some known hours as estimated and at each level of the transfer error.
@@ -256,8 +279,8 @@ class _Scorer:
 
     def row(self, flight: Flight, occasion: Occasion, counts: np.ndarray) -> dict:
         """The figures of a flight but for the interval."""
-        planning, total = self.scene.study.planning, occasion.windows.total
-        n_years = int((total > 0).any(axis=0).sum())
+        planning, windows = self.scene.study.planning, occasion.windows
+        n_known = int(occasion.known.sum())
         row = {
             "flight": flight.id,
             "field": flight.field,
@@ -268,25 +291,49 @@ class _Scorer:
             "hours": hours_text(occasion.when.hour),
             "mass_kg": self.loaded(flight).planning_kg,
             "flights": len(flight.dates) * flight.repeats,
-            "n_hours": len(occasion.windows.places),
-            "n_years": n_years,
-            "coverage": float((total > 0).mean()),
+            "n_hours": len(windows.places),
+            "n_years": occasion.n_years,
+            "coverage": float(windows.counting.mean()),
             "holds_in": planning.holds_in,
             **dict.fromkeys(("limiting", "outcome", "nearest_time", "never_met"), ""),
-            "interval_note": str(interval_notes(np.array([n_years]))[0]),
+            "interval_note": _interval_note(occasion.n_years) if n_known else "",
+            "steep": "yes" if self.scene.field.is_steep else "",
+            "unknown_flights": (len(flight.dates) - n_known) * flight.repeats,
         }
-        if not occasion.known.any():
-            return row
-        share = self.share(occasion, counts)
-        never = int(counts.sum()) == int(total.sum()) * self.n_levels
-        return row | {
-            "shortfall": share,
-            "affected": share * int(occasion.known.sum()) * flight.repeats,
-            "limiting": self.limiting(flight, occasion),
-            **self.weight(flight, occasion),
-            **self.nearest(flight, occasion, share),
-            "never_met": "yes" if never else "no",
-        }
+        notes = self.notes(flight, occasion)
+        if n_known:
+            share = self.share(occasion, counts)
+            never = int(counts.sum()) == int(windows.total.sum()) * self.n_levels
+            nearest, is_told = self.nearest(flight, occasion, share)
+            row |= {
+                "shortfall": share,
+                "affected": share * n_known * flight.repeats,
+                "limiting": self.limiting(flight, occasion),
+                **self.weight(flight, occasion),
+                **nearest,
+                "never_met": "yes" if never else "no",
+            }
+        if not n_known or not is_told:
+            notes.append(NEAREST_NOT_TOLD)
+        return row | {"note": "; ".join(notes)}
+
+    def notes(self, flight: Flight, occasion: Occasion) -> list[str]:
+        """What to know of the flight's own time."""
+        inside, notes = self.inside(occasion), []
+        if not inside.any():
+            notes.append("outside the hours window")
+        elif not inside.all():
+            n_outside = int((~inside).sum())
+            notes.append(f"outside the hours window on {n_outside} of {len(inside)} dates")
+        dates, zone = date_array(flight.dates), self.scene.field.timezone
+        return notes + odd_readings(zone, dates, flight.time)
+
+    def inside(self, occasion: Occasion) -> np.ndarray:
+        """Dates whose hour lies inside the hours window, shape (n_dates,)."""
+        if "inside" not in occasion.cache:
+            study, field = self.scene.study, self.scene.field
+            occasion.cache["inside"] = inside_window(study.window, field, occasion.when)
+        return occasion.cache["inside"]
 
     def share(self, occasion: Occasion, counts: np.ndarray) -> float:
         """The shortfall share, every date with figures counting the same."""
@@ -311,31 +358,57 @@ class _Scorer:
             "outcome": "maximum mass" if mass == profile.maximum_kg else "mass",
         }
 
-    def nearest(self, flight: Flight, occasion: Occasion, share: float) -> dict:
+    def nearest(self, flight: Flight, occasion: Occasion, share: float) -> tuple[dict, bool]:
         """The nearest clock time below the target, in the columns of a row; empty without one.
 
-        A time counts when every date has figures there and lies inside the hours window.
+        It is looked for on the dates on which the flight itself has figures.  A time counts
+        when all of these have figures there and lie inside the hours window, and clocks skip
+        it on none.
+
+        Returns
+        -------
+        columns : dict
+        is_told : bool
+            False where there are times inside the window and no figures at any of them, so
+            that none can be named or ruled out.
         """
         target = self.scene.study.planning.target
         if share < target:
-            return _nearest(flight.time, 0, share)
-        mass_kg = self.loaded(flight).planning_kg
+            return _nearest(flight.time, 0, share), True
+        known = tuple(d for d, has in zip(flight.dates, occasion.known, strict=True) if has)
+        flight, n_inside, n_told = replace(flight, dates=known), 0, 0
         for shift_h in _SHIFTS:
             moved = self.occasion(flight, shift_h)
-            if "offered" not in moved.cache:
-                window = self.scene.study.window
-                inside = inside_window(window, self.scene.field, moved.when)
-                moved.cache["offered"] = bool((inside & moved.known).all())
-            if not moved.cache["offered"]:
+            if not self.inside(moved).all():
                 continue
-            # The largest masses sort out the hours; the checks themselves decide.
-            light = (self.masses(flight, moved) < mass_kg).mean(axis=0)
-            weight = moved.windows.weight
-            if (light * weight).sum() / weight.sum() < target:
-                there = self.share(moved, self.counts(flight, moved))
-                if there < target:
-                    return _nearest(flight.time, shift_h, there)
-        return {}
+            n_inside += 1
+            if not moved.known.all():
+                continue
+            n_told += 1
+            there = self.share_below(flight, moved, target)
+            if there is not None and not self.is_skipped(flight, shift_h):
+                return _nearest(flight.time, shift_h, there), True
+        return {}, n_told > 0 or n_inside == 0
+
+    def is_skipped(self, flight: Flight, shift_h: int) -> bool:
+        """Whether clocks skip the time so many hours later on any date of a flight."""
+        zone, dates = self.scene.field.timezone, date_array(flight.dates)
+        return is_skipped(zone, dates, flight.time, shift_h)
+
+    def share_below(self, flight: Flight, occasion: Occasion, target: float) -> float | None:
+        """The shortfall share where it is below the target, else None."""
+        # The largest masses sort out the hours; the checks themselves decide.
+        light = (self.masses(flight, occasion) < self.loaded(flight).planning_kg).mean(axis=0)
+        weight = occasion.windows.weight
+        if (light * weight).sum() / weight.sum() >= target:
+            return None
+        share = self.share(occasion, self.counts(flight, occasion))
+        return share if share < target else None
+
+
+def _interval_note(n_years: int) -> str:
+    """What to know of the interval of a figure; not even one whole year is too few as well."""
+    return str(interval_notes(np.array([max(n_years, 1)]))[0])
 
 
 def _nearest(time: dt.time, shift_h: int, share: float) -> dict:
@@ -362,9 +435,7 @@ def schedule_frames(study: Study, scores: Sequence[FlightScores]) -> dict[str, p
         first; ``schedule_days``, every planned date, the one with the most flights expected to
         fall short first and those without figures last.
     """
-    some = [s.flights for s in scores if len(s.flights)] or [
-        pd.DataFrame(columns=SCHEDULE_FLIGHTS_COLUMNS)
-    ]
+    some = [s.flights for s in scores if len(s.flights)] or [_flight_table([])]
     flights = pd.concat(some, ignore_index=True)
     place = {flight.id: i for i, flight in enumerate(study.flights)}
     order = flights["flight"].map(place).to_numpy().argsort(kind="stable")
@@ -376,47 +447,53 @@ def schedule_frames(study: Study, scores: Sequence[FlightScores]) -> dict[str, p
 
 
 def _seasons(study: Study, scores: Sequence[FlightScores]) -> pd.DataFrame:
-    planned, unknown, affected, drawn, of_year, with_year = (
-        np.sum([getattr(s, name) for s in scores], axis=0)
-        for name in ("planned", "unknown", "affected", "drawn", "of_year", "with_year")
-    )
+    names = "planned", "unknown", "affected", "drawn", "of_year", "hours_of_year", "with_year"
+    sums = {name: np.sum([getattr(s, name) for s in scores], axis=0) for name in names}
     rows = []
     for i, name in enumerate(["", *(season.name for season in study.seasons)]):
-        known = planned[i] - unknown[i]
-        row = {"season": name, "flights": int(planned[i]), "unknown_flights": int(unknown[i])}
+        own = {key: values[i] for key, values in sums.items()}
+        planned, unknown = int(own["planned"]), int(own["unknown"])
+        row = {"season": name, "flights": planned, "unknown_flights": unknown}
         row |= {"n_years": 0, "interval_note": ""}
-        if known > 0:
-            row["affected"] = affected[i]
-            row |= _of_years(study, known, of_year[i], with_year[i], drawn[i])
+        if planned > unknown:
+            row |= {"affected": own["affected"], **_of_years(study, own)}
         rows.append(row)
     table = pd.DataFrame(rows, columns=SCHEDULE_SEASONS_COLUMNS)
     return table.astype({"worst_year": "Int64"})
 
 
-def _of_years(
-    study: Study, known: float, of_year: np.ndarray, with_year: np.ndarray, drawn: np.ndarray
-) -> dict:
+def _of_years(study: Study, own: dict) -> dict:
     """What single years of the record, and resamples of them, say of some flights.
 
-    A year counts when it has figures for at least `rules.DAYS.share_of_days` of the flights
-    that have any; the others are taken to fall short as often as these.
+    A year counts when the cells that count cover at least `rules.DAYS.share_of_days` of the
+    windows of the flights with figures.  Its flights are all of these, falling short as often
+    as in its hours, each hour with its weight in the expected number: so the expected number is
+    a weighted mean of the years' numbers where every year counts.  Below
+    `rules.YEARS.interval` counting years nothing is told of single ones.
+
+    Parameters
+    ----------
+    study : Study
+    own : dict
+        The sums of `FlightScores` of these flights.
     """
-    counts = with_year >= DAYS.share_of_days * known
+    known = own["planned"] - own["unknown"]
+    counts = own["with_year"] >= DAYS.share_of_days * known
     n_years = int(counts.sum())
-    note = str(interval_notes(np.array([n_years]))[0])
-    if not n_years:
-        return {"n_years": 0, "interval_note": note}
+    row = {"n_years": n_years, "interval_note": _interval_note(n_years)}
+    if n_years < YEARS.interval:
+        return row
     years = np.arange(study.first_year, study.first_year + len(counts))[counts]
-    values = of_year[counts] * known / with_year[counts]
-    low, high = bounds_of(drawn[None, :], np.array([n_years]), study.confidence)[:, 0]
-    return {
+    values = known * own["of_year"][counts] / own["hours_of_year"][counts]
+    worst = values.max()
+    low, high = bounds_of(own["drawn"][None, :], np.array([n_years]), study.confidence)[:, 0]
+    return row | {
         "ci_low": low,
         "ci_high": high,
         "year_low": values.min(),
-        "year_high": values.max(),
-        "worst_year": int(years[values.argmax()]) if values.max() > 0 else None,
-        "n_years": n_years,
-        "interval_note": note,
+        "year_high": worst,
+        # Of years alike, a rounding apart, the first.
+        "worst_year": int(years[(values >= worst * (1.0 - 1e-12)).argmax()]) if worst else None,
     }
 
 

@@ -9,7 +9,7 @@ import numpy as np
 import pandas as pd
 
 from climarisk.flights import Flight
-from climarisk.occasions import StandardHours, Windows
+from climarisk.occasions import StandardHours, Windows, date_array
 from climarisk.risk import RESAMPLES, expanded_tail, level_weights, year_weights
 from climarisk.rules import YEARS
 from climarisk.scene import Scene
@@ -34,8 +34,11 @@ class FlightScores:
         Flights with figures that are expected to fall short.
     drawn : ndarray, shape (1 + n_seasons, RESAMPLES)
         The same in each resample of years and of the persistent transfer error.
-    of_year, with_year : ndarray, shape (1 + n_seasons, n_years)
-        The same in each year of the record, and the flights that the year has figures for.
+    of_year, hours_of_year : ndarray, shape (1 + n_seasons, n_years)
+        What each year of the record adds to `affected`, and to the flights with figures: every
+        date's hours of all years together are one flight.
+    with_year : ndarray, shape (1 + n_seasons, n_years)
+        Flights with figures, each times the share of its window whose cells count in the year.
     days : DataFrame
         ``date`` (datetime64), ``flights``, ``unknown_flights``, ``affected``.
     """
@@ -47,6 +50,7 @@ class FlightScores:
     affected: np.ndarray
     drawn: np.ndarray
     of_year: np.ndarray
+    hours_of_year: np.ndarray
     with_year: np.ndarray
     days: pd.DataFrame
 
@@ -83,6 +87,16 @@ class Occasion:
         return self.scaled @ self.windows.total
 
     @cached_property
+    def n_years(self) -> int:
+        """Years that take part in the figures of a date, on average, rounded down.
+
+        In an archive whose months come from different years that is one or two, however many
+        years the dates of a long season touch.
+        """
+        years = (self.windows.total > 0).sum(axis=1)[self.known]
+        return int(years.sum()) // len(years) if len(years) else 0
+
+    @cached_property
     def cache(self) -> dict:
         """Air, shortfalls and masses of these hours, made when they are asked for."""
         return {}
@@ -100,7 +114,7 @@ class Tally:
         self.both = (self.years[:, :, None] * levels[:, None, :]).reshape(RESAMPLES, -1)
         self.planned, self.unknown, self.affected = np.zeros((3, n_seasons))
         self.drawn = np.zeros((n_seasons, RESAMPLES))
-        self.of_year, self.with_year = np.zeros((2, n_seasons, n_years))
+        self.of_year, self.hours_of_year, self.with_year = np.zeros((3, n_seasons, n_years))
         self._waiting: list[tuple] = []
         self._bounds: list[np.ndarray] = []
         self._days: list[tuple] = []
@@ -113,12 +127,14 @@ class Tally:
         fallen = occasion.scaled @ counts.reshape(len(counts), -1)
         fallen = fallen.reshape(*occasion.total.shape, self.n_levels)
         flights = members @ known * float(flight.repeats)
-        n_years = int((occasion.total[0] > 0).sum())
-        self._waiting.append((fallen, occasion.total, flights, n_years))
+        self.of_year += fallen.mean(axis=2) * flight.repeats
+        self.hours_of_year += occasion.total * flight.repeats
+        self.with_year += members @ occasion.windows.counting * flight.repeats
+        self._waiting.append((fallen, occasion.total, flights, occasion.n_years))
         if len(self._waiting) >= _BATCH:
             self._draw()
         by_date = counts.sum(axis=(1, 2)) * occasion.windows.per_hour / self.n_levels
-        dates = np.array(flight.dates, "datetime64[D]")
+        dates = date_array(flight.dates)
         self._days.append((dates, np.full(len(dates), flight.repeats), known, by_date))
 
     def _draw(self) -> None:
@@ -127,29 +143,28 @@ class Tally:
             return
         fallen, total, flights = (np.array([w[i] for w in self._waiting]) for i in range(3))
         n_years = np.array([w[3] for w in self._waiting])
+        # Where only their sum counts, flights of the same dates and hours are resampled as one.
+        groups = {id(w[1]): place for place, w in reversed(list(enumerate(self._waiting)))}
+        first, group = np.unique([groups[id(w[1])] for w in self._waiting], return_inverse=True)
         self._waiting = []
         some = total > 0
-        share_of_year = fallen.mean(axis=3) / np.where(some, total, 1.0)
-        self.of_year += (share_of_year * flights[:, :, None]).sum(axis=0)
-        self.with_year += (some * flights[:, :, None]).sum(axis=0)
         for s in range(total.shape[1]):
-            here = np.flatnonzero(flights[:, s] > 0)
-            if len(here):
-                drawn, pooled = self._shares(fallen[here, s], total[here, s])
-                self.affected[s] += pooled @ flights[here, s]
-                # A resample that misses all the years of a flight says nothing of it.
-                filled = np.where(np.isnan(drawn), pooled[:, None], drawn)
-                self.drawn[s] += flights[here, s] @ filled
-            if s == 0:
-                bounds = np.full((2, len(total)), np.nan)
-                if len(here):
-                    bounds[:, here] = bounds_of(drawn, n_years[here], self.confidence)
-                self._bounds.append(bounds)
+            weighted = np.zeros((len(first), *fallen.shape[2:]))
+            np.add.at(weighted, group, fallen[:, s] * flights[:, s, None, None])
+            here = some[first, s].any(axis=1)
+            drawn, pooled = self._shares(weighted[here], total[first[here], s])
+            self.affected[s] += pooled.sum()
+            # A resample that misses all the years of a flight says nothing of it.
+            self.drawn[s] += np.where(np.isnan(drawn), pooled[:, None], drawn).sum(axis=0)
+        bounds, here = np.full((2, len(total)), np.nan), some[:, 0].any(axis=1)
+        drawn, _ = self._shares(fallen[here, 0], total[here, 0])
+        bounds[:, here] = bounds_of(drawn, n_years[here], self.confidence)
+        self._bounds.append(bounds)
 
     def _shares(self, fallen: np.ndarray, total: np.ndarray) -> tuple[np.ndarray, np.ndarray]:
         """Shares of some flights in each resample (NaN where it misses them), and pooled."""
         n = self.years @ total.T
-        short = self.both @ fallen.reshape(len(fallen), -1).T
+        short = self.both @ fallen.reshape(len(fallen), self.both.shape[1]).T
         drawn = np.where(n > 0, short / np.where(n > 0, n, 1.0), np.nan).T.copy()
         return drawn, fallen.mean(axis=2).sum(axis=1) / total.sum(axis=1)
 
@@ -168,6 +183,7 @@ class Tally:
             self.affected,
             self.drawn,
             self.of_year,
+            self.hours_of_year,
             self.with_year,
             self._by_date(),
         )

@@ -20,7 +20,8 @@ from climarisk.results import Tiles
 from climarisk.seasons import Season, read_seasons, same_season_names, season_text
 from climarisk.stations import Station, read_stations
 
-_Year = Annotated[int, Ge(1800), Le(2200)]
+_FIRST_YEAR, _LAST_YEAR = 1800, 2200
+_Year = Annotated[int, Ge(_FIRST_YEAR), Le(_LAST_YEAR)]
 #: Of a band: one in ten thousand is less than any record can tell apart.
 _Edge = Annotated[float, Ge(0.0001), Lt(1)]
 
@@ -283,7 +284,7 @@ def read_study(path: Path | str, schedule: Path | None = None, year: int | None 
     path = Path(path)
     if path.is_dir():
         path = path / "study.toml"
-    problems: list[str] = []
+    problems = _year_problems(year)
     content = load_toml(path)
     problems += same_season_names(content, path)
     checked = validate(_StudyFile, content, str(path), problems)
@@ -306,8 +307,8 @@ def read_study(path: Path | str, schedule: Path | None = None, year: int | None 
         schedule = folder / checked.schedule
     flights = []
     if schedule is not None and not problems:
-        names = {p.id: p for p in aircraft}, {s.name: s for s in seasons}
-        flights = _collect(read_flights, problems, schedule, fields, *names, planning.year)
+        known = {p.id: p for p in aircraft}, {s.name: s for s in seasons}
+        flights = _collect(read_flights, problems, schedule, fields, *known, planning.year)
     if problems:
         raise InputError(problems)
     inputs = [path, folder / checked.fields, folder / checked.runways, *aircraft_paths]
@@ -337,6 +338,12 @@ def read_study(path: Path | str, schedule: Path | None = None, year: int | None 
         planning=planning,
         flights=tuple(flights),
     )
+
+
+def _year_problems(year: int | None) -> list[str]:
+    if year is None or _FIRST_YEAR <= year <= _LAST_YEAR:
+        return []
+    return [f"planning year {year}: a year from {_FIRST_YEAR} to {_LAST_YEAR} is allowed."]
 
 
 def _planning(

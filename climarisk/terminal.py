@@ -48,13 +48,20 @@ def escaped(text: str) -> str:
     return escape("".join(c if c.isprintable() else "\N{REPLACEMENT CHARACTER}" for c in text))
 
 
-def print_findings(findings: Sequence[Finding]) -> None:
-    """The findings that are more than notes, on stderr; of very many the first."""
+def print_findings(findings: Sequence[Finding], all_in: str = "study.json") -> None:
+    """The findings that are more than notes, on stderr; of very many the first.
+
+    Parameters
+    ----------
+    findings : sequence of Finding
+    all_in : str
+        Where the others are.
+    """
     serious = [finding for finding in findings if finding.severity != "note"]
     for finding in serious[:_MOST_FINDINGS]:
         notes.print(escaped(str(finding)))
     if len(serious) > _MOST_FINDINGS:
-        notes.print(f"{len(serious) - _MOST_FINDINGS} cautions and rejections more in study.json.")
+        notes.print(f"{len(serious) - _MOST_FINDINGS} cautions and rejections more in {all_in}.")
     others = len(findings) - len(serious)
     if others:
-        notes.print(f"{others} notes more in study.json.")
+        notes.print(f"{others} notes more in {all_in}.")

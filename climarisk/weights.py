@@ -269,7 +269,8 @@ def _outcomes(mass_kg: np.ndarray, maximum_kg: float) -> np.ndarray:
 def _notes(n_years: np.ndarray, bounds: np.ndarray) -> np.ndarray:
     """The notes of the intervals, and which bounds cannot be met."""
     never = np.isneginf(bounds)
-    words = np.where(never[:, 0], "lower bound cannot be met at any tabulated mass", "")
-    words = np.where(never.all(axis=1), "neither bound can be met at any tabulated mass", words)
+    words = np.where(never[:, 0], "the lower end cannot be met at any tabulated mass", "")
+    both = "both ends of the interval cannot be met at any tabulated mass"
+    words = np.where(never.all(axis=1), both, words)
     notes = zip(interval_notes(n_years), words, strict=True)
     return np.array(["; ".join(filter(None, pair)) for pair in notes], dtype=object)

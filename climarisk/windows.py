@@ -18,6 +18,7 @@ from climarisk.scene import Scene
 from climarisk.study import Planning
 
 _HOUR_S = 3600
+_HALF_DAY_MIN = 12 * 60
 
 
 def window_table(
@@ -56,6 +57,10 @@ def window_table(
             "" if pd.isna(hour) else clock_text(scene.field.timezone, planning.year, month, hour)
             for month, hour in zip(table["month"], table[f"{name}_hour"], strict=True)
         ]
+    table["clock_hours"] = [
+        clock_ranges(scene.field.timezone, planning.year, month, text)
+        for month, text in zip(table["month"], table["hours"], strict=True)
+    ]
     table["target"] = planning.target
     table["run_hours"] = planning.consecutive_hours
     table["days_with_run"] = days_with_run(hours, planning.consecutive_hours)
@@ -177,6 +182,51 @@ def clock_text(zone: str, year: int, month: int, hour: int) -> str:
     info = zone_info(zone)
     shown = (dt.datetime.fromtimestamp(int(t), info).strftime("%H:%M") for t in instants)
     return " / ".join(dict.fromkeys(shown))
+
+
+def clock_ranges(zone: str, year: int, month: int, ranges: str) -> str:
+    """Ranges of hours of local standard time by the civil clock.
+
+    Parameters
+    ----------
+    zone : str
+        IANA name.
+    year, month : int
+    ranges : str
+        As `hour_ranges` gives them.
+
+    Returns
+    -------
+    str
+        Every range as ``HH:MM-HH:MM``; where the clocks change within the month, the ranges of
+        the earlier days, a slash, and those of the later days.
+
+    Examples
+    --------
+    >>> clock_ranges("Europe/Paris", 2027, 7, "04-12 18-20")
+    '05:00-13:00 19:00-21:00'
+    >>> clock_ranges("Europe/Paris", 2027, 3, "06-17")
+    '06:00-17:00 / 07:00-18:00'
+    """
+    parts = [[int(hour) for hour in text.split("-")] for text in ranges.split()]
+    # A change on the first or last day of the month is seen by some hours of the day only.
+    ahead = sorted((_ahead_min(zone, year, month, h) for part in parts for h in part), key=len)
+    shown = []
+    for minutes in ahead[-1] if ahead else ():
+        ends = ["-".join(_clock(hour * 60 + minutes) for hour in part) for part in parts]
+        shown.append(" ".join(ends))
+    return " / ".join(shown)
+
+
+def _ahead_min(zone: str, year: int, month: int, hour: int) -> list[int]:
+    """Minutes by which the civil clock is ahead at an hour of the day, earlier days first."""
+    readings = (text.split(":") for text in clock_text(zone, year, month, hour).split(" / "))
+    ahead = (int(h) * 60 + int(m) - hour * 60 for h, m in readings)
+    return [(minutes + _HALF_DAY_MIN) % (2 * _HALF_DAY_MIN) - _HALF_DAY_MIN for minutes in ahead]
+
+
+def _clock(minutes: int) -> str:
+    return f"{minutes // 60 % 24:02d}:{minutes % 60:02d}"
 
 
 # Days with a run of usable hours

@@ -104,7 +104,7 @@ class Made:
 
     def tables(self, **changes):
         study = SimpleNamespace(
-            fields=[SimpleNamespace(id=f) for f in self.fields],
+            fields=[SimpleNamespace(id=f, is_steep=f == self.fields[0]) for f in self.fields],
             aircraft=[SimpleNamespace(id=a, carburettor=a == "carb") for a in AIRCRAFT],
             seasons=SEASONS,
             first_year=FIRST,
@@ -521,3 +521,10 @@ def test_counts_of_an_aircraft_are_those_behind_its_monthly_shares():
     share = counts.fallen.mean(axis=2).sum(axis=1) / counts.total.sum(axis=1)
     np.testing.assert_allclose(share, monthly["shortfall"], rtol=1e-12)
     assert (counts.fallen[..., 0] > counts.fallen[..., 2]).all()
+
+
+def test_steep_fields_are_marked_in_every_row_of_theirs():
+    bases, _ = Made(3).tables()
+    first = Made(3).fields[0]
+    assert set(bases.loc[bases["field"] == first, "steep"]) == {"yes"}
+    assert set(bases.loc[bases["field"] != first, "steep"]) == {""}

@@ -347,14 +347,13 @@ def plain_month(air, clock, inside, month, profile):
     for level in air.temperature_levels_c:
         moved = level[used]
         most = vapour_pressure_hpa(moved, np.array(p)).tolist()
-        lists["power_p50"] += [
-            plain_share(profile, *x) for x in zip(p, moved.tolist(), map(min, e, most), strict=True)
-        ]
+        for x in zip(p, moved.tolist(), map(min, e, most), strict=True):
+            lists["power_p50"].append(plain_share(profile, *x))
+            lists["optimistic_p50"].append(max(lists["power_p50"][-1], plain_j1349(profile, *x)))
     lists["power_p10"] = lists["power_p90"] = lists["power_p50"]
     for x in zip(p, t, e, strict=True):
         share, dry = plain_share(profile, *x), plain_share(profile, x[0], x[1], 0.0)
         lists["humidity_power_pct_p50"].append((1 - share / dry) * 100)
-        lists["optimistic_p50"].append(max(share, plain_j1349(profile, *x)))
         gained = density_altitude_ft(*x) - density_altitude_ft(*x[:2])
         lists["humidity_ft_p50"].append(float(gained))
     for name in ("humidity_power_pct", "humidity_ft"):
@@ -369,7 +368,7 @@ def plain_month(air, clock, inside, month, profile):
 
 
 def plain_share(profile, p, t, e):
-    """Return the power of METHODS 4 of one hour."""
+    """Return the power of one hour."""
     if profile.aspiration in ("diesel", "electric"):
         return {"diesel": np.nan, "electric": 1.0}[profile.aspiration]
     sigma = (p - e) / (t + 273.15) * 288.15 / 1013.25
@@ -439,6 +438,7 @@ def test_engines_that_are_alike_have_the_same_rows(case):
     assert first[rest].reset_index(drop=True).equals(second[rest].reset_index(drop=True))
     whole = table.dropna(subset="power_p50")
     assert (whole["power_p10"] <= whole["power_p90"]).all()
+    assert (whole["power_p50"] <= whole["optimistic_p50"]).all()
 
 
 def test_no_hours_at_all_give_an_empty_table(case):

@@ -104,7 +104,7 @@ ROW = "A,LOWA,trainer,both,09:30,2027-07-01,,,,"
         (ROW.replace("2027-07-01", "1066-10-14"), "outside the years 1800 to 2200"),
         (ROW.replace("2027-07-01", "2027-07-01 2027-07-01"), "holds 2027-07-01 twice"),
         (ROW.replace("2027-07-01", "2027-07-02/2027-07-01"), "ends before it begins"),
-        (ROW.replace("2027-07-01", "2027-07-01/"), "'' is no date"),
+        (ROW.replace("2027-07-01", "2027-07-01/"), "an interval is two dates"),
         (ROW.replace("2027-07-01", "2027-07-01/2027-07-02/2027-07-03"), "an interval is two dates"),
         (ROW.replace("2027-07-01", "2000-01-01/2027-07-01"), "has 10,044 days; at most 5,000"),
         (ROW.replace("2027-07-01", ""), "neither is there"),
@@ -120,10 +120,24 @@ ROW = "A,LOWA,trainer,both,09:30,2027-07-01,,,,"
         (ROW[:-1] + "nan,", "'mass_kg' is 'nan'"),
         (ROW + "0", "'repeats' is '0'"),
         (ROW + "1.5", "'repeats' is '1.5'"),
+        (ROW + "x", "'repeats' is 'x'; give a whole number of flights, 1 to 1,000"),
+        (ROW + "1001", "'repeats' is '1001'; give a whole number of flights, 1 to 1,000"),
+        (ROW[:-1] + "-5,", "'mass_kg' is -5; for 'trainer' it must be above the empty"),
+        (ROW[:-1] + "6_0_0,", "'mass_kg' is '6_0_0'; give a mass in kilograms above 0"),
+        (ROW.replace("09:30", "08:00:00"), "'time' is '08:00:00'; give the local clock time as"),
+        *((ROW.replace("2027-07-01", text), f"{text!r}; write the date as 2027-06-15,")
+          for text in ("06/15/2027", "15/06/2027", "06/15", "2027/06/15", "2027-6-1/2027-6-3",
+                       "06/15/2027 06/16/2027", "06/15/2027 - 06/20/2027", "2027-06-14 06/15")),
+        (ROW.replace("2027-07-01", "15.06.2027"), "'15.06.2027' is no date; give dates that"),
+        (ROW.replace("2027-07-01", "2027-02-29 2027-07-01 2027-13-01"),
+         "'2027-02-29' and '2027-13-01' are no dates"),
+        (ROW.replace("2027-07-01", "a b c d e"), "'a', 'b', 'c' and 2 more are no dates"),
+        (ROW.replace("2027-07-01", "2027-06-31/2027-09-31"),
+         "'2027-06-31' and '2027-09-31' are no dates"),
         ("=A" + ROW[1:], "a spreadsheet takes for a formula"),
         (ROW[1:], "'flight' is missing"),
     ],
-)
+)  # fmt: skip
 def test_problem_is_told_with_file_and_line(tmp_path, row, told):
     flights, problems = read(tmp_path, "OK" + ROW[1:], row)
     assert len(problems) == 1 and told in problems[0]
@@ -140,6 +154,44 @@ def test_all_problems_of_all_rows_are_told(tmp_path):
     _, problems = read(tmp_path, wrong, ROW, ROW)
     assert len(problems) == 5
     assert "line 4: the flight 'A' stands in line 3 too" in problems[-1]
+
+
+def test_all_problems_of_a_row_come_out_together(tmp_path):
+    every = "=B,NONE,glider,hover,24:00,2027-02-29 1066-10-14,sumer,Munday Tu-Xyz,-5,x"
+    _, problems = read(tmp_path, every)
+    told = [
+        "'flight' is '=B': begins with", "'NONE' is no field", "'glider' is no aircraft",
+        "'operation' is 'hover'; give takeoff, landing or both", "'time' is '24:00'",
+        "exactly one of 'dates' and 'season' must be filled in; both are there",
+        "'2027-02-29' is no date", "'1066-10-14' in 'dates': outside the years 1800 to 2200",
+        "'sumer' is no season", "'weekdays' holds 'Munday'", "'weekdays' holds 'Tu'",
+        "'weekdays' holds 'Xyz'", "'mass_kg' is '-5'; give a mass", "'repeats' is 'x'; give",
+    ]  # fmt: skip
+    where = f"{tmp_path / 'flights.csv'}, line 2: "
+    assert [p[: len(where)] for p in problems] == [where] * len(told)
+    for problem, part in zip(problems, told, strict=True):
+        assert part in problem and "Input should" not in problem
+    _, problems = read(tmp_path, ",,,,,,,,,")  # a blank line is left out
+    assert len(problems) == 1
+    _, problems = read(tmp_path, ",,,,,2027-07-01,,,,")
+    assert [p.removeprefix(where) for p in problems] == [
+        f"{name!r} is missing; add it."
+        for name in ("flight", "field", "aircraft", "operation", "time")
+    ]
+
+
+def test_row_with_other_problems_is_told_as_a_double_too(tmp_path):
+    _, problems = read(tmp_path, ROW, ROW.replace("LOWA", "NONE"))
+    assert len(problems) == 2
+    assert "stands in line 2 too" in problems[0] and "'NONE' is no field" in problems[1]
+
+
+def test_numbers_and_times_as_spreadsheets_write_them(tmp_path):
+    early, padded = (one(tmp_path, ROW.replace("09:30", t)) for t in ("8:00", "08:00"))
+    assert early.time == padded.time == dt.time(8, 0)
+    loaded = one(tmp_path, ROW[:-1] + "612.50,3.0")
+    assert (loaded.mass_kg, loaded.repeats) == (612.5, 3)
+    assert one(tmp_path, ROW + "1000").repeats == 1000
 
 
 def test_unknown_column_is_told_with_the_nearest_one(tmp_path):

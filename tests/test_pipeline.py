@@ -17,22 +17,30 @@ from study_maker import (
 )
 
 from climarisk.errors import InputError
+from climarisk.icing import bands
 from climarisk.pipeline import run_study
 from climarisk.results import (
     DISTRIBUTIONS_HOURLY_COLUMNS,
     DISTRIBUTIONS_MONTHLY_COLUMNS,
     DISTRIBUTIONS_SEASONAL_COLUMNS,
     FIELD_FRAMES,
+    ICING_HOURLY_COLUMNS,
+    ICING_MONTHLY_COLUMNS,
     MARGINS_MONTHLY_COLUMNS,
     NEAR_SATURATION_HOURLY_COLUMNS,
     NEAR_SATURATION_MONTHLY_COLUMNS,
     NEAR_SATURATION_SEASONAL_COLUMNS,
+    POWER_MONTHLY_COLUMNS,
     RISK_HOURLY_COLUMNS,
     RISK_MONTHLY_COLUMNS,
     RISK_SEASONAL_COLUMNS,
     RISK_YEARLY_COLUMNS,
     STATION_USE_COLUMNS,
     VARIABLES,
+    WEIGHTS_HOURLY_COLUMNS,
+    WEIGHTS_MONTHLY_COLUMNS,
+    WEIGHTS_SEASONAL_COLUMNS,
+    WINDOWS_MONTHLY_COLUMNS,
 )
 from climarisk.store import Store
 
@@ -48,8 +56,15 @@ TABLES = {
     "near_saturation_monthly": NEAR_SATURATION_MONTHLY_COLUMNS,
     "near_saturation_hourly": NEAR_SATURATION_HOURLY_COLUMNS,
     "near_saturation_seasonal": NEAR_SATURATION_SEASONAL_COLUMNS,
+    "weights_monthly": WEIGHTS_MONTHLY_COLUMNS,
+    "weights_hourly": WEIGHTS_HOURLY_COLUMNS,
+    "weights_seasonal": WEIGHTS_SEASONAL_COLUMNS,
+    "windows_monthly": WINDOWS_MONTHLY_COLUMNS,
+    "icing_monthly": ICING_MONTHLY_COLUMNS,
+    "icing_hourly": ICING_HOURLY_COLUMNS,
+    "power_monthly": POWER_MONTHLY_COLUMNS,
 }
-KEYS = ["field", "aircraft", "variable", "season", "month", "hour", "year", "check"]
+KEYS = ["field", "aircraft", "variable", "season", "month", "hour", "year", "check", "band"]
 
 
 @pytest.fixture(scope="module")
@@ -110,6 +125,13 @@ def test_tables_hold_every_row_of_the_contract_in_the_studys_order(plain):
         "near_saturation_monthly": n_fields * 12,
         "near_saturation_hourly": n_fields * 288,
         "near_saturation_seasonal": n_fields * n_seasons,
+        "weights_monthly": n_fields * n_aircraft * 12,
+        "weights_hourly": n_fields * n_aircraft * 288,
+        "weights_seasonal": n_fields * n_aircraft * n_seasons,
+        "windows_monthly": n_fields * n_aircraft * 12,
+        "icing_monthly": n_fields * 12 * len(bands("chart")),
+        "icing_hourly": n_fields * 288 * len(bands("chart")),
+        "power_monthly": n_fields * n_aircraft * 12,
     }
     # Every frame of a field is held by these tests, three lists of what was used apart.
     assert set(FIELD_FRAMES) == set(TABLES) | {"station_use", "pressure_sources", "estimates"}
@@ -223,10 +245,13 @@ def test_field_without_a_station_is_told_and_has_no_figures(study_folder, plain)
     assert ("reject", "no-station") in told(result, "field", "TOP")
     for name in TABLES:
         table = table_of(result, name, field="TOP")
-        assert (table["n_hours"] == 0).all() and (len(table) > 0 or name == "risk_yearly")
+        used = table["n_hours" if "n_hours" in table else "n_years"]
+        assert (used == 0).all() and (len(table) > 0 or name == "risk_yearly")
         figures = ["mean", "p50", "shortfall", "ci_low", "margin_p50", "usable_hours", "share_1k"]
+        figures += ["mass_kg", "never_met", "first_hour", "days_with_run", "share", "power_p50"]
         figures = [c for c in figures if c in table]
         assert table[figures].isna().all().all()
+        assert "outcome" not in table or (table["outcome"] == "").all()
         if "hours_offered" in table:
             assert (table["hours_offered"] > 0).all()
     for field in ("LOW", "MID"):

@@ -6,10 +6,14 @@ are worked out by hand from its published changes, named beside them.
 
 from __future__ import annotations
 
+import calendar
 import datetime as dt
 import pickle
+from collections import Counter
 from dataclasses import replace
 from pathlib import Path
+from typing import NamedTuple
+from zoneinfo import ZoneInfo
 
 import numpy as np
 import pandas as pd
@@ -20,7 +24,17 @@ from climarisk.aircraft import AircraftProfile, PerformanceTable
 from climarisk.clock import hour_grid, in_window, local_clock
 from climarisk.fields import Field, RunwayDirection
 from climarisk.flights import Flight
-from climarisk.occasions import Record, hours_text, instants_s, standard_hours, windows
+from climarisk.occasions import (
+    Record,
+    StandardHours,
+    hours_text,
+    instants_s,
+    is_skipped,
+    odd_readings,
+    skipped_s,
+    standard_hours,
+    windows,
+)
 from climarisk.performance import CHECKS, margins
 from climarisk.results import (
     SCHEDULE_DAYS_COLUMNS,
@@ -28,7 +42,7 @@ from climarisk.results import (
     SCHEDULE_SEASONS_COLUMNS,
 )
 from climarisk.scene import Scene
-from climarisk.schedule import lighter_holds, schedule_frames, score_flights
+from climarisk.schedule import NEAREST_NOT_TOLD, lighter_holds, schedule_frames, score_flights
 from climarisk.seasons import read_seasons
 from climarisk.study import Planning, Study
 from climarisk.transfer import FieldAir
@@ -60,6 +74,7 @@ PLANE = AircraftProfile(
     climb=(made_table(650.0, rate_ft_min=900.0), made_table(800.0, rate_ft_min=640.0)),
     takeoff_factor=1.0, landing_factor=1.4, climb_rate_ft_min=420.0, limit_temperature_c=36.0,
 )  # fmt: skip
+YEAR_COLUMNS = ["year_low", "year_high", "worst_year"]
 SEASONS = tuple(
     read_seasons({"summer": ["06-15", "09-15"], "winter": ["12-20", "01-20"]}, Path("x"), [])
 )
@@ -145,14 +160,32 @@ def standard_reading(date, time):
     return rounded.date(), rounded.hour
 
 
-@pytest.fixture(scope="module")
-def hours_of(scene):
-    """Places in the known hours by date and hour, in standard time one hour ahead of UTC."""
-    found = {}
+class Entering(NamedTuple):
+    """Hours that enter: places in the known hours by date and hour, and the counting cells."""
+
+    places: dict
+    cells: set
+
+
+def entering(scene):
+    """Hours of cells with 80 % of their days, in standard time one hour ahead of UTC."""
+    found, days = {}, Counter()
     for n, place in enumerate(scene.known.tolist()):
         local = dt.datetime(1970, 1, 1) + dt.timedelta(hours=int(GRID[place]) + 1)
         found[local.date(), local.hour] = n
-    return found
+        days[local.year, local.month, local.hour] += 1
+    cells = {
+        (year, month, hour)
+        for (year, month, hour), n in days.items()
+        if n >= 0.8 * calendar.monthrange(year, month)[1]
+    }
+    places = {(d, h): n for (d, h), n in found.items() if (d.year, d.month, h) in cells}
+    return Entering(places, cells)
+
+
+@pytest.fixture(scope="module")
+def hours_of(scene):
+    return entering(scene)
 
 
 @pytest.fixture(scope="module")
@@ -173,15 +206,42 @@ def checks_at(scene):
 ROWS = {"takeoff": [0, 1, 3, 4, 5, 6], "landing": [2, 5, 6], "both": [0, 1, 2, 3, 4, 5, 6]}
 
 
-def window_of(date, hour, year, hours_of):
-    """Known hours of one window, or none where the year does not count."""
+def days_of(date, year):
+    """The 31 days around a date in a year."""
     day = min(date.day, 28) if date.month == 2 else date.day
     if date.month == 2 and date.day == 29 and year in (2016, 2020):
         day = 29
     middle = dt.date(year, date.month, day)
-    days = [middle + dt.timedelta(days=k) for k in range(-15, 16)]
-    places = [hours_of[d, hour] for d in days if (d, hour) in hours_of]
-    return places if len(places) >= 0.8 * 31 else []
+    return [middle + dt.timedelta(days=k) for k in range(-15, 16)]
+
+
+def is_known(date, hour, hours_of):
+    """Whether the month and hour of a date have figures in some year."""
+    return any((y, date.month, hour) in hours_of.cells for y in range(FIRST, LAST + 1))
+
+
+def window_of(date, hour, year, hours_of):
+    """Hours of one window that enter; none where the date has no figures."""
+    if not is_known(date, hour, hours_of):
+        return []
+    days = days_of(date, year)
+    return [hours_of.places[d, hour] for d in days if (d, hour) in hours_of.places]
+
+
+def covered(date, time, hours_of):
+    """Share of the days of a date's window in each year whose cell counts."""
+    day, hour = standard_reading(date, time)
+    shares = []
+    for year in range(FIRST, LAST + 1):
+        days = [d for d in days_of(day, year) if FIRST <= d.year <= LAST]
+        shares.append(np.mean([(d.year, d.month, hour) in hours_of.cells for d in days]))
+    return np.array(shares) * is_known(day, hour, hours_of)
+
+
+def years_of(dates):
+    """Years that take part in the figures of a date, on average, rounded down."""
+    years = [(n > 0).sum() for _, n, _ in dates if n.sum()]
+    return int(np.floor(np.mean(years))) if years else 0
 
 
 def counted(entry, hours_of, checks_at):
@@ -230,18 +290,19 @@ def test_columns_and_order_are_those_of_the_contract(frames):
     assert frames["schedule_flights"]["flight"].tolist() == [f.id for f in FLIGHTS]
 
 
-def test_shares_counts_and_coverage_are_those_of_plain_loops(frames, brute):
+def test_shares_counts_and_coverage_are_those_of_plain_loops(frames, brute, hours_of):
     table = frames["schedule_flights"].set_index("flight")
     for entry in FLIGHTS:
         row, dates = table.loc[entry.id], brute[entry.id]
         assert row["shortfall"] == pytest.approx(share_of(dates), rel=1e-12, nan_ok=True)
-        totals = np.array([n for _, n, _ in dates])
-        assert row["coverage"] == pytest.approx((totals > 0).mean())
-        assert row["n_years"] == (totals.sum(axis=0) > 0).sum()
+        cover = [covered(date, entry.time, hours_of) for date in entry.dates]
+        assert row["coverage"] == pytest.approx(np.mean(cover))
+        assert row["n_years"] == years_of(dates)
         known = sum(n.sum() > 0 for _, n, _ in dates)
         if known:
             assert row["affected"] == pytest.approx(share_of(dates) * known * entry.repeats)
         assert row["flights"] == len(entry.dates) * entry.repeats
+        assert row["unknown_flights"] == (len(dates) - known) * entry.repeats
     some = table["shortfall"]
     assert some["noon"] > some["light"] and (some.dropna().between(0.001, 0.999)).sum() >= 4
 
@@ -265,6 +326,7 @@ def test_flight_without_figures_is_unknown_and_never_fine(frames):
         [""] * 5
     )
     assert (row["n_hours"], row["n_years"], row["coverage"]) == (0, 0, 0.0)
+    assert row["unknown_flights"] == row["flights"] == 1
 
 
 def test_dates_without_figures_are_unknown_one_by_one(frames, brute):
@@ -274,6 +336,11 @@ def test_dates_without_figures_are_unknown_one_by_one(frames, brute):
     whole = frames["schedule_seasons"].iloc[0]
     assert whole["unknown_flights"] == 1 + 3 * (3 - sum(known))
     assert whole["flights"] == sum(len(f.dates) * f.repeats for f in FLIGHTS)
+    row = frames["schedule_flights"].set_index("flight").loc["partly"]
+    assert row["unknown_flights"] == 3 * (3 - sum(known))
+    assert row["affected"] == pytest.approx(
+        row["shortfall"] * (row["flights"] - row["unknown_flights"])
+    )
 
 
 def test_limiting_check_is_the_most_frequent_of_plain_loops(frames, hours_of, checks_at):
@@ -305,7 +372,7 @@ def test_intervals_are_those_of_resampled_years(frames, scene, brute):
     # One date: the construction of the monthly shares, to the last digit that rounding leaves.
     _, n, fallen = brute["leap"][0]
     low, high = risk._intervals(
-        fallen[None], n[None], np.array([(n > 0).sum()]), 0.9, scene.error.place_share
+        fallen[None], n[None], np.array([years_of(brute["leap"])]), 0.9, scene.error.place_share
     )
     got = table.loc["leap", ["ci_low", "ci_high"]].tolist()
     np.testing.assert_allclose(got, [low[0], high[0]], rtol=1e-9)
@@ -315,10 +382,10 @@ def in_season(date, i):
     return i == 0 or (date.month, date.day) in SEASONS[i - 1].days
 
 
-def test_seasons_add_up_with_the_weather_shared(frames, scene, brute):
+def test_seasons_add_up_with_the_weather_shared(frames, scene, brute, hours_of):
     for i, row in frames["schedule_seasons"].iterrows():
         affected, drawn = 0.0, np.zeros(risk.RESAMPLES)
-        by_year, with_year, known = np.zeros(N_YEARS), np.zeros(N_YEARS), 0
+        (by_year, hours, with_year), known = np.zeros((3, N_YEARS)), 0
         for entry in FLIGHTS:
             dates = [d for d in brute[entry.id] if in_season(d[0], i) and d[1].sum()]
             if not dates:
@@ -327,19 +394,18 @@ def test_seasons_add_up_with_the_weather_shared(frames, scene, brute):
             known += flights
             affected += flights * share_of(dates)
             drawn += flights * drawn_shares(scene, dates)
-            for y in range(N_YEARS):
-                n = sum(n[y] / n.sum() for _, n, _ in dates)
-                short = sum(f[y].mean() / n.sum() for _, n, f in dates)
-                if n:
-                    by_year[y] += flights * short / n
-                    with_year[y] += flights
+            for date, n, f in dates:
+                with_year += entry.repeats * covered(date, entry.time, hours_of)
+                for y in range(N_YEARS):
+                    by_year[y] += entry.repeats * f[y].mean() / n.sum()
+                    hours[y] += entry.repeats * n[y] / n.sum()
         assert row["affected"] == pytest.approx(affected)
         counts = with_year >= 0.8 * known
         assert row["n_years"] == counts.sum() >= 5
         tail = risk.expanded_tail(int(counts.sum()), 0.9)
         bounds = np.quantile(drawn, [tail, 1 - tail], method="median_unbiased")
         np.testing.assert_allclose([row["ci_low"], row["ci_high"]], bounds)
-        values = (by_year * known)[counts] / with_year[counts]
+        values = (by_year * known)[counts] / hours[counts]
         assert row["year_low"] == pytest.approx(values.min())
         assert row["year_high"] == pytest.approx(values.max())
         assert row["worst_year"] == np.arange(FIRST, LAST + 1)[counts][values.argmax()]
@@ -392,25 +458,77 @@ def test_nearest_time_is_that_of_plain_loops(frames, hours_of, checks_at):
         row = table.loc[entry.id]
         if np.isnan(row["shortfall"]):
             continue
-        best = None
+        best, told = None, 0
+        own = [d for d, n, _ in counted(entry, hours_of, checks_at) if n.sum()]
         for shift in sorted(range(-12, 13), key=lambda s: (abs(s), s)):
             start = dt.datetime(2027, 1, 1, entry.time.hour, entry.time.minute)
             there = start + dt.timedelta(hours=shift)
-            dates = tuple(d + (there.date() - start.date()) for d in entry.dates)
+            dates = tuple(d + (there.date() - start.date()) for d in own)
             hours = [standard_reading(d, there.time())[1] for d in dates]
             found = counted(replace(entry, dates=dates, time=there.time()), hours_of, checks_at)
             known = all(n.sum() > 0 for _, n, _ in found)
             inside = all(6 <= h <= 20 for h in hours)
+            told += shift != 0 and known and inside
             if share_of(found) < 0.05 and (shift == 0 or (known and inside)):
                 best = shift, f"{there:%H:%M}", share_of(found)
                 break
         if best is None:
-            assert row["nearest_time"] == "" and np.isnan(row["nearest_shift_h"])
+            assert row["nearest_time"] == "" and pd.isna(row["nearest_shift_h"])
+            assert told and NEAREST_NOT_TOLD not in row["note"]
             continue
         moved += best[0] != 0
         assert (row["nearest_shift_h"], row["nearest_time"]) == best[:2]
         assert row["nearest_shortfall"] == pytest.approx(best[2])
     assert moved >= 1
+
+
+def test_time_outside_the_hours_window_is_noted(frames):
+    table = frames["schedule_flights"].set_index("flight")
+    for entry in FLIGHTS:
+        hours = [standard_reading(date, entry.time)[1] for date in entry.dates]
+        outside = sum(not 6 <= hour <= 20 for hour in hours)
+        assert outside in (0, len(hours))
+        notes = ["outside the hours window"] if outside else []
+        notes += [NEAREST_NOT_TOLD] if entry.id == "closed" else []
+        assert table.loc[entry.id, "note"] == "; ".join(notes)
+    assert (table["note"] != "").sum() == 2
+
+
+def test_notes_of_a_time_are_joined(scene):
+    entries = (
+        flight("some", "2027-07-01 2027-08-01 2027-12-01", "06:20"),  # 05 standard in summer
+        flight("skipped", "2027-03-28 2028-03-26 2027-04-01", "02:30"),
+        flight("twice", "2027-10-31", "02:30"),
+    )
+    notes = score_flights(scene, entries).flights["note"].tolist()
+    # Clocks change on the last Sundays of March and October, Directive 2000/84/EC.
+    assert notes == [
+        "outside the hours window on 2 of 3 dates",
+        "outside the hours window; 02:30 does not exist on 2027-03-28, 2028-03-26; "
+        "the reading an hour later is taken",
+        "outside the hours window; 02:30 comes twice on 2027-10-31; the first is taken",
+    ]
+    all_day = replace(scene, study=replace(STUDY, window="all"))
+    notes = score_flights(all_day, entries).flights["note"].tolist()
+    assert notes[0] == "" and notes[2].startswith("02:30 comes twice")
+
+
+def test_steep_field_is_marked(scene):
+    assert score_flights(scene, FLIGHTS[:1]).flights["steep"].tolist() == [""]
+    steep = replace(scene, field=replace(FIELD, runways=(replace(RUNWAY, slope_pct=-2.1),)))
+    assert score_flights(steep, FLIGHTS[5:7]).flights["steep"].tolist() == ["yes", "yes"]
+
+
+@pytest.mark.parametrize("chosen", [(), (5,), (1,), (1, 5)])
+def test_whole_numbers_stay_whole_whatever_the_other_rows_hold(scene, chosen):
+    entries = tuple(FLIGHTS[i] for i in chosen)
+    study = replace(STUDY, flights=entries)
+    table = schedule_frames(study, [score_flights(scene, entries)])["schedule_flights"]
+    kinds = table[["flights", "n_hours", "n_years", "nearest_shift_h"]].dtypes.astype(str)
+    assert kinds.tolist() == ["int64", "int64", "int64", "Int64"]
+    text = table.set_index("flight")["nearest_shift_h"].to_csv(header=False).split()
+    wanted = {"light": "light,0", "closed": "closed,"}
+    assert text == [wanted[entry.id] for entry in entries]
 
 
 def test_two_like_flights_are_twice_the_count_with_twice_the_interval(scene):
@@ -479,7 +597,9 @@ def test_measured_air_has_one_level_and_few_years_have_no_interval():
     assert few.flights.loc[0, "interval_note"] == "no interval below 5 years"
     assert np.isnan(few.flights.loc[0, "ci_low"])
     seasons = schedule_frames(replace(STUDY, flights=FLIGHTS[:1]), [few])["schedule_seasons"]
-    assert np.isnan(seasons.loc[0, "ci_low"]) and seasons.loc[0, "year_high"] > 0
+    assert seasons.loc[0, "affected"] > 0 and seasons.loc[0, "n_years"] == 3
+    assert seasons.loc[0, ["ci_low", "ci_high", *YEAR_COLUMNS]].isna().all()
+    assert seasons.loc[0, "interval_note"] == "no interval below 5 years"
     assert seasons.loc[2, "flights"] == 0 and np.isnan(seasons.loc[2, "affected"])
 
 
@@ -490,6 +610,121 @@ def test_field_without_a_known_hour_has_unknown_flights_only():
     assert frames["schedule_flights"]["shortfall"].isna().all()
     whole = frames["schedule_seasons"].iloc[0]
     assert whole["unknown_flights"] == whole["flights"] == 24 and np.isnan(whole["affected"])
+
+
+def test_schedule_of_unknown_flights_only_has_no_figure_anywhere(scene):
+    entry = flight("closed", "2027-07-01 2027-07-02", "04:00", repeats=3)
+    study = replace(STUDY, flights=(entry,))
+    frames = schedule_frames(study, [score_flights(scene, (entry,))])
+    row = frames["schedule_flights"].iloc[0]
+    assert (row["flights"], row["unknown_flights"], row["interval_note"]) == (6, 6, "")
+    assert NEAREST_NOT_TOLD in row["note"] and row["nearest_time"] == ""
+    assert row[["shortfall", "affected", "ci_low", "mass_that_holds_kg"]].isna().all()
+    assert frames["schedule_seasons"]["unknown_flights"].tolist() == [6, 6, 0]
+    figures = ["affected", "ci_low", "ci_high", *YEAR_COLUMNS]
+    assert frames["schedule_seasons"][figures].isna().all(axis=None)
+    assert frames["schedule_seasons"]["interval_note"].tolist() == [""] * 3
+    assert frames["schedule_days"][["affected", "share"]].isna().all(axis=None)
+    assert frames["schedule_days"]["unknown_flights"].tolist() == [3, 3]
+
+
+def test_dates_have_figures_where_the_hourly_tables_have(scene, hours_of):
+    record = Record(scene.clock, scene.known)
+    dates = np.arange("2028-01-01", "2029-01-01", dtype="datetime64[D]")
+    for hour in (4, 13):
+        found = windows(record, StandardHours(dates, np.full(len(dates), hour), 0 * hour))
+        known = [is_known(date, hour, hours_of) for date in dates.tolist()]
+        assert (found.of_date > 0).tolist() == known
+        assert all(known) is (hour == 13) and any(known)
+
+
+def test_archive_with_each_month_from_another_year_has_every_date():
+    scene, year_of_month = made_scene(error=False, missing=False), (np.arange(12) * 5) % 7
+    kept = scene.clock.year == year_of_month[scene.clock.month]
+    scene.air.temperature_c[~kept] = np.nan
+    days = " ".join(str(dt.date(2027, 6, 15) + dt.timedelta(days=n)) for n in range(93))
+    entry = flight("a", days, "14:10")
+    study = replace(STUDY, flights=(entry,))
+    scores = score_flights(scene, (entry,))
+    row, hours = scores.flights.iloc[0], entering(scene)
+    dates = counted(entry, hours, lambda _: margins(PLANE, FIELD, scene.central_air).checks[None])
+    assert row["unknown_flights"] == 0 and row["shortfall"] == pytest.approx(share_of(dates))
+    # Around every date, the ends of the months too, as many days as its months are long.
+    assert min(n.sum() for _, n, _ in dates) >= 16
+    assert row["n_years"] == 1 and row["coverage"] == pytest.approx(1 / 7)
+    assert row["interval_note"] == "no interval below 5 years" and np.isnan(row["ci_low"])
+    whole = schedule_frames(study, [scores])["schedule_seasons"].iloc[0]
+    assert whole["affected"] == pytest.approx(93 * row["shortfall"]) and whole["n_years"] == 0
+    assert whole["interval_note"] == "no interval below 5 years"
+    assert whole[["ci_low", "ci_high", *YEAR_COLUMNS]].isna().all()
+
+
+def test_expected_number_lies_between_the_best_and_the_worst_year(scene):
+    whole = made_scene(missing=False)
+    frames = schedule_frames(STUDY, [score_flights(whole, FLIGHTS)])
+    for row in frames["schedule_seasons"].to_dict("records"):
+        assert row["n_years"] == N_YEARS and row["year_low"] < row["affected"] < row["year_high"]
+    # However unevenly the flights' hours lie over the years, when all years know all flights.
+    rng, none = np.random.default_rng(3), score_flights(scene, ())
+    for _ in range(50):
+        hours = rng.dirichlet(np.full(N_YEARS, 0.5), size=4)  # of four flights in each year
+        short = hours * rng.integers(0, 2, hours.shape)
+        sums = {
+            "planned": 4.0,
+            "affected": short.sum(),
+            "drawn": np.full(risk.RESAMPLES, short.sum()),
+            "of_year": short.sum(axis=0),
+            "hours_of_year": hours.sum(axis=0),
+            "with_year": np.full(N_YEARS, 4.0),
+        }
+        score = replace(none, **{name: np.array([value] * 3) for name, value in sums.items()})
+        row = schedule_frames(STUDY, [score])["schedule_seasons"].iloc[0]
+        assert row["year_low"] - 1e-12 <= row["affected"] <= row["year_high"] + 1e-12
+
+
+def made_steady(hot_c=45.0, cool_c=-5.0, cool_hours=(), study=STUDY):
+    """A scene of one temperature but for some hours of the day."""
+    scene = made_scene(study=study, error=False, missing=False)
+    scene.air.temperature_c[:] = np.where(np.isin(scene.clock.hour, cool_hours), cool_c, hot_c)
+    return scene
+
+
+def test_nearest_time_asks_only_the_dates_with_figures():
+    # July is unknown at the flight's own hour, 13, and at the cool one, 10.
+    scene = made_steady(cool_hours=(10,))
+    july = (scene.clock.month == 6) & np.isin(scene.clock.hour, (10, 13))
+    scene.air.temperature_c[july] = np.nan
+    entry = flight("a", "2027-07-10 2027-08-20", "14:00")
+    row = score_flights(scene, (entry,)).flights.iloc[0]
+    assert (row["flights"], row["unknown_flights"], row["shortfall"]) == (2, 1, 1.0)
+    assert (row["nearest_time"], row["nearest_shift_h"], row["note"]) == ("11:00", -3, "")
+    # At an own time with figures on both dates the cool hour does not do.
+    row = score_flights(scene, (replace(entry, time=dt.time(15)),)).flights.iloc[0]
+    assert (row["unknown_flights"], row["nearest_time"], row["note"]) == (0, "", "")
+
+
+def test_nearest_time_that_cannot_be_told_is_not_none_within_reach():
+    scene, entry = made_steady(), flight("a", "2027-07-10", "14:00")
+    row = score_flights(scene, (entry,)).flights.iloc[0]
+    assert (row["nearest_time"], row["note"]) == ("", "")  # every hour falls short
+    # Only the own hour lies inside the window: there is no other time, which can be told.
+    alone = replace(scene, study=replace(STUDY, window=(13, 13)))
+    assert score_flights(alone, (entry,)).flights["note"].tolist() == [""]
+    scene.air.temperature_c[scene.clock.hour != 13] = np.nan
+    row = score_flights(replace(scene), (entry,)).flights.iloc[0]
+    assert row["shortfall"] == 1.0
+    assert (row["nearest_time"], row["note"]) == ("", NEAREST_NOT_TOLD)
+
+
+def test_nearest_time_is_none_that_clocks_skip():
+    # Clocks in Rome go from 02:00 to 03:00 on 28 March 2027, Directive 2000/84/EC: the cool
+    # hour 3 of standard time is 03:30 on the clock, and 02:30 does not exist.
+    scene = made_steady(cool_hours=(3,), study=replace(STUDY, window="all"))
+    row = score_flights(scene, (flight("a", "2027-03-28", "01:30"),)).flights.iloc[0]
+    assert (row["shortfall"], row["nearest_time"], row["nearest_shift_h"]) == (1.0, "03:30", 2)
+    dates = np.array(["2027-03-28"], "datetime64[D]")
+    assert is_skipped("Europe/Rome", dates, dt.time(1, 30), 1)
+    assert not is_skipped("Europe/Rome", dates, dt.time(1, 30), 2)
 
 
 def test_tables_that_may_hold_heavy_and_not_light_are_checked_hour_by_hour():
@@ -548,6 +783,34 @@ def reading(zone, text):
 )
 def test_clock_reading_is_the_instant_of_the_zone_database(zone, clock, utc):
     assert reading(zone, clock) == utc
+
+
+@pytest.mark.parametrize(
+    "zone", ["Europe/Rome", "Australia/Lord_Howe", "Europe/Dublin", "Asia/Kathmandu"]
+)
+def test_skipped_and_repeated_readings_are_those_no_or_two_instants_show(zone):
+    # Every quarter of an hour of 2027 as an instant, and what clocks show then.
+    start, quarter = dt.datetime(2027, 1, 1, tzinfo=dt.UTC), dt.timedelta(minutes=15)
+    instants = (start + n * quarter for n in range(-100, 365 * 96 + 100))
+    shown = Counter(i.astimezone(ZoneInfo(zone)).replace(tzinfo=None) for i in instants)
+    readings = [dt.datetime(2027, 1, 1) + n * quarter for n in range(365 * 96)]
+    seconds = np.array(readings, "datetime64[s]").astype("int64")
+    jumps = skipped_s(zone, seconds)
+    times = np.array([shown[reading] for reading in readings])
+    np.testing.assert_array_equal(np.sign(jumps), 1 - times)
+    changes = 0 if zone == "Asia/Kathmandu" else 2 if zone == "Australia/Lord_Howe" else 4
+    assert (jumps > 0).sum() == (jumps < 0).sum() == changes
+    # The reading taken in place of a skipped one.
+    for i in np.flatnonzero(jumps > 0):
+        taken = dt.datetime.fromtimestamp(int(instants_s(zone, seconds[[i]])[0]), ZoneInfo(zone))
+        assert (taken.replace(tzinfo=None) - readings[i]).total_seconds() == jumps[i]
+
+
+def test_half_an_hour_skipped_is_told_as_such():
+    dates = np.array(["2027-10-02", "2027-10-03"], "datetime64[D]")
+    assert odd_readings("Australia/Lord_Howe", dates, dt.time(2, 15)) == [
+        "02:15 does not exist on 2027-10-03; the reading 30 minutes later is taken"
+    ]
 
 
 @pytest.mark.parametrize(

@@ -452,3 +452,9 @@ def test_a_planning_value_out_of_its_range_is_refused(study_folder, key):
 def test_a_schedule_that_is_not_there_is_told(study_folder):
     study = changed(study_folder, "[period]", 'schedule = "flights.csv"\n[period]')
     assert "flights.csv" in only_problem(study, "flights.csv")
+
+
+@pytest.mark.parametrize("year", [-5, 0, 1799, 2201, 99999])
+def test_a_planning_year_of_the_call_out_of_range_is_refused(study_folder, year):
+    with pytest.raises(InputError, match=f"planning year {year}: a year from 1800 to 2200"):
+        read_study(study_folder().file, year=year)

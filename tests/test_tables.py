@@ -31,6 +31,8 @@ RISK = (
     "hours_offered,usable_hours"
 )
 NEAR_SATURATION = "n_hours,n_years,coverage,share_1k,share_2_5k"
+WEIGHTS = "n_hours,n_years,coverage,holds_in,mass_kg,useful_load_kg,outcome,never_met"
+ICING = "n_hours,n_years,coverage,method,verified,band,share"
 COLUMNS = {
     "distributions_monthly.csv": f"field,variable,unit,month,{STATISTICS}",
     "distributions_hourly.csv": f"field,variable,unit,month,hour,{STATISTICS}",
@@ -43,6 +45,22 @@ COLUMNS = {
     "near_saturation_monthly.csv": f"field,month,{NEAR_SATURATION}",
     "near_saturation_hourly.csv": f"field,month,hour,{NEAR_SATURATION}",
     "near_saturation_seasonal.csv": f"field,season,{NEAR_SATURATION}",
+    "weights_monthly.csv": f"field,aircraft,month,{WEIGHTS},ci_low_kg,ci_high_kg,interval_note",
+    "weights_hourly.csv": f"field,aircraft,month,hour,{WEIGHTS}",
+    "weights_seasonal.csv": f"field,aircraft,season,{WEIGHTS},ci_low_kg,ci_high_kg,interval_note",
+    "windows_monthly.csv": "field,aircraft,month,target,hours,n_clock_hours,first_hour,last_hour,"
+    "clock_first,clock_last,clock_hours,hours_without_figures,daylight_hours,usable_hours,"
+    "usable_low,usable_high,run_hours,days_with_run,n_years,coverage,interval_note",
+    "icing_monthly.csv": f"field,month,{ICING}",
+    "icing_hourly.csv": f"field,month,hour,{ICING}",
+    "power_monthly.csv": "field,aircraft,month,n_hours,n_years,coverage,method,power_p10,power_p50,"
+    "power_p90,optimistic_p50,humidity_power_pct_p50,humidity_power_pct_p90,humidity_ft_p50,"
+    "humidity_ft_p90",
+    "bases.csv": "rank,field,aircraft,usable_hours_month,ci_low,ci_high,year_p10,year_p90,"
+    "worst_season,worst_season_hours_month,days_with_run,share_1k,share_2_5k,icing_serious,n_years,"
+    "interval_note,steep",
+    "base_differences.csv": "first,second,aircraft,difference_hours_month,ci_low,ci_high,"
+    "interval_note",
     "trends.csv": "field,aircraft,season,statistic,unit,n_years,first_year,last_year,"
     "slope_per_decade,ci_low,ci_high,p_value,significant,break_year,break_p_value",
     "extremes.csv": "field,n_years,return_period_years,density_altitude_ft,ci_low,ci_high",
@@ -254,6 +272,19 @@ def test_intervals_are_empty_below_five_years(written):
     # METHODS D6 by the work order: intervals resample whole years, empty below 5 years.
     for row in rows(written, "risk_monthly.csv"):
         assert (row["ci_low"], row["ci_high"]) == ("", "")
+
+
+def test_csv_text_promises_no_mass_that_was_not_found_to_hold():
+    masses = [716.3, 1180.4284, 1104.32599, 790.0, np.nan]
+    table = pd.DataFrame({"mass_kg": masses, "ci_low_kg": masses, "ci_high_kg": masses})
+    lines = csv_text(table).splitlines()[1:]
+    assert lines == [
+        "716.3,716.3,716.3",
+        "1180.428,1180.428,1180.429",
+        "1104.325,1104.325,1104.326",
+        "790.0,790.0,790.0",
+        ",,",
+    ]
 
 
 def test_csv_text_writes_empty_for_nan_and_no_negative_zero():

@@ -23,6 +23,7 @@ from climarisk.fields import SURFACES, Field, RunwayDirection
 from climarisk.largest_mass import largest_mass
 from climarisk.performance import CHECKS, Margins, TableAir, density_ratio, margins
 from climarisk.region import region_of
+from climarisk.reporting import lighter_gaps
 from climarisk.risk import RESAMPLES, Hours, expanded_tail, level_weights, risk_tables, year_weights
 from climarisk.scene import scene_of, scored
 from climarisk.seasons import Season
@@ -713,8 +714,8 @@ def test_interval_says_which_bound_cannot_be_met():
         told = re.sub("^fewer than 10 years(; )?", "", row["interval_note"])
         words = {
             0: "",
-            1: "lower bound cannot be met at any tabulated mass",
-            2: "neither bound can be met at any tabulated mass",
+            1: "the lower end cannot be met at any tabulated mass",
+            2: "both ends of the interval cannot be met at any tabulated mass",
         }
         unmet = int(low == -np.inf) + int(high == -np.inf)
         assert told == words[unmet]
@@ -762,3 +763,32 @@ def test_a_study_holds_at_its_planning_mass_exactly_where_nothing_falls_short(tm
             np.testing.assert_array_equal(hours.masses < profile.planning_kg, short)
             carried += len(risk.levels)
     assert carried
+
+
+def lighter_blank(heavy, light):
+    """Return whether a lighter table says nothing where a heavier one has figures."""
+    axes = np.array([0.0, 4000.0]), np.array([0.0, 30.0])
+    tables = [
+        PerformanceTable(mass, *axes, {"distance_50ft_m": np.array(grid)})
+        for mass, grid in ((700.0, light), (800.0, heavy))
+    ]
+    return lighter_gaps(tables)
+
+
+def test_blank_in_a_lighter_table_is_told_and_a_blank_in_a_heavier_one_is_natural():
+    full = [[300.0, 400.0], [400.0, 550.0]]
+    blank = [[300.0, 400.0], [400.0, np.nan]]
+    assert lighter_blank(heavy=full, light=blank)
+    assert not lighter_blank(heavy=blank, light=full)
+    assert not lighter_blank(heavy=full, light=full)
+    assert not lighter_blank(heavy=blank, light=blank)
+
+
+def test_lighter_table_that_ends_before_a_heavier_one_is_told():
+    values = {"distance_50ft_m": np.full((2, 2), 300.0)}
+    short = PerformanceTable(700.0, np.array([0.0, 4000.0]), np.array([0.0, 30.0]), values)
+    longer = PerformanceTable(800.0, np.array([0.0, 8000.0]), np.array([0.0, 30.0]), values)
+    assert lighter_gaps([short, longer])
+    assert not lighter_gaps([replace(longer, mass_kg=700.0), replace(short, mass_kg=800.0)])
+    assert not lighter_gaps([short])
+    assert not lighter_gaps([])

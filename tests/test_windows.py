@@ -19,7 +19,14 @@ from climarisk.results import WINDOWS_MONTHLY_COLUMNS
 from climarisk.risk import Hours, risk_tables
 from climarisk.seasons import Season
 from climarisk.study import Planning
-from climarisk.windows import clock_text, day_start, days_with_run, hour_ranges, window_table
+from climarisk.windows import (
+    clock_ranges,
+    clock_text,
+    day_start,
+    days_with_run,
+    hour_ranges,
+    window_table,
+)
 
 YEAR = frozenset((m, d) for m in range(1, 13) for d in range(1, monthrange(2020, m)[1] + 1))
 ALL_YEAR = Season("year", YEAR)
@@ -458,3 +465,27 @@ def test_more_hours_in_a_row_are_never_had_on_more_days():
     assert (np.diff(shares, axis=0) <= 0).all()
     assert (days_with_run(moved, 4) <= 1.0).all()
     assert scene.clock is hours.clock
+
+
+def test_ranges_by_the_clock_leave_the_gaps_open():
+    # European Union summer time: Directive 2000/84/EC, last Sundays of March and October.
+    assert clock_ranges("Europe/Paris", 2027, 7, "04-12 18-20") == "05:00-13:00 19:00-21:00"
+    assert clock_ranges("Europe/Paris", 2027, 1, "08 10-12") == "08:00 10:00-12:00"
+    assert clock_ranges("Europe/Paris", 2027, 3, "06-17") == "06:00-17:00 / 07:00-18:00"
+    assert clock_ranges("Australia/Lord_Howe", 2027, 1, "22-03") == "22:30-03:30"
+    assert clock_ranges("Asia/Kathmandu", 2027, 1, "06-17") == "06:00-17:00"
+    assert clock_ranges("Europe/Paris", 2027, 1, "") == ""
+
+
+def test_ranges_by_the_clock_hold_where_the_clocks_change_on_the_first_of_the_month():
+    # 1 November 2026 is the first Sunday (Energy Policy Act of 2005, section 110).
+    shown = clock_ranges("America/Denver", 2026, 11, "00-05")
+    assert shown == "01:00-06:00 / 00:00-05:00"
+
+
+def test_clock_ranges_of_the_table_are_those_of_its_hours():
+    scene, hours = case((6, 20), weather)
+    table, _, _ = table_of(scene, hours)
+    for row in table.itertuples():
+        assert row.clock_hours == clock_ranges(scene.field.timezone, 2027, row.month, row.hours)
+    assert (table["clock_hours"] != "").any()

@@ -11,7 +11,7 @@ from climarisk.outputs.bases_tables import (
     View,
     aircraft_table,
     fleet_text,
-    gap_words,
+    icing_words,
     interval_words,
     month_table,
     pair_table,
@@ -19,15 +19,20 @@ from climarisk.outputs.bases_tables import (
     percent,
     ranking_table,
     scale_of,
-    span,
 )
-from climarisk.outputs.report.style import paper_page, style
-from climarisk.outputs.report.words import Html, count_text, el, given, hours_text, isolated
+from climarisk.outputs.report.key import steep_item
+from climarisk.outputs.report.style import paper_page, report_text, style
+from climarisk.outputs.report.words import Html, count_text, el, given
 from climarisk.outputs.texts import (
     CAUTIONS,
+    ICING_SERIOUS,
     NO_DATA,
     band_labels,
+    gap_interval,
+    gap_text,
     grouped,
+    hours_text,
+    told_apart,
     window_text,
 )
 from climarisk.results import StudyResult
@@ -37,24 +42,6 @@ from climarisk.rules import YEARS
 _BESIDE = 5
 #: Of more ranked fields than this the page shows the best and the next against each other only.
 _ALL_SHOWN = 6
-_STYLE = """
-.bases .field { width: 20%; }
-.bases .wide { width: 19%; }
-.bases td b { font-size: 0.86rem; }
-.bases td small { display: block; color: var(--quiet); }
-.bases .place small { text-indent: 0; }
-.bases .none, .pairs .none { color: var(--quiet); }
-.range { max-width: 11rem; margin-top: 0.15rem; }
-.range .in-years { fill: #fed98e; }
-.range .in-interval { fill: #6b5a3a; }
-.range .figure { fill: #1d2327; }
-.pairs { table-layout: fixed; min-width: 40rem; }
-.pairs thead th:first-child { width: 34%; }
-.pairs .open { color: var(--quiet); }
-.heat .field { width: 22%; }
-td.shut small { white-space: normal; }
-.shut { color: var(--quiet); }
-"""
 
 
 def render_bases(result: StudyResult) -> str:
@@ -71,7 +58,7 @@ def render_bases(result: StudyResult) -> str:
         A complete HTML document that needs no other file and no network and holds no script.
     """
     view = View(result)
-    look = style(result.title, len(view.edges) + 1) + _STYLE
+    look = style(result.title, len(view.edges) + 1) + report_text("bases.css")
     sections = [_overview(view), _parts(view), _differences(view), _method(view)]
     return paper_page(f"Bases: {result.title}", look, sections)
 
@@ -90,15 +77,15 @@ def difference_sentence(first: str, second: str, row: Mapping[str, Any], confide
     Returns
     -------
     str
-        Such as ``A beats B by 21 h a month (90 %: 12 to 30).``; hours are rounded so that no
-        difference looks larger or surer than it is.
+        Such as ``A beats B by 21 h a month (90 %: 12 to 30).``; whether they are told apart goes by
+        the unrounded interval.
     """
-    gap = f"{gap_words(row['difference_hours_month'])} a month"
+    gap = f"{gap_text(row['difference_hours_month'])} a month"
     low, high = row["ci_low"], row["ci_high"]
     if math.isnan(low) or math.isnan(high):
         return f"{first} has {gap} more than {second}; too few years for an interval."
-    told = f"({percent(confidence)}: {span(low, high, ' to ')})"
-    if low > 0.0:
+    told = f"({percent(confidence)}: {gap_interval(low, high)})"
+    if told_apart(low, high):
         return f"{first} beats {second} by {gap} {told}."
     return f"{first} and {second} are not told apart: {gap} {told}."
 
@@ -152,7 +139,7 @@ def _fleet_sentence(view: View, ranked: Sequence[str]) -> list[object]:
     pairs = pairs_of(view)
     for first, second in zip(ranked[:3], ranked[1:3], strict=False):
         row = pairs[first, second][""]
-        better, other = (isolated(view.names[row[side]]) for side in ("first", "second"))
+        better, other = (view.told(row[side]) for side in ("first", "second"))
         parts += [" ", difference_sentence(better, other, row, view.confidence)]
     return parts
 
@@ -166,7 +153,7 @@ def _best_sentence(view: View, aircraft: str) -> list[object]:
     most = max(figures.values())
     best = [f for f, hours in figures.items() if hours == most]
     row = view.rows[best[0], aircraft]
-    who: list[object] = [given(view.names[best[0]])]
+    who: list[object] = [*view.called(best[0])]
     if len(best) > 1:
         who.append(f" and {count_text(len(best) - 1, 'other field')}")
     have = " has" if len(best) == 1 else " have"
@@ -176,7 +163,7 @@ def _best_sentence(view: View, aircraft: str) -> list[object]:
 def _ranking_key(view: View, run: int) -> Html:
     low, high = (grouped(end) for end in scale_of(view))
     years = YEARS.settled_interval
-    few = any(r["n_years"] < years and r["ci_low"] >= 0.0 for r in view.rows.values())
+    few = any(r["n_years"] < years and not math.isnan(r["ci_low"]) for r in view.rows.values())
     items = [
         f"Scale: {low} to {high} h; mark: the figure; dark: its interval; pale: single years, one "
         "in ten is below and one above.",
@@ -186,20 +173,15 @@ def _ranking_key(view: View, run: int) -> Html:
         f"A field with a month of {NO_DATA} has no rank: {NO_DATA} is not the same as no risk.",
         *_icing_words(view),
     ]
-    return el("ul", [el("li", text) for text in items], class_="key")
+    steep = [steep_item()] if any(view.steep(field) for field in view.order) else []
+    return el("ul", [el("li", text) for text in items], steep, class_="key")
 
 
 def _icing_words(view: View) -> list[str]:
     """How far the icing figures can be trusted, where there are any."""
-    frame = view.result.icing_monthly
-    if not any(a.carburettor for a in view.result.aircraft) or not len(frame):
-        return []
-    text = "Carburettor icing: share of the daylight hours in which it is serious even in cruise; "
-    if frame["method"].iloc[0] == "physical":
-        return [text + "by a physical screening, not a published chart."]
-    if frame["verified"].iloc[0] == "yes":
-        return [text + "by the zones of a chart, verified."]
-    return [text + "by the zones of a chart that are not verified against its publication."]
+    basis = icing_words(view)
+    text = "Carburettor icing: share of the daylight hours in which it is"
+    return [f"{text} {ICING_SERIOUS}; {basis}."] if basis else []
 
 
 def _parts(view: View) -> Html | None:
@@ -299,7 +281,8 @@ def _method(view: View) -> Html:
         "Near saturation: hours of the window whose temperature is at most 1 K, 2.5 K above the "
         "dew point, where fog and low cloud become likely; wind and cloud base are not known.",
         *_icing_words(view),
-        "Hours are rounded down, intervals outwards. bases.csv holds the unrounded figures.",
+        "Usable hours and shares of days are rounded down, differences to the nearest, intervals "
+        "outwards. bases.csv holds the unrounded figures.",
     ]
     return el(
         "section",

@@ -13,24 +13,35 @@ import pandas as pd
 
 from climarisk.bases import fleet_weights
 from climarisk.outputs.colours import MOST_EDGES
+from climarisk.outputs.report.tables import STEEP_MARK
 from climarisk.outputs.report.words import (
     Html,
     count_text,
     el,
     given,
-    hours_text,
+    isolated,
     number,
-    own_share_text,
     scroll,
 )
 from climarisk.outputs.texts import (
+    ICING_SERIOUS,
     MONTH_NAMES,
     MONTHS,
     NO_DATA,
+    STEEP_TAIL,
     aircraft_labels,
     band_of,
     field_labels,
+    gap_interval,
+    gap_text,
+    good_share_text,
     grouped,
+    hours_interval,
+    hours_text,
+    icing_basis,
+    told_apart,
+    whole_down,
+    whole_up,
 )
 from climarisk.results import StudyResult
 from climarisk.rules import YEARS
@@ -40,6 +51,8 @@ _LEFT, _RIGHT, _HIGH = 3.0, 117.0, 14.0
 #: In place of a rank.
 NO_RANK = "\N{EN DASH}"
 MINUS = "\N{MINUS SIGN}"
+#: In place of an interval whose ends are the figure.
+NO_SPREAD = "no spread"
 _NO_CELL = el("td", NO_DATA, class_="none")
 #: Differences by pair of fields in the order of the ranking, then by aircraft.
 Pairs = Mapping[tuple[str, str], Mapping[str, Mapping[str, Any]]]
@@ -103,6 +116,18 @@ class View:
                 usable[place] += part * row.usable_hours
         return months
 
+    def steep(self, field: str) -> bool:
+        """Whether no figure of a field is a pass."""
+        return bool(self.rows[field, ""]["steep"] == "yes")
+
+    def called(self, field: str) -> tuple[Html, str]:
+        """The name of a field, steepness told."""
+        return given(self.names[field]), STEEP_TAIL if self.steep(field) else ""
+
+    def told(self, field: str) -> str:
+        """The same as plain text."""
+        return isolated(self.names[field]) + (STEEP_TAIL if self.steep(field) else "")
+
     def ranked(self) -> list[str]:
         """Ids of the fields with a figure for the fleet, the best first."""
         return [f for f in self.order if self.known(f, "")]
@@ -117,24 +142,14 @@ def percent(share: float) -> str:
     return f"{round(share * 100, 2):g} %"
 
 
-def span(low: float, high: float, between: str = "-") -> str:
-    """An interval in whole hours, as wide as they leave it."""
-    return f"{grouped(math.floor(low + 1e-9))}{between}{grouped(math.ceil(high - 1e-9))}"
-
-
-def gap_words(hours: float) -> str:
-    """A difference of 0 or more in whole hours, rounded down: never larger than it is."""
-    if 0.0 < hours < 1.0 - 1e-9:
-        return "less than 1 h"
-    return f"{grouped(math.floor(hours + 1e-9))} h"
-
-
 def interval_words(row: Mapping[str, Any]) -> str:
     """An interval in whole hours, with a star where it rests on few years."""
     if math.isnan(row["ci_low"]) or math.isnan(row["ci_high"]):
         return f"no interval, {count_text(int(row['n_years']), 'year')}"
     star = "*" if row["n_years"] < YEARS.settled_interval else ""
-    return span(row["ci_low"], row["ci_high"]) + star
+    ends = hours_interval(row["ci_low"], row["ci_high"])
+    # Always unusable, or always usable: the interval is the figure.
+    return (ends if "-" in ends else NO_SPREAD) + star
 
 
 def _gaps(view: View, field: str) -> str:
@@ -162,19 +177,29 @@ def _head(view: View, field: str) -> Html:
     shown = NO_RANK if pd.isna(rank) else str(int(rank))
     name = given(view.names[field])
     label = el("span", el("span", shown, class_="no"), " ", name, class_="label")
-    return el("th", label, scope="row", class_="place")
+    mark = [" ", el("small", STEEP_MARK, class_="mark")] if view.steep(field) else []
+    return el("th", label, mark, scope="row", class_="place")
+
+
+def icing_words(view: View) -> str:
+    """What the shares of carburettor icing rest on; empty where there are none."""
+    frame = view.result.icing_monthly
+    if frame.empty or not any(a.carburettor for a in view.result.aircraft):
+        return ""
+    return icing_basis(str(frame["method"].iloc[0]), str(frame["verified"].iloc[0]))
 
 
 def ranking_table(view: View, run: int) -> Html:
     """The fields by rank with what else counts for the fleet."""
+    basis = icing_words(view)
     heads = (
         ("Rank, field", "field"),
         (f"Usable hours a month, {percent(view.confidence)} interval", "wide"),
-        ("Single years: 1 in 10 below - above", None),
+        ("Single years, 10th to 90th percentile", None),
         ("Worst season, hours a month", None),
         (f"Days with {run} h in a row", None),
         ("Hours within 1 K; 2.5 K of dew point", None),
-        ("Icing serious even in cruise", None),
+        (f"Icing {ICING_SERIOUS}" + (f" ({basis})" if basis else ""), None),
     )
     scale = scale_of(view)
     rows = [el("tr", _ranking_row(view, field, scale)) for field in view.order]
@@ -193,7 +218,7 @@ def _ranking_row(view: View, field: str, scale: tuple[int, int]) -> list[object]
     head = _head(view, field)
     if view.known(field, ""):
         years = (row["year_p10"], row["year_p90"])
-        spread = "too few years" if math.isnan(years[0]) else span(*years)
+        spread = "too few years" if math.isnan(years[0]) else hours_interval(*years)
         cells = [
             el(
                 "td",
@@ -221,8 +246,8 @@ def _season_cell(row: Mapping[str, Any]) -> Html:
 
 
 def _days(row: Mapping[str, Any]) -> str:
-    """Share of days with a run of usable hours; nothing below all is shown as all."""
-    return own_share_text(float(row["days_with_run"]))
+    """Share of days with a run of usable hours, rounded down."""
+    return good_share_text(float(row["days_with_run"]))
 
 
 def _share(share: float) -> str:
@@ -244,7 +269,7 @@ def scale_of(view: View) -> tuple[int, int]:
     rows = [view.rows[f, ""] for f in view.order]
     names = ("usable_hours_month", "ci_low", "ci_high", "year_p10", "year_p90")
     known = [row[name] for row in rows for name in names if not math.isnan(row[name])]
-    low, high = math.floor(min(known, default=0.0)), math.ceil(max(known, default=1.0))
+    low, high = whole_down(min(known, default=0.0)), whole_up(max(known, default=1.0))
     return low, max(high, low + 1)
 
 
@@ -343,17 +368,15 @@ def _month_cells(view: View, field: str) -> list[Html]:
             cells.append(_NO_CELL)
         else:
             band = band_of(max(0.0, 1.0 - usable / offered), view.edges)
-            below = el("small", f"of {grouped(math.floor(offered))}")
-            cells.append(
-                el("td", grouped(math.floor(usable + 1e-9)), " ", below, class_=f"b{band}")
-            )
+            below = el("small", f"of {grouped(whole_down(offered))}")
+            cells.append(el("td", grouped(whole_down(usable)), " ", below, class_=f"b{band}"))
     return cells
 
 
 def _mean_cell(view: View, field: str) -> Html:
     if not view.known(field, ""):
         return _NO_CELL
-    return el("td", el("b", grouped(math.floor(view.rows[field, ""]["usable_hours_month"] + 1e-9))))
+    return el("td", el("b", grouped(whole_down(view.rows[field, ""]["usable_hours_month"]))))
 
 
 def pairs_of(view: View) -> dict[tuple[str, str], dict[str, dict[str, Any]]]:
@@ -377,7 +400,7 @@ def pair_table(
     heads += [el("th", given(view.planes[a]) if a else "Fleet", scope="col") for a in columns]
     rows = []
     for (one, other), by_aircraft in pairs.items():
-        names = [given(view.names[one]), " against ", given(view.names[other])]
+        names = [*view.called(one), " against ", *view.called(other)]
         cells = [_pair_cell(one, by_aircraft.get(a)) for a in columns]
         rows.append(el("tr", el("th", names, scope="row"), cells))
     caption = "Usable hours a month, difference"
@@ -394,15 +417,15 @@ def pair_table(
 def _pair_cell(one: str, row: Mapping[str, Any] | None) -> Html:
     if row is None:
         return _NO_CELL
-    sign = 1.0 if row["first"] == one else -1.0
-    shown, hours = gap_words(row["difference_hours_month"]), row["difference_hours_month"]
+    sign, hours = 1.0 if row["first"] == one else -1.0, row["difference_hours_month"]
+    shown = gap_text(hours)
     if hours > 0.0:
         mark = "+" if sign > 0.0 else MINUS
-        shown = f"up to {mark}1 h" if shown.startswith("less") else f"{mark}{shown}"
+        shown = f"up to {mark}0.1 h" if shown.startswith("<") else f"{mark}{shown}"
     if math.isnan(row["ci_low"]):
         return el("td", f"{shown} ", el("small", "no interval"))
-    low, high = sorted((sign * row["ci_low"], sign * row["ci_high"]))
-    open_ = row["ci_low"] <= 0.0
-    below = el("small", span(low, high, " to "), ", not told apart" if open_ else "")
-    value = f"{shown} " if open_ else (el("b", shown), " ")
-    return el("td", value, below, class_="open" if open_ else None)
+    apart = told_apart(row["ci_low"], row["ci_high"])
+    ends = gap_interval(*sorted((sign * row["ci_low"], sign * row["ci_high"])))
+    told = [ends if " to " in ends else NO_SPREAD, *([] if apart else ["not told apart"])]
+    value = (el("b", shown), " ") if apart else f"{shown} "
+    return el("td", value, el("small", ", ".join(told)), class_=None if apart else "open")

@@ -36,6 +36,10 @@ _SHARE_COLUMNS = ("shortfall", "ci_low", "ci_high", "outside_table", "days_affec
 _CENTRAL_DIFFERENCE = 0.01
 #: The lowest margin that is sent, per cent; the highest is 254 above it.
 _LOWEST_MARGIN_PCT = -100
+#: Stands for a share of something good that is above none and below 1 %.
+BELOW_ONE = 101
+#: Takes back the error of a product of floats: 0.29 * 100 is below 29.
+SLACK = 1e-9
 
 _Arrays = dict[str, list[str]]
 
@@ -70,6 +74,23 @@ def axis_values(frame: pd.DataFrame, column: str) -> list[str]:
 def scenario_names(result: StudyResult) -> list[str]:
     """Names of the variants, where there are any."""
     return [] if result.scenarios is None else axis_values(result.scenarios, "scenario")
+
+
+def good_share_codes(values: pd.Series) -> np.ndarray:
+    """Shares of something good in whole per cent, rounded down; only exactly all is 100.
+
+    `BELOW_ONE` stands for a share above none and below 1 %, `NO_BYTE` for none known.
+
+    Parameters
+    ----------
+    values : Series
+        0-1.
+    """
+    share = floats(values).to_numpy()
+    whole = np.floor(np.where(np.isnan(share), 0.0, share) * 100.0 + SLACK)
+    whole = np.where(share < 1.0, np.minimum(whole, 99.0), whole)
+    whole = np.where((share > 0.0) & (whole == 0.0), BELOW_ONE, whole)
+    return np.where(np.isnan(share), NO_BYTE, whole).astype("u1")
 
 
 def _field_ids(result: StudyResult) -> dict[str, Sequence[Any]]:

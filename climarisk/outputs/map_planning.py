@@ -12,10 +12,17 @@ import numpy as np
 import pandas as pd
 
 from climarisk.aircraft import AircraftProfile
+from climarisk.bases import ALL_PAIRS
 from climarisk.icing import LABELS, serious_in_cruise
-from climarisk.outputs.map_arrays import HOURS, MONTHS, by_time, cells
-from climarisk.outputs.map_overviews import (
+from climarisk.outputs.map_arrays import (
+    HOURS,
+    MONTHS,
     SLACK,
+    by_time,
+    cells,
+    good_share_codes,
+)
+from climarisk.outputs.map_overviews import (
     base_seasons,
     bases_arrays,
     difference_arrays,
@@ -50,7 +57,7 @@ def planning_arrays(result: StudyResult, levels: np.ndarray, notes: Sequence[str
         Notes of the intervals, sent as their places in it.
     """
     note = {text: number for number, text in enumerate(notes)}
-    made = _weight_arrays(result, levels, note) | _window_arrays(result, levels, note)
+    made = _weight_arrays(result, levels, note) | _window_arrays(result, note)
     made |= _icing_arrays(result, levels) | _power_arrays(result)
     return made | bases_arrays(result, levels) | difference_arrays(result)
 
@@ -65,7 +72,6 @@ def planning_entries(result: StudyResult, rows: _Rows) -> dict[str, Any]:
         Makes the rows of a table, texts as their numbers.
     """
     asked = result.settings.get("planning", {})
-    pairs, n_pairs = difference_pairs(result)
     return {
         "target": float(asked.get("target", 0.05)),
         "holdsIn": float(asked.get("holds_in", 0.9)),
@@ -73,13 +79,14 @@ def planning_entries(result: StudyResult, rows: _Rows) -> dict[str, Any]:
         "year": asked.get("year"),
         "fleet": [float(asked.get("fleet", {}).get(a.id, 1.0)) for a in result.aircraft],
         "hasWeights": not result.weights_monthly.empty,
-        "clocks": clock_words(result),
+        "windowHours": _window_words(result, "hours"),
+        "windowClocks": _window_words(result, "clock_hours"),
         "icing": _icing_entry(result.icing_monthly),
         "engines": _engine_methods(result),
         "hasBases": not result.bases.empty,
         "baseSeasons": base_seasons(result.bases),
-        "pairs": pairs,
-        "allPairs": n_pairs,
+        "pairs": difference_pairs(result),
+        "allPairs": ALL_PAIRS,
         "schedule": schedule_entry(result, rows),
     }
 
@@ -182,40 +189,24 @@ def _top_load(result: StudyResult, profile: AircraftProfile) -> float:
 # Windows
 
 
-def hours_of(text: str) -> list[int]:
-    """The hours of the day in a text such as ``06-10 18``."""
-    hours: list[int] = []
-    for part in text.split():
-        first, _, last = part.partition("-")
-        hours += range(int(first), int(last or first) + 1)
-    return hours
+def _window_words(result: StudyResult, column: str) -> list[str]:
+    """The different texts of a column of the windows, told once; empty where no hour works."""
+    return sorted({str(text) for text in result.windows_monthly[column].dropna()})
 
 
-def clock_words(result: StudyResult) -> list[str]:
-    """The different civil clock times of the windows."""
-    both = pd.concat([result.windows_monthly["clock_first"], result.windows_monthly["clock_last"]])
-    return sorted({str(text) for text in both.dropna()} - {""})
-
-
-def _window_arrays(result: StudyResult, levels: np.ndarray, note: Mapping[str, int]) -> _Arrays:
+def _window_arrays(result: StudyResult, note: Mapping[str, int]) -> _Arrays:
     ids = [profile.id for profile in result.aircraft]
     axes = {"field": field_ids(result), "aircraft": ids, "month": MONTHS}
     table = cells(result.windows_monthly, axes)
-    bits = np.zeros((len(table), len(HOURS)), bool)
-    for row, text in enumerate(table["hours"]):
-        if isinstance(text, str):
-            bits[row, hours_of(text)] = True
-    clock = {text: number for number, text in enumerate(clock_words(result))}
+    known = table["n_clock_hours"].notna()
     made = {
-        # Byte by byte of all cells: like stands beside like.
-        "clock_bits": packed(np.packbits(bits, axis=1).T.copy()),
-        "clock_count": packed(counts(table["n_clock_hours"])),
         "clock_unknown": packed(counts(table["hours_without_figures"])),
-        "run_days": packed(share_codes(table["days_with_run"], levels)),
+        "run_days": packed(good_share_codes(table["days_with_run"])),
         "daylight_note": packed(counts(table["interval_note"].map(note))),
     }
-    for end in ("first", "last"):
-        made[f"clock_{end}"] = packed(counts(table[f"clock_{end}"].map(clock)))
+    for column in ("hours", "clock_hours"):
+        place = {text: number for number, text in enumerate(_window_words(result, column))}
+        made[f"window_{column}"] = packed(words(table[column].map(place).where(known)))
     for name in ("daylight_hours", "usable_hours", "usable_low"):
         made[f"daylight_{name}"] = packed(words(table[name]))
     made["daylight_usable_high"] = packed(words(np.ceil(floats(table["usable_high"]))))
@@ -235,7 +226,6 @@ def _icing_entry(monthly: pd.DataFrame) -> dict[str, Any] | None:
         "method": method,
         "verified": str(monthly["verified"].iloc[0]),
         "bands": [LABELS.get(band, band) for band in bands],
-        "serious": [LABELS[band] for band in serious_in_cruise(method)],
     }
 
 

@@ -14,17 +14,20 @@ import pandas as pd
 
 from climarisk.aircraft import AircraftProfile
 from climarisk.fields import Field
+from climarisk.outputs.report.key import steep_item
 from climarisk.outputs.report.style import paper_page, style
 from climarisk.outputs.report.words import Html, count_text, el, given, join, scroll, unbroken
 from climarisk.outputs.report.worst import interval_words
 from climarisk.outputs.schedule_words import (
     SchedulePage,
-    flights_text,
+    count_words,
+    field_words,
     flown_words,
     holding_words,
+    is_steep,
     nearest_words,
-    number_text,
-    numbers_text,
+    note_words,
+    place_cell,
     remedy,
     span_text,
     unknown_of,
@@ -33,8 +36,11 @@ from climarisk.outputs.schedule_words import (
 from climarisk.outputs.texts import (
     CAUTIONS,
     NO_DATA,
+    affected_text,
     band_labels,
     band_of,
+    flights_interval,
+    flights_text,
     grouped,
     share_text,
 )
@@ -96,7 +102,7 @@ def _overview(page: SchedulePage) -> Html:
         el("p", _spread(page), class_="lead"),
         el("p", el("b", "Caution. "), CAUTIONS[0], class_="caution"),
         el("div", _look_first(page), _worst_days(page), class_="two"),
-        el("h2", "Flights that can never be met"),
+        el("h2", "Flights that can never be met at the mass planned"),
         _never(page),
         el("h2", "By season"),
         _seasons(page),
@@ -111,23 +117,24 @@ def _headline(page: SchedulePage) -> Html:
         return join([f"None of the {count_text(int(row['flights']), 'flight')} has figures."])
     known = int(row["flights"]) - int(row["unknown_flights"])
     words = [f"Of {count_text(known, 'flight')}", " with figures" if unknown_of(row) else ""]
-    return join([*words, " about ", el("b", number_text(row["affected"])), " would fall short."])
+    return join([*words, " about ", el("b", flights_text(row["affected"])), " would fall short."])
 
 
 def _spread(page: SchedulePage) -> list[object]:
     row, told = page.whole, []
     if not pd.isna(row["ci_low"]):
+        ends = flights_interval(row["ci_low"], row["ci_high"])
         told.append(
-            f"{page.confidence} interval {numbers_text(row['ci_low'], row['ci_high'])}, with all "
-            "flights sharing the weather of the same years. "
+            f"{page.confidence} interval {ends}, with all flights sharing the weather of the same "
+            "years. "
         )
     elif not pd.isna(row["affected"]):
         told.append("Too few years for an interval. ")
     if not pd.isna(row["year_low"]):
         worst = "" if pd.isna(row["worst_year"]) else f", {int(row['worst_year'])}"
         told.append(
-            f"In the best year of the record {number_text(row['year_low'])}, in the worst{worst}, "
-            f"{number_text(row['year_high'])}. "
+            f"In the best year of the record {flights_text(row['year_low'])}, in the worst{worst}, "
+            f"{flights_text(row['year_high'])}. "
         )
     if unknown_of(row):
         told.append(
@@ -146,9 +153,8 @@ def _look_first(page: SchedulePage) -> Html:
             el("h3", given(row["flight"])),
             el(
                 "p",
-                given(page.names["field " + row["field"]]),
-                f" {row['clock_time']}: about {number_text(row['affected'])} of "
-                f"{grouped(int(row['flights']))}, {row['limiting']}. ",
+                field_words(page, row),
+                f" {row['clock_time']}: about {affected_text(row)}, {row['limiting']}. ",
                 remedy(page, row),
             ),
         )
@@ -165,8 +171,8 @@ def _worst_days(page: SchedulePage) -> Html:
         el(
             "tr",
             el("th", unbroken(str(row["date"])), f" {str(row['weekday'])[:3]}", scope="row"),
-            el("td", flights_text(row)),
-            el("td", number_text(row["affected"])),
+            el("td", count_words(row)),
+            el("td", flights_text(row["affected"])),
             el("td", share_text(row["share"])),
         )
         for row in days[days["affected"] > 0].head(MOST_DAYS).to_dict("records")
@@ -188,7 +194,9 @@ def _never(page: SchedulePage) -> Html:
             "li",
             el("b", given(row["flight"])),
             ": ",
-            *flown_words(page, row),
+            field_words(page, row),
+            ", ",
+            flown_words(page, row),
             f", {row['clock_time']}: short in every hour of the record, {row['limiting']}. ",
             remedy(page, row),
         )
@@ -202,17 +210,17 @@ def _seasons(page: SchedulePage) -> Html:
     for row in page.frames["schedule_seasons"].to_dict("records"):
         if not int(row["flights"]):
             continue
-        worst = number_text(row["year_high"])
+        worst = flights_text(row["year_high"])
         if not pd.isna(row["worst_year"]):
             worst += f" ({int(row['worst_year'])})"
         few = "*" if 0 < int(row["n_years"]) < YEARS.settled_interval else ""
-        interval = numbers_text(row["ci_low"], row["ci_high"])
+        interval = flights_interval(row["ci_low"], row["ci_high"])
         name = given(row["season"]) if row["season"] else "Whole schedule"
         cells = (
-            flights_text(row),
-            number_text(row["affected"]),
+            count_words(row),
+            flights_text(row["affected"]),
             interval + (few if interval != "none" else ""),
-            number_text(row["year_low"]),
+            flights_text(row["year_low"]),
             worst,
         )
         rows.append(el("tr", el("th", name, scope="row"), [el("td", cell) for cell in cells]))
@@ -264,6 +272,8 @@ def _flights(page: SchedulePage) -> Html:
         for band, label in enumerate(band_labels(page.edges))
     ]
     key.append(el("li", el("span", class_="swatch none"), f" {NO_DATA}: not the same as no risk"))
+    if any(is_steep(row) for row in page.flights):
+        key.append(steep_item())
     return el(
         "section",
         el("p", "Row by row, in the order of the schedule", class_="kicker"),
@@ -283,12 +293,15 @@ def _flights(page: SchedulePage) -> Html:
 
 
 def _flight_row(page: SchedulePage, row: Mapping[str, Any]) -> Html:
-    told = flown_words(page, row)
     lines = [
         el("th", given(row["flight"]), scope="row"),
-        el("td", told[0], el("small", *told[2:])),
+        place_cell(page, row),
         el(
-            "td", unbroken(row["clock_time"]), el("small", when_text(row)), el("small", _times(row))
+            "td",
+            unbroken(row["clock_time"]),
+            el("small", when_text(row)),
+            el("small", _times(row)),
+            note_words(row),
         ),
     ]
     share = row["shortfall"]
@@ -302,7 +315,7 @@ def _flight_row(page: SchedulePage, row: Mapping[str, Any]) -> Html:
             "td",
             el("b", share_text(share)),
             el("small", interval),
-            el("small", f"about {number_text(row['affected'])} of {grouped(int(row['flights']))}"),
+            el("small", f"about {affected_text(row)}"),
             never,
             class_=f"b{band_of(float(share), page.edges)}",
         ),
@@ -325,8 +338,10 @@ _METHOD = (
     "time. A reading that clocks skip is taken as the instant after the change, one that comes "
     "twice as the first.",
     "What stands for a flight are the hours of every year of the record at that hour of the day on "
-    "the 31 days around its date. A year counts for a date when at least 80 % of them have a "
-    "value; a date for which no year counts has no figures and is counted as unknown.",
+    "the 31 days around its date. An hour enters when its year counts for its month and hour (at "
+    "least 80 % of the month’s days have a value there), whatever the other months of that year "
+    "have. A date has figures where the hourly tables have some at its month and hour; otherwise "
+    "it is counted as unknown.",
     "A take-off is held against runway, distance to 50 ft, climb and limits; a landing against the "
     "landing distance and limits, at the same mass. Flights at a mass of their own are scored at "
     "that mass.",

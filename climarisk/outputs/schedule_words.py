@@ -2,7 +2,6 @@
 
 from __future__ import annotations
 
-import math
 import re
 from collections.abc import Mapping, Sequence
 from dataclasses import dataclass
@@ -14,16 +13,20 @@ import pandas as pd
 from climarisk.aircraft import AircraftProfile
 from climarisk.fields import Field
 from climarisk.outputs.colours import MOST_EDGES
+from climarisk.outputs.report.tables import STEEP_MARK
 from climarisk.outputs.report.words import Html, el, given, unbroken
-from climarisk.outputs.texts import NO_DATA, grouped, share_text, unique_labels
+from climarisk.outputs.texts import (
+    STEEP_TAIL,
+    grouped,
+    mass_text,
+    no_time_text,
+    operation_text,
+    share_text,
+    unique_labels,
+)
 
 #: Single dates are told up to so many.
 _MOST_DATES = 3
-_OPERATIONS = {
-    "takeoff": "take-off",
-    "landing": "landing",
-    "both": "take-off and landing",
-}
 _ISO = re.compile(r"[0-9]{4}-[0-9]{2}-[0-9]{2}")
 
 
@@ -94,27 +97,6 @@ def unknown_of(row: Mapping[str, Any]) -> int:
     return int(row["unknown_flights"])
 
 
-def number_text(flights: float) -> str:
-    """An expected number of flights; one decimal below ten."""
-    if pd.isna(flights):
-        return NO_DATA
-    if flights == 0:
-        return "0"
-    if flights < 0.1:
-        return "< 0.1"
-    return grouped(round(flights)) if flights >= 9.95 else f"{flights:.1f}"
-
-
-def numbers_text(low: float, high: float) -> str:
-    """An interval of numbers of flights, never narrower than it is."""
-    if pd.isna(low) or pd.isna(high):
-        return "none"
-    step = 1 if high >= 9.95 else 10
-    ends = (math.floor(low * step + 1e-9) / step, math.ceil(high * step - 1e-9) / step)
-    texts = [grouped(round(end)) if step == 1 else f"{end:g}" for end in ends]
-    return texts[0] if texts[0] == texts[1] else "-".join(texts)
-
-
 def remedy(page: SchedulePage, row: Mapping[str, Any]) -> str:
     """What would help a flight, in a sentence."""
     told = []
@@ -130,25 +112,42 @@ def remedy(page: SchedulePage, row: Mapping[str, Any]) -> str:
     return f"{text[0].upper()}{text[1:]}."
 
 
-def mass_text(mass: float) -> str:
-    """A mass in whole kilograms, rounded down."""
-    return f"{grouped(math.floor(mass + 1e-9))}\N{NO-BREAK SPACE}kg"
-
-
-def flights_text(row: Mapping[str, Any]) -> str:
+def count_words(row: Mapping[str, Any]) -> str:
     """The number of flights, and how many of them have no figures."""
     total = grouped(int(row["flights"]))
     return f"{total} ({grouped(unknown_of(row))} unknown)" if unknown_of(row) else total
 
 
+def field_words(page: SchedulePage, row: Mapping[str, Any]) -> list[object]:
+    """The name of the field of a flight, told where no figure is a pass."""
+    return [given(page.names["field " + row["field"]]), STEEP_TAIL if is_steep(row) else ""]
+
+
+def is_steep(row: Mapping[str, Any]) -> bool:
+    """Whether no figure of a row is a pass."""
+    return bool(row["steep"] == "yes")
+
+
 def flown_words(page: SchedulePage, row: Mapping[str, Any]) -> list[object]:
-    """Field, then aircraft, operation and mass."""
+    """Aircraft, operation and mass."""
     return [
-        given(page.names["field " + row["field"]]),
-        ", ",
         given(page.names["aircraft " + row["aircraft"]]),
-        f", {_OPERATIONS.get(row['operation'], row['operation'])} at {mass_text(row['mass_kg'])}",
+        f", {operation_text(row['operation'])} at ",
+        unbroken(mass_text(row["mass_kg"])),
     ]
+
+
+def place_cell(page: SchedulePage, row: Mapping[str, Any]) -> Html:
+    """The field with its mark, below it what is flown."""
+    mark = [" ", el("small", STEEP_MARK, class_="mark")] if is_steep(row) else []
+    name = given(page.names["field " + row["field"]])
+    return el("td", name, mark, el("small", flown_words(page, row)))
+
+
+def note_words(row: Mapping[str, Any]) -> list[Html]:
+    """What is to be known of the time of a flight, in small letters."""
+    note = row["note"]
+    return [el("small", note)] if isinstance(note, str) and note else []
 
 
 def when_text(row: Mapping[str, Any]) -> Html:
@@ -172,7 +171,7 @@ def nearest_words(row: Mapping[str, Any]) -> list[object]:
     """The nearest time that will do, and how far it is away."""
     shift = row["nearest_shift_h"]
     if pd.isna(shift):
-        return ["none within 12 h"]
+        return [no_time_text(row["note"])]
     if shift == 0:
         return ["as planned"]
     hours = int(abs(shift))

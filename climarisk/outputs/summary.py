@@ -19,8 +19,11 @@ from climarisk.findings import Finding
 from climarisk.outputs.texts import (
     LOAD_LABELS,
     MONTH_NAMES,
+    STEEP_TAIL,
     band_labels,
+    gap_text,
     grouped,
+    hours_interval,
     interval_text,
     schedule_words,
     share_text,
@@ -42,7 +45,12 @@ _LEAST_NAME = 12
 _ELLIPSIS = "\N{HORIZONTAL ELLIPSIS}"
 _WORDS = {"reject": "rejection", "caution": "caution", "note": "note"}
 #: What the files made for people are.
-_FOR_PEOPLE = {"tables.xlsx": "workbook", "report.html": "to print"}
+_FOR_PEOPLE = {
+    "report.html": "to print",
+    "bases.html": "bases",
+    "schedule.html": "flights",
+    "tables.xlsx": "workbook",
+}
 _MAP = "map.html"
 
 
@@ -227,7 +235,7 @@ def _aircraft_lines(result: StudyResult, names: _Names) -> list[str]:
 
 
 def _steep(result: StudyResult) -> list[str]:
-    """Fields with a runway that needs a procedure of its own; never counted as usable."""
+    """Fields with a runway that needs a procedure of its own: no figure there is a pass."""
     return [field.id for field in result.fields if field.is_steep]
 
 
@@ -236,7 +244,7 @@ def _steep_lines(result: StudyResult) -> list[str]:
     if not steep:
         return []
     need = "needs a procedure of its own" if steep == 1 else "need a procedure of their own"
-    return [f"Never counted as usable: {_counted(steep, 'steep field')}, which {need}."]
+    return [f"{_counted(steep, 'steep field')} {need}: no figure there is a pass."]
 
 
 def _usable_text(result: StudyResult, risk: pd.DataFrame, names: _Names, width: int) -> str:
@@ -293,14 +301,14 @@ def _base_lines(result: StudyResult, names: _Names) -> list[str]:
     if behind.any():
         other = ranked[behind].iloc[0]
         gap = float(best["usable_hours_month"] - other["usable_hours_month"])
-        end = f"{_steep_tail(result, other)}, {'< 1 h' if gap < 1.0 else _hours(gap)} fewer"
+        end = f"{_steep_tail(result, other)}, {gap_text(gap)} fewer"
         second += "; next "
         second += names.fields[other["field"]].within(WIDTH - len(second + end) - 1) + end
     return [*lines, f"{second}."]
 
 
 def _steep_tail(result: StudyResult, row: pd.Series) -> str:
-    return " (steep)" if row["field"] in _steep(result) else ""
+    return STEEP_TAIL if row["field"] in _steep(result) else ""
 
 
 def _hours(hours: float) -> str:
@@ -310,8 +318,8 @@ def _hours(hours: float) -> str:
 def _hours_interval(result: StudyResult, row: pd.Series) -> str:
     if pd.isna(row["ci_low"]) or pd.isna(row["ci_high"]):
         return "too few years for an interval"
-    ends = f"{grouped(whole_down(row['ci_low']))}-{grouped(-whole_down(-row['ci_high']))} h"
-    return f"{result.settings['confidence'] * 100:.4g} %: {ends}"
+    ends = hours_interval(float(row["ci_low"]), float(row["ci_high"]))
+    return f"{result.settings['confidence'] * 100:.4g} %: {ends} h"
 
 
 def _weight_lines(result: StudyResult, names: _Names) -> list[str]:
@@ -345,13 +353,13 @@ def _weight_lines(result: StudyResult, names: _Names) -> list[str]:
 def _schedule_lines(
     flights: pd.DataFrame | None, seasons: pd.DataFrame | None, confidence: float
 ) -> list[str]:
-    """What the schedule comes to, in two lines at most."""
+    """What the schedule comes to, in three lines at most."""
     words = schedule_words(flights, seasons, confidence)
     if not words:
         return []
     line = f"Schedule: {' '.join(words)}"
     return textwrap.wrap(
-        line, WIDTH, subsequent_indent="  ", max_lines=2, placeholder=" \N{HORIZONTAL ELLIPSIS}"
+        line, WIDTH, subsequent_indent="  ", max_lines=3, placeholder=" \N{HORIZONTAL ELLIPSIS}"
     )
 
 
@@ -446,4 +454,5 @@ def _file_lines(folder: Path, files: Sequence[Path]) -> list[str]:
     tables = sum(name.endswith(".csv") for name in names)
     parts += [_counted(tables, "CSV table")] if tables else []
     first = f"Map: {folder / _MAP}" if _MAP in names else f"Files: {folder}"
-    return [first, f"Beside it: {', '.join(parts)}."] if parts else [first]
+    beside = textwrap.wrap(f"Beside it: {', '.join(parts)}.", WIDTH, subsequent_indent="  ")
+    return [first, *beside] if parts else [first]

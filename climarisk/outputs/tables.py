@@ -6,6 +6,7 @@ import json
 from collections.abc import Mapping
 from pathlib import Path
 
+import numpy as np
 import pandas as pd
 
 from climarisk.outputs.bases_page import render_bases
@@ -28,7 +29,6 @@ _DECIMALS = {
     "hours_offered": 4,
     "usable_hours": 4,
     "density_altitude_ft": 1,
-    **dict.fromkeys(("mass_kg", "useful_load_kg", "mass_that_holds_kg"), 3),
     **dict.fromkeys(("daylight_hours", "usable_low", "usable_high", "usable_hours_month"), 4),
     **dict.fromkeys(("year_p10", "year_p90", "worst_season_hours_month"), 4),
     **dict.fromkeys(("difference_hours_month", "affected", "year_low", "year_high"), 4),
@@ -63,6 +63,9 @@ _SHARES = (
     *(f"power_p{p}" for p in (10, 50, 90)),
     "optimistic_p50",
 )
+#: Masses, in grams of which none is promised that was not found to hold.
+_MASSES_DOWN = ("mass_kg", "useful_load_kg", "mass_that_holds_kg", "ci_low_kg")
+_MASSES_UP = ("ci_high_kg",)
 #: Frames of the result that are written as CSV, each where it is there.
 TABLES = (
     "distributions_monthly",
@@ -200,6 +203,10 @@ def csv_text(table: pd.DataFrame) -> str:
     decimals |= {c: _SHARE_DECIMALS for c in _SHARES if c in table}
     # Adding zero turns a negative zero into a plain one.
     rounded = table.round(decimals)
+    for names, toward in ((_MASSES_DOWN, np.floor), (_MASSES_UP, np.ceil)):
+        for name in (n for n in names if n in rounded):
+            # Millionths of a gram are round-off: 716.3 kg is 716,300 g.
+            rounded[name] = toward((rounded[name].astype(float) * 1e3).round(6)) / 1e3
     numbers = rounded.select_dtypes("float").columns
     rounded[numbers] = rounded[numbers] + 0.0
     return rounded.to_csv(index=False, lineterminator="\n")

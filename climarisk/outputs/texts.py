@@ -5,13 +5,15 @@ from __future__ import annotations
 import math
 import unicodedata
 from collections import Counter
-from collections.abc import Sequence
+from collections.abc import Callable, Sequence
 from fractions import Fraction
+from typing import Any
 
 import pandas as pd
 
 from climarisk.aircraft import AircraftProfile
 from climarisk.results import StudyResult
+from climarisk.schedule import NEAREST_NOT_TOLD
 
 #: What every output says about its own limits; the first one stands at the top.
 CAUTIONS = (
@@ -90,6 +92,11 @@ NO_DATA = "no data"
 #: From this many feet on (one standard deviation) the doubt about the pressure is told wherever the
 #: doubt about the air is: the pressure is then not measured well, or not at all (our choice).
 PRESSURE_TOLD_FT = 20.0
+#: In place of a better time for a flight, and beside the name of a field where no figure is a pass.
+NO_TIME, NO_TIME_TOLD, STEEP_TAIL = "none within 12 h", "cannot be told", " (steep)"
+#: The band of carburettor icing that tells places apart, called so everywhere.
+ICING_SERIOUS = "serious even in cruise"
+_OPERATIONS = {"takeoff": "take-off", "landing": "landing", "both": "take-off and landing"}
 _MINUS = "\N{MINUS SIGN}"
 
 
@@ -226,6 +233,11 @@ def whole_down(value: float) -> int:
     return math.floor(value + _SLACK * max(1.0, abs(value)))
 
 
+def whole_up(value: float) -> int:
+    """The whole number above a value, which may itself lie a hair above a whole one."""
+    return -whole_down(-value)
+
+
 def load_class(share: float, outcome: str) -> int:
     """The place of a useful load in `LOAD_LABELS`; -1 without data.
 
@@ -243,20 +255,109 @@ def load_class(share: float, outcome: str) -> int:
     return 0 if outcome == "maximum mass" else 1 + sum(share < edge for edge in _LOAD_EDGES)
 
 
+def hours_text(hours: float) -> str:
+    """Usable hours, rounded down: never more than there are."""
+    return "" if math.isnan(hours) else f"{grouped(whole_down(hours))}\N{NARROW NO-BREAK SPACE}h"
+
+
+def hours_interval(low: float, high: float) -> str:
+    """An interval of usable hours in whole ones, outwards; one number where both ends are it."""
+    first, last = grouped(whole_down(low)), grouped(whole_up(high))
+    return first if first == last else f"{first}-{last}"
+
+
+def tenths_text(value: float) -> str:
+    """A number of flights or hours to the nearest: to a tenth below ten, else whole."""
+    if 0.0 < abs(value) < 0.05 - _SLACK:
+        return f"< {_MINUS if value < 0.0 else ''}0.1"
+    return _tenths(nearest(value))
+
+
+def affected_text(row: Mapping[str, Any]) -> str:
+    """How many of a flight's flights are expected to fall short, and how many have no figures.
+
+    Parameters
+    ----------
+    row : mapping
+        ``affected``, ``flights`` and ``unknown_flights``.
+    """
+    unknown = int(row["unknown_flights"])
+    known = grouped(int(row["flights"]) - unknown)
+    rest = f" with figures, {grouped(unknown)} without" if unknown else ""
+    return f"{flights_text(float(row['affected']))} of {known}{rest}"
+
+
+def no_time_text(note: object) -> str:
+    """Why a flight has no better time: there is none, or it cannot be told."""
+    return NO_TIME_TOLD if isinstance(note, str) and NEAREST_NOT_TOLD in note else NO_TIME
+
+
+def nearest(value: float) -> float:
+    """The tenth nearest to a value below ten, halves upwards, else the whole number."""
+    return _stepped(value, lambda v: math.floor(v + 0.5 + _SLACK))
+
+
+def outwards(low: float, high: float) -> tuple[float, float]:
+    """The ends of an interval to a tenth below ten, else whole, as wide as they leave it."""
+    return _stepped(low, whole_down), _stepped(high, whole_up)
+
+
+def _stepped(value: float, whole: Callable[[float], int]) -> float:
+    tenth = whole(value * 10.0) / 10.0
+    return tenth if abs(tenth) < 10.0 else float(whole(value))
+
+
+def _tenths(value: float) -> str:
+    """A number that `nearest` or `outwards` gave, in words."""
+    if value == 0.0:
+        return "0"
+    return f"{value:.1f}".replace("-", _MINUS) if abs(value) < 10.0 else grouped(round(value))
+
+
 def flights_text(flights: float) -> str:
-    """Flights expected to fall short, rounded up: to a tenth below ten, else whole."""
-    if math.isnan(flights):
-        return NO_DATA
-    if flights < 10:
-        return f"{math.ceil(flights * 10 - _SLACK) / 10:g}"
-    return grouped(math.ceil(flights - _SLACK))
+    """Flights expected to fall short, to the nearest: to a tenth below ten, else whole."""
+    return NO_DATA if pd.isna(flights) else tenths_text(flights)
 
 
 def flights_interval(low: float, high: float) -> str:
-    """An interval of a number of flights in whole ones, outwards; ``none`` where there is none."""
-    if math.isnan(low) or math.isnan(high):
+    """An interval of a number of flights, rounded outwards; ``none`` where there is none."""
+    if pd.isna(low) or pd.isna(high):
         return "none"
-    return f"{grouped(math.floor(low + _SLACK))}-{grouped(math.ceil(high - _SLACK))}"
+    first, last = map(_tenths, outwards(low, high))
+    return first if first == last else f"{first}-{last}"
+
+
+def gap_text(hours: float) -> str:
+    """Hours of a difference, to the nearest: to a tenth below ten, else whole."""
+    return f"{tenths_text(hours)} h"
+
+
+def gap_interval(low: float, high: float) -> str:
+    """The interval of a difference in hours, rounded outwards."""
+    first, last = map(_tenths, outwards(low, high))
+    return first if first == last else f"{first} to {last}"
+
+
+def told_apart(low: float, high: float) -> bool:
+    """Whether the unrounded interval of a difference leaves zero out."""
+    return not low <= 0.0 <= high
+
+
+def good_share(share: float) -> float:
+    """The share of something good in whole per cent, rounded down: only all of it is all."""
+    if math.isnan(share) or share < 0.01:
+        return share
+    return 1.0 if share >= 1.0 else min(whole_down(share * 100.0), 99) / 100.0
+
+
+def good_share_text(share: float) -> str:
+    """The same in words."""
+    return share_text(good_share(share))
+
+
+def operation_text(operation: str) -> str:
+    """The operations of a flight in words."""
+    return _OPERATIONS.get(operation, operation)
 
 
 def ranges_text(hours: str) -> str:
@@ -264,15 +365,10 @@ def ranges_text(hours: str) -> str:
     return ", ".join(hours.split())
 
 
-def either(clock: str) -> str:
-    """A clock time, or both where the clocks change in the month, as ``05:00 or 06:00``."""
-    return clock.replace(" / ", " or ")
-
-
 def icing_basis(method: str, verified: str) -> str:
     """What the shares of carburettor icing rest on, told wherever such a figure stands."""
     if method == "physical":
-        return "screening, not a published chart"
+        return "screening, no published chart"
     return "chart verified" if verified == "yes" else "chart not verified"
 
 
@@ -298,23 +394,25 @@ def schedule_words(
     whole = seasons.iloc[0]  # the first row is the whole schedule
     planned, unknown = int(whole["flights"]), int(whole["unknown_flights"])
     if unknown >= planned:
-        return (f"No figures for any of the {grouped(planned)} flights: not no risk.",)
+        return (f"None of the {_flights(planned)} has figures: that does not mean no risk.",)
     sure = f"{round(confidence * 100, 2):g} %"
     ends = flights_interval(float(whole["ci_low"]), float(whole["ci_high"]))
+    of = f"the {_flights(planned - unknown)} with figures" if unknown else _flights(planned)
     words = [
-        f"{flights_text(float(whole['affected']))} of {grouped(planned)} flights are expected to "
-        f"fall short ({'too few years for an interval' if ends == 'none' else f'{sure}: {ends}'})."
+        f"{flights_text(float(whole['affected']))} of {of} are expected to fall short "
+        f"({'too few years for an interval' if ends == 'none' else f'{sure}: {ends}'})."
     ]
     if unknown:
-        words.append(f"{grouped(unknown)} {_have(unknown)} no figures: not no risk.")
+        have = "has" if unknown == 1 else "have"
+        words.append(f"{_flights(unknown)} {have} no figures: that does not mean no risk.")
     never = int(flights["flights"][flights["never_met"] == "yes"].sum())
     if never:
-        words.append(f"{grouped(never)} can never be met.")
+        words.append(f"{grouped(never)} can never be met at the mass planned.")
     return tuple(words)
 
 
-def _have(count: int) -> str:
-    return "has" if count == 1 else "have"
+def _flights(count: int) -> str:
+    return f"{grouped(count)} flight{'' if count == 1 else 's'}"
 
 
 def engine_groups(result: StudyResult) -> dict[str, list[AircraftProfile]]:

@@ -16,6 +16,7 @@ from climarisk.outputs.map import render_map
 
 #: Step of the useful load that the page tells for 240 kg of it in a small study.
 STEP_KG = 1
+OPERATIONS = {"takeoff": "take-off", "landing": "landing", "both": "take-off and landing"}
 
 
 def load_text(row, step: int) -> str:
@@ -173,6 +174,19 @@ def test_interval_whose_lower_end_no_mass_meets_says_so(other_page, result):
     assert page.inner_text("tr:has([data-field=field-2]) .column-interval") == "up to 211"
 
 
+def test_steps_above_one_kilogram_are_told_where_a_load_stands(other_page, result):
+    heavy = tuple(replace(a, maximum_kg=a.empty_kg + 1000.0) for a in result.aircraft)
+    page = other_page(replace(result, aircraft=heavy), "#measure=weight&month=2")
+    step = "in steps of 5 kg"  # the first of 1, 2, 5, ... of which 250 are 1,000 kg
+    assert step in page.inner_text("#caption")
+    page.click("[data-field=field-2] >> nth=0")
+    part = page.inner_text("#field-part")
+    assert part.count(step) >= 3  # the figure, the facts, the table
+    assert step in page.inner_text(".grid caption")
+    page.select_option("#measure", "shortfall")
+    assert step not in page.inner_text("#caption")
+
+
 # When it works
 
 
@@ -183,8 +197,8 @@ def test_panel_says_when_the_field_works(opened, result):
         told = line[1].split("\n")
         hours = [_hours(part) for part in told[0].split(", ")] if row.hours else []
         assert ranges(sorted(h for part in hours for h in part)) == row.hours
-        clock = dict.fromkeys([row.clock_first, row.clock_last])
-        assert told[1:] == ([f"clock {' to '.join(clock)}"] if row.hours else [])
+        clock = " / ".join(", ".join(days.split()) for days in row.clock_hours.split(" / "))
+        assert told[1:] == ([f"clock {clock}"] if row.hours else [])
         usable = line[2].split("\n")
         whole = f"{math.floor(row.usable_hours)} of {math.floor(row.daylight_hours)}"
         assert usable[0] == whole
@@ -193,12 +207,34 @@ def test_panel_says_when_the_field_works(opened, result):
         else:
             ends = f"{math.floor(row.usable_low)}-{math.ceil(row.usable_high)}"
             assert usable[1].rstrip("ab") == ends
-        assert line[3] == share_text(row.days_with_run)
+        assert line[3] == good_share_text(row.days_with_run)
 
 
 def _hours(text: str) -> range:
     first, _, last = text.partition("-")
     return range(int(first[:2]), int((last or first)[:2]) + 1)
+
+
+def good_share_text(share: float) -> str:
+    """Whole per cent, rounded down; only all of it is all."""
+    return share_text(share if share < 0.01 else math.floor(share * 100 + 1e-9) / 100)
+
+
+def test_civil_clock_tells_every_stretch_and_both_clocks(other_page, result):
+    windows = result.windows_monthly.copy()
+    july, march = (
+        (windows["field"] == "field-0") & (windows["month"] == month) for month in (7, 3)
+    )
+    windows.loc[july | march, "hours"] = "04-12 17-20"
+    windows.loc[july, "clock_hours"] = "05:00-13:00 18:00-21:00"
+    windows.loc[march, "clock_hours"] = "06:00-17:00 / 07:00-18:00"
+    late = (windows["field"] == "field-0") & (windows["month"] == 8)
+    windows.loc[late, ["hours", "clock_hours"]] = ["22-03", "23:00-04:00"]
+    page = other_page(replace(result, windows_monthly=windows), "#field=field-0")
+    lines = [line[1] for line in cells(page, ".works tbody tr")]
+    assert lines[6] == "04:00-12:00, 17:00-20:00\nclock 05:00-13:00, 18:00-21:00"
+    assert lines[2] == "04:00-12:00, 17:00-20:00\nclock 06:00-17:00 / 07:00-18:00"
+    assert lines[7] == "22:00-03:00\nclock 23:00-04:00"
 
 
 def test_hours_without_figures_are_no_usable_hours(other_page, result):
@@ -270,27 +306,80 @@ def test_bases_are_those_of_the_frame_in_their_rank(opened, result, who):
         assert names[row.field][:12] in line[0]
         ends = f"{math.floor(row.ci_low)}-{math.ceil(row.ci_high)}"
         assert line[1] == f"{math.floor(row.usable_hours_month)} h {ends}"
+        assert ("steep: own procedure" in line[0]) == (row.steep == "yes")
         assert line[2] == f"{math.floor(row.year_p10)}-{math.floor(row.year_p90)} h"
         assert line[3] == f"{math.floor(row.worst_season_hours_month)} h {row.worst_season}"
-        assert line[4] == share_text(row.days_with_run)
+        assert line[4] == good_share_text(row.days_with_run)
         assert line[5] == f"{share_text(row.share_2_5k)} / {share_text(row.share_1k)}"
         assert line[6] == f"{share_text(row.icing_serious)} chart not verified"
     assert len(lines) == len(result.fields)
     assert lines[-1][1] == "no data"  # the field without data stands last
+    assert {"yes", ""} <= set(known["steep"])
 
 
 def test_bases_are_told_apart_by_paired_differences(opened, result):
     page = opened().open("#view=bases&base=field-3")
     rows = result.base_differences.query("aircraft == ''")
-    lines = {line[0].split("\n")[-1]: line[-1] for line in cells(page, ".bases tbody tr")}
     other = rows.query("first == 'field-0' and second == 'field-3'").iloc[0]
-    low, high = math.floor(round(other.ci_low, 1)), math.ceil(round(other.ci_high, 1))
+    assert other.ci_low > 10  # whole hours
+    low, high = math.floor(other.ci_low), math.ceil(other.ci_high)
     hours = math.floor(other.difference_hours_month + 0.5)
-    assert f"{hours} h more ({low}-{high})" in lines.values()
+    told = {line[0]: line[-1] for line in cells(page, ".bases tbody tr")}
+    assert f"{hours} h more ({low} to {high})" in told.values()
     page.select_option("#bases-against", label=page.inner_text("#bases-against option >> nth=0"))
     assert "base=field-0" in page.evaluate("location.hash")
-    assert f"{hours} h fewer ({low}-{high})" in [c[-1] for c in cells(page, ".bases tbody tr")]
+    shown = [c[-1] for c in cells(page, ".bases tbody tr")]
+    assert f"{hours} h fewer ({low} to {high})" in shown
     assert page.evaluate("document.activeElement.id") == "bases-against"
+
+
+@pytest.mark.parametrize(
+    ("exact", "told"),
+    [
+        ((3.824, -1.21, 8.9), "not told apart: 3.8 h fewer (−1.3 to 8.9)"),
+        ((3.824, 0.004, 10.2), "3.8 h fewer (0 to 11)"),
+        ((0.01, -0.2, 0.25), "not told apart: < 0.1 h fewer (−0.2 to 0.3)"),
+        ((0.0, -0.2, 0.2), "not told apart: 0 h (−0.2 to 0.2)"),
+        ((4.04, math.nan, math.nan), "4.0 h fewer, no interval"),
+        (None, "not computed"),
+    ],
+)
+def test_differences_are_told_by_their_interval_before_rounding(other_page, result, exact, told):
+    table = result.base_differences
+    mine = (table["first"] == "field-0") & (table["second"] == "field-1") & (table.aircraft == "")
+    assert mine.sum() == 1
+    changed = table.copy()
+    if exact is None:
+        changed = changed[~mine]
+    else:
+        changed.loc[mine, ["difference_hours_month", "ci_low", "ci_high"]] = exact
+    page = other_page(replace(result, base_differences=changed), "#view=bases&base=field-0")
+    name = next(" ".join(f.name.split()) for f in result.fields if f.id == "field-1")
+    lines = cells(page, ".bases tbody tr")
+    assert [line[-1] for line in lines if name[:12] in line[0]] == [told]
+    assert "base_differences.csv" not in page.inner_text("#overview-part")
+
+
+def test_strips_span_what_they_show_and_say_so(opened, result):
+    page = opened().open("#view=bases")
+    fleet = result.bases.query("aircraft == ''")
+    low, high = math.floor(fleet["year_p10"].min()), math.floor(fleet["year_p90"].max())
+    assert 0 < low < high
+    assert f"strip {low} to {high} h" in page.inner_text(".bases thead")
+    dots = page.eval_on_selector_all(
+        ".strip .mean", "(all) => all.map((dot) => Number(dot.getAttribute('cx')))"
+    )
+    known = fleet["usable_hours_month"].dropna().sort_values(ascending=False)
+    for dot, hours in zip(dots, known, strict=True):
+        # 5 and 145 are the ends of the drawn line.
+        assert dot == pytest.approx(5 + 140 * (math.floor(hours) - low) / (high - low), abs=0.06)
+
+
+def test_fleet_is_told_whole(opened, result):
+    page = opened().open("#view=bases")
+    told = page.inner_text("#overview-part .key")
+    for profile, count in zip(result.aircraft, (1, 2), strict=True):
+        assert f"{count} × {' '.join(profile.name.split())}" in told
 
 
 def test_overviews_by_keyboard_back_and_link(opened, result):
@@ -321,14 +410,43 @@ def test_schedule_tells_expected_flights_seasons_and_days(opened, result):
     page = opened().open("#view=schedule")
     whole = result.schedule_seasons.query("season == ''").iloc[0]
     head = page.inner_text("#overview-part .headline")
-    assert f"{math.ceil(whole.affected)} of {whole.flights}" in head
+    known = whole.flights - whole.unknown_flights
+    assert whole.affected > 10 and whole.ci_low > 10
+    assert f"{math.floor(whole.affected + 0.5)} of the {known}\nflights with figures" in head
     assert f"{math.floor(whole.ci_low)}-{math.ceil(whole.ci_high)}" in head
-    assert f"{whole.unknown_flights} flights: not counted" in head
+    unknown = f"{whole.unknown_flights} of {whole.flights} flights: not counted"
+    assert f"{unknown}; that does not mean no risk" in head
     lines = cells(page, ".seasons tbody tr")
     assert [line[0] for line in lines] == list(SEASONS)
     worst = result.schedule_days.sort_values("affected", ascending=False)
     days = [line[0].split()[0] for line in cells(page, ".days tbody tr")]
     assert days == list(worst["date"].head(len(days)))
+
+
+def test_season_without_flights_is_left_out_and_few_flights_have_a_decimal(other_page, result):
+    seasons = result.schedule_seasons.copy()
+    figures = ["affected", "ci_low", "ci_high", "year_low", "year_high", "worst_year"]
+    seasons.loc[1, ["flights", "unknown_flights"]] = 0
+    seasons.loc[1, figures] = math.nan
+    seasons.loc[2, figures] = [4.04, 1.21, 10.2, 0.0, 12.6, 2022]
+    seasons.loc[3, "unknown_flights"] = seasons.loc[3, "flights"]
+    seasons.loc[3, figures] = math.nan
+    page = other_page(replace(result, schedule_seasons=seasons), "#view=schedule")
+    lines = cells(page, ".seasons tbody tr")
+    assert [line[0] for line in lines] == list(SEASONS)[1:]  # the row of the whole comes first
+    assert lines[0][2:5] == ["4.0", "1.2-11", "0-13"]
+    assert lines[1][2:5] == ["no data"] * 3
+
+
+def test_schedule_without_any_figure_says_so(other_page, result):
+    seasons = result.schedule_seasons.copy()
+    seasons["unknown_flights"] = seasons["flights"]
+    figures = ["affected", "ci_low", "ci_high", "year_low", "year_high", "worst_year"]
+    seasons[figures] = math.nan
+    page = other_page(replace(result, schedule_seasons=seasons), "#view=schedule")
+    head = page.inner_text("#overview-part .headline")
+    assert "no data" in head and "Best and worst" not in head
+    assert "that does not mean no risk" in head
 
 
 def test_flights_are_those_of_the_frame(opened, result):
@@ -337,6 +455,9 @@ def test_flights_are_those_of_the_frame(opened, result):
     assert len(lines) == len(result.schedule_flights)
     for row in result.schedule_flights.itertuples():
         line = lines[row.flight]
+        assert ("steep: own procedure" in line[1]) == (row.steep == "yes")
+        assert f", {OPERATIONS[row.operation]} at {row.mass_kg:.0f} kg" in line[1]
+        assert line[2].endswith(row.note or "flights" * (row.flights > 1) or "flight")
         if math.isnan(row.shortfall):
             assert [line[3], line[6]] == ["no data", "no data"]
             continue
@@ -348,7 +469,12 @@ def test_flights_are_those_of_the_frame(opened, result):
             assert line[6] == "cannot be met"
         else:
             assert line[6].startswith(f"{math.floor(row.mass_that_holds_kg)} kg")
-        assert row.nearest_time in line[7]
+        if row.nearest_time:
+            assert (
+                line[7] == f"{row.nearest_time} 3.5 h earlier, {share_text(row.nearest_shortfall)}"
+            )
+        else:
+            assert line[7] == ("none within 12 h" if row.shortfall else "as planned")
 
 
 def test_flights_are_ordered_as_asked(opened, result):

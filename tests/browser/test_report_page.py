@@ -73,6 +73,20 @@ def test_wide_tables_scroll_by_keyboard_in_a_container_of_their_own(open_report)
     assert box.evaluate("(box) => box.scrollLeft") > 0
 
 
+def test_captions_are_not_cut_by_the_container_of_their_table(open_report):
+    page, _ = open_report("phone")
+    cut = page.evaluate(
+        """() => [...document.querySelectorAll(".scroll caption")].filter((caption) => {
+          const box = caption.closest(".scroll");
+          box.scrollLeft = 100;
+          const [own, around] = [caption, box].map((part) => part.getBoundingClientRect());
+          return own.right > around.right + 0.6 || own.left < around.left - 0.6;
+        }).map((caption) => caption.textContent)"""
+    )
+    assert page.locator(".scroll caption").count() > 5
+    assert cut == []
+
+
 def test_paper_stays_white_in_the_dark_scheme(open_report):
     page, _ = open_report("desktop dark")
     colour = page.evaluate("getComputedStyle(document.querySelector('.sheet')).backgroundColor")
@@ -144,7 +158,7 @@ _SPOILT = """() => {
     }
   };
   for (const cell of document.querySelectorAll(".periods tbody td")) {
-    walk(cell, !cell.matches(".end, .none"));
+    walk(cell, !cell.matches(".end, .none, .unmet"));
   }
   for (const head of document.querySelectorAll(".periods thead tr:first-child th.first")) {
     walk(head, head.textContent === "Season");
@@ -200,16 +214,23 @@ def pages(browser, report_url) -> list[str]:
 
 
 def test_each_aircraft_has_one_page_of_paper_with_its_name(pages, result):
-    starts = [n for n, text in enumerate(pages) if "Aircraft " in text and " of 2" in text]
+    count = len(result.aircraft)
     heads = [
-        next(n for n in starts if f"Aircraft {a + 1} of {len(result.aircraft)}" in pages[n])
-        for a in range(len(result.aircraft))
+        next(n for n, text in enumerate(pages) if f"Aircraft {a + 1} of {count}" in text)
+        for a in range(count)
     ]
-    air = next(n for n, text in enumerate(pages) if "Density altitude and humidity Highest" in text)
-    assert [b - a for a, b in zip(heads, [*heads[1:], air], strict=True)] == [1, 1]
+    works = [n for n, text in enumerate(pages) if "Weights and working hours" in text]
+    bases = next(n for n, text in enumerate(pages) if "Where the fleet could work" in text)
+    # The weights and working hours of each aircraft follow all these pages, on one page each.
+    assert heads == [*range(heads[0], heads[0] + count)]
+    assert works == [*range(heads[-1] + 1, heads[-1] + 1 + count)]
+    assert bases == works[-1] + 1
     for n, profile in zip(heads, result.aircraft, strict=True):
         assert profile.name in pages[n]
         assert "Month by month" in pages[n]
+    for n, profile in zip(works, result.aircraft, strict=True):
+        assert profile.name in pages[n]
+        assert "Weight that holds" in pages[n] and "Working hours" in pages[n]
     assert heads[0] <= 2  # the overview: a field with a name of 344 characters may need two
 
 

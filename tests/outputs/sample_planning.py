@@ -171,8 +171,23 @@ def ranges(hours: Sequence[int]) -> str:
 
 def civil(hour: int, month: int) -> str:
     """The clock in summer an hour ahead; both where the change falls into the month."""
-    ahead = {3: (0, 1), 10: (0, 1)}.get(month, (1,) if 3 < month < 10 else (0,))
-    return " or ".join(f"{(hour + one) % 24:02d}:00" for one in ahead)
+    ahead = {3: (0, 1), 10: (1, 0)}.get(month, (1,) if 3 < month < 10 else (0,))
+    return " / ".join(f"{(hour + one) % 24:02d}:00" for one in ahead)
+
+
+def civil_ranges(text: str, month: int) -> str:
+    """Ranges of hours by that clock."""
+    if not text:
+        return ""
+    ahead = {3: (0, 1), 10: (1, 0)}.get(month, (1,) if 3 < month < 10 else (0,))
+    shown = (
+        " ".join(
+            "-".join(f"{(int(hour) + one) % 24:02d}:00" for hour in part.split("-"))
+            for part in text.split()
+        )
+        for one in ahead
+    )
+    return " / ".join(shown)
 
 
 def _windows(fields, aircraft, monthly: pd.DataFrame, hourly: pd.DataFrame) -> pd.DataFrame:
@@ -192,6 +207,7 @@ def _windows(fields, aircraft, monthly: pd.DataFrame, hourly: pd.DataFrame) -> p
     pairs = list(zip(found, month, strict=True))
     table["clock_first"] = [civil(int(h[0]), m) if h else "" for h, m in pairs]
     table["clock_last"] = [civil(int(h[-1]), m) if h else "" for h, m in pairs]
+    table["clock_hours"] = [civil_ranges(ranges(h), m) for h, m in pairs]
     table["hours_without_figures"] = (inside & np.isnan(shares)).sum(axis=1)
     daylight = _MONTH_H * (0.5 + 0.12 * _warmth(table) * 2 - 0.12)
     table["daylight_hours"] = daylight
@@ -252,19 +268,34 @@ def _bases(fields, aircraft, seasons, windows: pd.DataFrame) -> pd.DataFrame:
     hours = windows.groupby(["field", "aircraft"], sort=False)["usable_hours"].mean()
     fleet = hours.groupby(level="field", sort=False).mean()
     order = fleet.sort_values(ascending=False, kind="stable", na_position="last").index
+    steep = {field.id: "yes" if field.is_steep else "" for field in fields}
     rows = []
     for rank, field in enumerate(order, start=1):
         number = int(field.rpartition("-")[2])
         for who in ["", *(a.id for a in aircraft)]:
             mean = float(fleet[field] if who == "" else hours[field, who])
             if math.isnan(mean):
-                rows.append([math.nan, field, who, *[math.nan] * 5, "", *[math.nan] * 5, 0, ""])
+                rows.append(
+                    [
+                        math.nan,
+                        field,
+                        who,
+                        *[math.nan] * 5,
+                        "",
+                        *[math.nan] * 5,
+                        0,
+                        "",
+                        steep[field],
+                    ]
+                )
                 continue
             share = mean / _MONTH_H
             spread = [mean - 14.2, mean + 11.7, mean - 38.5, mean + 29.9]
             worst = [seasons[number % len(seasons)], mean * 0.71]
             exposure = [0.02 + 0.01 * (number % 5), 0.06 + 0.03 * (number % 5), 0.183]
-            rows.append([rank, field, who, mean, *spread, *worst, share, *exposure, 14, ""])
+            rows.append(
+                [rank, field, who, mean, *spread, *worst, share, *exposure, 14, "", steep[field]]
+            )
     return pd.DataFrame(rows, columns=BASES_COLUMNS)
 
 
@@ -304,25 +335,27 @@ def _flights(fields, aircraft, n_flights: int = 14) -> pd.DataFrame:
         when = f"2027-{1 + n % 12:02d}-{1 + n % 28:02d}" if n % 3 else "weekdays, <b>JJA</b>"
         name = f"FL {n}" if n else "</script><script>window.pwned=1</script>"
         nearest = ["", math.nan, math.nan] if never or share == 0.0 else ["07:30", -3.5, 0.031]
-        head = [name, field.id, profile.id, ("take-off", "landing", "both")[n % 3], when]
+        head = [name, field.id, profile.id, ("takeoff", "landing", "both")[n % 3], when]
         head += [f"{8 + n % 11:02d}:30", f"{7 + n % 11:02d} {8 + n % 11:02d}", 720.0, count]
+        marks = ["yes" if field.is_steep else "", "outside the hours window" if n % 5 == 4 else ""]
         if empty:
             tail = [0, 0, 0.0, *[math.nan] * 4, "", HOLDS_IN, *[math.nan] * 2, "", "", math.nan]
-            rows.append([*head, *tail, math.nan, "", ""])
+            marks[1] = "; ".join(filter(None, [marks[1], "the nearest time cannot be told"]))
+            rows.append([*head, *tail, math.nan, "", "", *marks, count])
             continue
+        unknown = count // 3 if n % 4 == 1 else 0
         few = n % 7 == 5
         ends = [math.nan] * 2 if few else [max(0.0, share - 0.06), min(1.0, share + 0.07)]
         limiting = "take-off to 50 ft" if share else ""
-        tail = [420, 14, 14 / 15, share, *ends, share * count, limiting, HOLDS_IN, mass]
+        tail = [420, 14, 14 / 15, share, *ends, share * (count - unknown), limiting, HOLDS_IN, mass]
         tail += [mass - EMPTY_KG, outcome, *nearest, "yes" if never else "no"]
-        rows.append([*head, *tail, "no interval below 5 years" if few else ""])
+        rows.append([*head, *tail, "no interval below 5 years" if few else "", *marks, unknown])
     return pd.DataFrame(rows, columns=SCHEDULE_FLIGHTS_COLUMNS)
 
 
 def _schedule_seasons(flights: pd.DataFrame, seasons) -> pd.DataFrame:
-    known = flights["affected"].notna()
     total, affected = int(flights["flights"].sum()), float(flights["affected"].sum())
-    unknown = int(flights["flights"][~known].sum())
+    unknown = int(flights["unknown_flights"].sum())
     rows = []
     for name, part in (("", 1.0), *((s, 0.4 / (i + 1)) for i, s in enumerate(seasons))):
         hit = affected * part

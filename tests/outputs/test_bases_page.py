@@ -155,13 +155,14 @@ def test_ranking_shows_the_figures_of_the_frame(hostile):
             assert cells[1].startswith("no data")
             continue
         assert cells[0].startswith(f"{row['rank']} ")
+        assert cells[0].endswith(" steep") == (row["field"] == made.fields[0])
         low, high = math.floor(row["ci_low"]), math.ceil(row["ci_high"])
         hours = f"{math.floor(row['usable_hours_month'])}\N{NARROW NO-BREAK SPACE}h"
         assert cells[1] == f"{hours} {low}-{high}*"  # seven years
         assert cells[2] == f"{math.floor(row['year_p10'])}-{math.ceil(row['year_p90'])}"
         worst = f"{math.floor(row['worst_season_hours_month'])}\N{NARROW NO-BREAK SPACE}h"
         assert cells[3] == f"{row['worst_season']} {worst}"
-        assert cells[4] == f"{math.floor(row['days_with_run'] * 100 + 0.5)} %"
+        assert cells[4] == f"{math.floor(row['days_with_run'] * 100 + 1e-9)} %"
     assert [c[0][:1] for c in ranking[1:]] == ["1", "2", "3", "4", "5", "–", "–"]
 
 
@@ -243,13 +244,16 @@ def test_aircraft_stand_beside_each_other_with_their_own_figures(hostile):
 def test_icing_is_shown_with_its_verification():
     made = Made(2)
     result = result_of(made)
-    assert "not verified" in Page(render_bases(result)).text
+    page = Page(render_bases(result))
+    assert page.tables[0][0][6] == "Icing serious even in cruise (chart not verified)"
+    assert "it is serious even in cruise; chart not verified." in page.text
     result.icing_monthly["verified"] = "yes"
     shown = Page(render_bases(result)).text
     assert "not verified" not in shown
     assert "verified" in shown
     result.icing_monthly["method"] = "physical"
-    assert "not a published chart" in Page(render_bases(result)).text
+    page = Page(render_bases(result))
+    assert page.tables[0][0][6].endswith("(screening, no published chart)")
 
 
 def test_differences_are_signed_from_the_first_field_and_say_when_they_tell_nothing():
@@ -264,20 +268,54 @@ def test_differences_are_signed_from_the_first_field_and_say_when_they_tell_noth
     _, differences = made.tables()
     assert len(table) == 1 + 3
     for cells in table[1:]:
-        one, other = cells[0].split(" against ")
+        assert ("Field 0 (steep)" in cells[0]) == ("Field 0" in cells[0])
+        one, other = cells[0].replace(" (steep)", "").split(" against ")
         for n, aircraft in enumerate(("", *AIRCRAFT)):
             pair = {one.replace("Field ", "f"), other.replace("Field ", "f")}
             chosen = differences[differences["aircraft"] == aircraft]
             (row,) = [r for r in chosen.to_dict("records") if {r["first"], r["second"]} == pair]
             hours = row["difference_hours_month"]
             sign = "+" if row["first"] == one.replace("Field ", "f") else "\N{MINUS SIGN}"
+            sized = f"{hours:.1f}" if hours < 9.95 else f"{hours:.0f}"
             if hours == 0.0:
-                assert cells[1 + n] == "0 h 0 to 0, not told apart"
-            elif hours < 1.0:
-                assert cells[1 + n].startswith(f"up to {sign}1 h ")
+                assert cells[1 + n] == "0 h no spread, not told apart"
+            elif hours < 0.05:
+                assert cells[1 + n].startswith(f"up to {sign}0.1 h ")
             else:
-                assert cells[1 + n].startswith(f"{sign}{math.floor(hours)} h ")
-            assert ("not told apart" in cells[1 + n]) == (row["ci_low"] <= 0.0)
+                assert cells[1 + n].startswith(f"{sign}{sized} h ")
+            told = row["ci_low"] <= 0.0 <= row["ci_high"]
+            assert ("not told apart" in cells[1 + n]) == told
+
+
+@pytest.mark.parametrize(("low", "apart"), [(0.02, True), (0.0, False), (-0.02, False)])
+def test_bases_are_told_apart_by_the_unrounded_interval(low, apart):
+    made = Made(2)
+    result = result_of(made)
+    result.base_differences = result.base_differences.assign(
+        difference_hours_month=0.5, ci_low=low, ci_high=1.04
+    )
+    page = Page(render_bases(result))
+    cells = page.tables[3][1][1:]
+    assert ["not told apart" in cell for cell in cells] == [not apart] * len(cells)
+    assert ("beats" in page.text) == apart
+    assert ("are not told apart" in page.text) != apart
+
+
+def test_field_that_is_never_usable_has_a_scale_from_zero_and_no_empty_interval():
+    made = Made(2)
+    for aircraft in AIRCRAFT:
+        counts = made.counts["f1", aircraft]
+        fallen = np.broadcast_to(counts.total[..., None], counts.fallen.shape)
+        made.counts["f1", aircraft] = type(counts)(counts.total, fallen.copy(), 0.5)
+    result = result_of(made)
+    # What resampling leaves of nothing: a hair below it.
+    own = result.bases["field"] == "f1"
+    result.bases.loc[own, ["ci_low", "year_p10"]] = -1e-13
+    page = Page(render_bases(result))
+    assert "Scale: 0 to " in page.text
+    (row,) = [r for r in page.tables[0] if "Field 1" in r[0]]
+    assert row[1].replace("\N{NARROW NO-BREAK SPACE}", " ") == "0 h no spread*"
+    assert row[2] == "0"
 
 
 def test_many_fields_show_the_best_and_the_next_against_each_other():
@@ -292,20 +330,22 @@ def test_many_fields_show_the_best_and_the_next_against_each_other():
     ("figures", "sentence"),
     [
         # The sentence of the work order, then its borders.
-        ((21.6, 12.3, 29.2), "A beats B by 21 h a month (90 %: 12 to 30)."),
-        ((0.4, 0.1, 0.9), "A beats B by less than 1 h a month (90 %: 0 to 1)."),
+        ((21.6, 12.3, 29.2), "A beats B by 22 h a month (90 %: 12 to 30)."),
+        ((0.44, 0.19, 0.81), "A beats B by 0.4 h a month (90 %: 0.1 to 0.9)."),
         (
             (3.0, -4.2, 9.1),
-            "A and B are not told apart: 3 h a month (90 %: \N{MINUS SIGN}5 to 10).",
+            "A and B are not told apart: 3.0 h a month (90 %: \N{MINUS SIGN}4.2 to 9.1).",
         ),
-        ((0.0, 0.0, 0.0), "A and B are not told apart: 0 h a month (90 %: 0 to 0)."),
+        ((0.0, 0.0, 0.0), "A and B are not told apart: 0 h a month (90 %: 0)."),
         (
             (1234.0, math.nan, math.nan),
             "A has 1,234 h a month more than B; too few years for an interval.",
         ),
     ],
 )
-def test_difference_in_a_sentence_is_never_larger_or_surer_than_it_is(figures, sentence):
+def test_difference_in_a_sentence_is_rounded_to_the_nearest_and_its_interval_outwards(
+    figures, sentence
+):
     names = ("difference_hours_month", "ci_low", "ci_high")
     assert difference_sentence("A", "B", dict(zip(names, figures, strict=True)), 0.9) == sentence
 
@@ -315,7 +355,7 @@ def test_glance_names_the_best_for_the_fleet_and_each_aircraft():
     text = Page(render_bases(result_of(made))).text
     assert "fleet: 1 × carb <b onclick=pwned>, 2 × jet <b onclick=pwned>" in text
     best = math.floor(made.usable("f0", ""))
-    assert f"Field 0 has the most: {best}\N{NARROW NO-BREAK SPACE}h a month" in text
+    assert f"Field 0 (steep) has the most: {best}\N{NARROW NO-BREAK SPACE}h a month" in text
     assert "beats" in text
     for caution in CAUTIONS:
         assert caution in text

@@ -10,6 +10,7 @@ from pathlib import Path
 
 import numpy as np
 import openpyxl
+import pandas as pd
 import pytest
 from sample_result import EMPTY_FIELD, HOSTILE, SEASONS, sample_result
 
@@ -21,8 +22,14 @@ from climarisk.outputs.texts import (
     MONTHS,
     flights_interval,
     flights_text,
+    gap_interval,
+    gap_text,
+    good_share_text,
+    hours_interval,
+    hours_text,
     load_class,
     mass_text,
+    told_apart,
 )
 from climarisk.outputs.workbook.book import write_workbook
 
@@ -72,12 +79,23 @@ def names_of(result) -> dict[str, str]:
     return {f.id: " ".join(f.name.split()) for f in result.fields}
 
 
+def told_names(result) -> dict[str, str]:
+    """Names of the fields where steepness is told behind them."""
+    names = names_of(result)
+    return {f.id: names[f.id] + (" (steep)" if f.is_steep else "") for f in result.fields}
+
+
 def down(value: float) -> int:
     return math.floor(value + 1e-6)
 
 
 def up(value: float) -> int:
     return math.ceil(value - 1e-6)
+
+
+def whole_days(share: float):
+    """A share of good days in whole per cent: only all of them are all."""
+    return pytest.approx(1.0 if share == 1.0 else min(99, down(share * 100)) / 100)
 
 
 def fill(cell) -> str:
@@ -153,7 +171,7 @@ def test_windows_are_those_of_the_frame_in_both_clocks(book, result):
         told = {
             figure: rows[plane, figure, field][MONTHS[row["month"] - 1]].value
             for figure in (
-                *("Hours of the day, LST", "First and last, civil clock", "Usable daylight hours"),
+                *("Hours of the day, LST", "The same, civil clock", "Usable daylight hours"),
                 *("90 % interval, low", "90 % interval, high", "Days with 4 h in a row"),
             )
         }
@@ -162,12 +180,13 @@ def test_windows_are_those_of_the_frame_in_both_clocks(book, result):
             continue
         hours, clock, usable, low, high, days = told.values()
         assert hours == (row["hours"].replace(" ", ", ") or "none")
-        assert clock == (f"{row['clock_first']} to {row['clock_last']}" if row["hours"] else "none")
+        sides = (text.replace(" ", ", ") for text in row["clock_hours"].split(" / "))
+        assert clock == (" / ".join(sides) if row["hours"] else "none")
         assert usable == down(row["usable_hours"])
         few = math.isnan(row["usable_low"])
         assert low == ("too few years" if few else down(row["usable_low"]))
         assert high == ("too few years" if few else up(row["usable_high"]))
-        assert days == pytest.approx(row["days_with_run"], rel=1e-12)
+        assert days == whole_days(row["days_with_run"])
 
 
 def test_hours_without_figures_are_told_beside_the_hours(result, tmp_path):
@@ -180,21 +199,37 @@ def test_hours_without_figures_are_told_beside_the_hours(result, tmp_path):
     assert row["Jan"].value == "06-19 (3 h no data)"
 
 
-def test_both_clock_times_are_told_where_the_clocks_change(tmp_path):
+def test_every_stretch_of_the_civil_clock_is_told_on_both_sides_of_a_change(tmp_path):
     base = sample_result(1, 1)
-    both = base.windows_monthly.assign(clock_first="05:00 / 06:00", clock_last="19:30 / 20:30")
+    both = base.windows_monthly.assign(
+        hours="04-12 17-20",
+        clock_hours="05:00-13:00 18:00-21:00 / 06:30-14:30 19:30",
+    )
     changed = replace(base, windows_monthly=both)
     book = written(changed, tmp_path)
-    [row] = [r for k, r in figures(book["Windows"], "Aircraft").items() if k[1].startswith("First")]
-    assert row["Mar"].value == "05:00 or 06:00 to 19:30 or 20:30"
-    assert "<small>05/06-19:30/20:30</small>" in render_report(changed)
+    [row] = [
+        r for k, r in figures(book["Windows"], "Aircraft").items() if k[1].startswith("The same")
+    ]
+    assert row["Mar"].value == "05:00-13:00, 18:00-21:00 / 06:30-14:30, 19:30"
+    assert row["Mar"].value.count("-") == 3
+    part = render_report(changed)
+    cell = re.search(r"04-12.*?<small>(.*?)</small>", part)[1]
+    assert re.sub("<[^>]+>", "", cell) == "05-13, 18-21\xa0/ 06:30-14:30, 19:30"
+    # No range breaks: each stands in an element of its own that does not wrap.
+    spans = re.findall(r'<span class="unbroken">([^<]*)</span>', cell)
+    assert spans == ["05-13", "18-21", "06:30-14:30", "19:30"]
 
 
 def test_icing_bands_stand_beside_whether_the_chart_was_verified(book, result):
     rows, names = figures(book["Carburettor icing"], "Basis"), names_of(result)
     assert {basis for basis, _, _ in rows} == {"chart not verified"}
+    # The bands in the order of the rows; the second figure adds up all that are serious.
+    assert list(dict.fromkeys(figure for _, figure, _ in rows))[:3] == [
+        *("Serious even in cruise", "Serious at least in descent"),
+        "Moderate in cruise, serious in descent",
+    ]
     labels = {
-        "serious_any_power": "Serious at any power",
+        "serious_any_power": "Serious even in cruise",
         "moderate_cruise_serious_descent": "Moderate in cruise, serious in descent",
         "serious_descent": "Serious in descent",
         "light_cruise_or_descent": "Light in cruise or descent",
@@ -235,7 +270,7 @@ def test_an_engine_without_a_method_is_not_called_no_data(tmp_path):
 
 
 def test_bases_and_differences_are_those_of_the_frames(book, result):
-    names, planes = names_of(result), PLANES | {"": "fleet"}
+    names, planes = told_names(result), PLANES | {"": "fleet"}
     for told, row in zip(
         table(book["Bases"], "Rank", "Field"), result.bases.to_dict("records"), strict=True
     ):
@@ -249,19 +284,26 @@ def test_bases_and_differences_are_those_of_the_frames(book, result):
             continue
         hours = down(row["usable_hours_month"])
         assert shown == [row["rank"], hours, down(row["ci_low"]), up(row["ci_high"])]
-        assert told["Days with 4 h in a row"].value == pytest.approx(row["days_with_run"])
+        days = told["Days with 4 h in a row"].value
+        assert days == whole_days(row["days_with_run"])
         steep = row["field"] in ("field-0", "field-3")
         assert ("\u2021" in told["Usable hours a month"].number_format) == steep
     pairs = table(book["Bases"], "Told apart", "First")
     for told, row in zip(pairs, result.base_differences.to_dict("records"), strict=True):
         assert told["First"].value == names[row["first"]]
         assert told["Second"].value == names[row["second"]]
-        assert told["Hours a month"].value == down(row["difference_hours_month"])
-        assert told["Told apart"].value == ("yes" if row["ci_low"] > 0 else "no")
+        hours = row["difference_hours_month"]
+        step = 10 if hours < 10 else 1
+        assert told["Hours a month"].value == pytest.approx(math.floor(hours * step + 0.5) / step)
+        for head, end, rounded in (("90 % interval, low", "ci_low", down), ("high", "ci_high", up)):
+            step = 10 if abs(row[end]) < 10 else 1
+            assert told[head].value == pytest.approx(rounded(row[end] * step) / step)
+        held = row["ci_low"] <= 0 <= row["ci_high"]
+        assert told["Told apart"].value == ("no" if held else "yes")
 
 
 def test_schedule_holds_every_flight_the_worst_first(book, result):
-    names, told = names_of(result), table(book["Schedule"], "Flight", "Field")
+    names, told = told_names(result), table(book["Schedule"], "Flight", "Field")
     rows = {row["flight"]: row for row in result.schedule_flights.to_dict("records")}
     assert {row["Flight"].value for row in told} == set(rows)
     shares = [r["Shortfall share"].value for r in told]
@@ -278,7 +320,10 @@ def test_schedule_holds_every_flight_the_worst_first(book, result):
         holds = row["mass_that_holds_kg"]
         expected = NOT_MET if row["outcome"] == NOT_MET else down(holds)
         assert cells["Mass that holds, kg"].value == expected
-        assert cells["Nearest time"].value == (row["nearest_time"] or "none")
+        assert cells["Nearest time"].value == (row["nearest_time"] or "none within 12 h")
+        assert cells["Note"].value == (row["note"] or "\N{EN DASH}")
+        words = {"takeoff": "take-off", "landing": "landing", "both": "take-off and landing"}
+        assert cells["Operation"].value == words[row["operation"]]
     seasons = table(book["Schedule"], "Season", "Flights")
     assert [s["Season"].value for s in seasons] == ["whole schedule", *SEASONS]
     days = table(book["Schedule"], "Day", "Weekday")
@@ -315,6 +360,15 @@ def test_sheets_of_absent_answers_are_absent(tmp_path):
     assert not {"Schedule", "Carburettor icing"} & set(book.sheetnames)
     rows = table(book["Bases"], "Rank", "Field")
     assert {r["Icing serious even in cruise"].value for r in rows} == {"no carburettor"}
+    # Of two aircraft one without: it has no figure, and that is not missing data.
+    other = replace(base.aircraft[0], id="aircraft-1", name="Other", carburettor=False)
+    none = base.bases.assign(aircraft="aircraft-1", icing_serious=np.nan)
+    half = replace(base, aircraft=(base.aircraft[0], other), bases=pd.concat([base.bases, none]))
+    rows = table(written(half, tmp_path)["Bases"], "Rank", "Field")
+    head = "Icing serious even in cruise (chart not verified)"
+    told = {(r["Aircraft"].value, isinstance(r[head].value, float)) for r in rows}
+    assert told == {("fleet", True), (half.aircraft[0].name, True), ("Other", False)}
+    assert {r[head].value for r in rows if r["Aircraft"].value == "Other"} == {"no carburettor"}
     page = render_report(plain)
     assert 'id="schedule"' not in page and "Carburettor icing" not in page
     assert not any(line.startswith("Schedule") for line in summary_lines(plain, tmp_path, []))
@@ -370,7 +424,7 @@ def ordered(result, values) -> list[str]:
 
 
 def test_report_tells_the_useful_load_of_every_month(report, result):
-    told = cells_of(report, "aircraft-2", "Weight that holds")
+    told = cells_of(report, "works-2", "Weight that holds")
     risk = result.risk_monthly[result.risk_monthly["aircraft"] == "aircraft-1"]
     own = result.weights_monthly[result.weights_monthly["aircraft"] == "aircraft-1"]
     width = 12 + len(SEASONS) + 1
@@ -385,7 +439,7 @@ def test_report_tells_the_useful_load_of_every_month(report, result):
 
 
 def test_report_tells_the_working_hours_of_every_month(report, result):
-    told = cells_of(report, "aircraft-1", "Hours of the day")
+    told = cells_of(report, "works-1", "Hours of the day")
     risk = result.risk_monthly[result.risk_monthly["aircraft"] == "aircraft-0"]
     own = result.windows_monthly[result.windows_monthly["aircraft"] == "aircraft-0"]
     for n, field in enumerate(ordered(result, risk)):
@@ -406,7 +460,7 @@ def test_report_shows_thirty_flights_and_says_how_many_more(result):
     assert len(re.findall(r">F\d+</bdi>", part)) == 30
     assert "Further rows of flights: 40;" in part
     # Never met stand first: each of the two of the sample five times.
-    assert part.count("<b>never met</b>") == 5 * (flights["never_met"] == "yes").sum()
+    assert part.count("<small>never met</small>") == 5 * (flights["never_met"] == "yes").sum()
 
 
 def test_report_tells_icing_with_its_basis_and_power(report):
@@ -418,11 +472,11 @@ def test_report_tells_icing_with_its_basis_and_power(report):
 # Summary and layers
 
 
-def test_summary_tells_base_weight_and_schedule_in_six_lines(result):
+def test_summary_tells_base_weight_and_schedule_in_seven_lines(result):
     lines = summary_lines(result, Path("maps"), [])
     start = next(n for n, line in enumerate(lines) if line.startswith("Best base"))
     end = next(n for n, line in enumerate(lines) if line.startswith("Data: "))
-    assert end - start <= 6
+    assert end - start <= 7
     fleet = result.bases[result.bases["aircraft"] == ""].iloc[0]
     assert fleet["field"] == "field-0"  # which slopes 3.5 %
     hours = down(fleet["usable_hours_month"])
@@ -432,11 +486,13 @@ def test_summary_tells_base_weight_and_schedule_in_six_lines(result):
     whole = result.schedule_seasons.iloc[0]
     text = " ".join(line.strip() for line in lines[start + 4 : end])
     ends = f"{math.floor(whole['ci_low'])}-{math.ceil(whole['ci_high'])}"
-    hit = math.ceil(whole["affected"])
+    hit, gone = math.floor(whole["affected"] + 0.5), whole["unknown_flights"]
     assert text.startswith(
-        f"Schedule: {hit} of {whole['flights']} flights are expected to fall short (90 %: {ends})."
+        f"Schedule: {hit} of the {whole['flights'] - gone} flights with figures are expected to "
+        f"fall short (90 %: {ends})."
     )
-    assert f"{whole['unknown_flights']} have no figures" in text
+    assert f"{gone} flights have no figures: that does not mean no risk." in text
+    assert text.endswith("can never be met at the mass planned.")
     assert all(columns(line) <= 80 for line in lines)
 
 
@@ -482,6 +538,61 @@ def test_rounding_never_flatters():
     assert mass_text(719.99) == "719 kg"
     assert mass_text(0.29 * 100 * 10) == "290 kg"  # a float below 290
     assert mass_text(math.nan) == "no data"
-    assert flights_text(4.01) == "4.1" and flights_text(12.01) == "13" and flights_text(0.0) == "0"
+    assert hours_text(359.99) == "359\N{NARROW NO-BREAK SPACE}h" and hours_text(math.nan) == ""
+    assert hours_interval(12.9, 20.1) == "12-21" and hours_interval(-1e-13, 0.0) == "0"
+    # Of good things only all of them are all; rare ones are not none.
+    for share, text in ((0.999, "99 %"), (1.0, "100 %"), (0.29, "29 %"), (0.296, "29 %"),
+                        (0.004, "< 1 %"), (0.0, "0 %"), (math.nan, "no data")):  # fmt: skip
+        assert good_share_text(share) == text
+
+
+@pytest.mark.parametrize(
+    ("value", "text"),
+    [(4.04, "4.0"), (4.05, "4.1"), (12.51, "13"), (9.94, "9.9"), (9.95, "10"), (0.0, "0"),
+     (0.04, "< 0.1"), (0.05, "0.1"), (1234.4, "1,234")],
+)  # fmt: skip
+def test_expected_numbers_have_a_decimal_below_ten_and_are_the_nearest(value, text):
+    assert flights_text(value) == text
+    assert gap_text(value) == f"{text} h"
+
+
+@pytest.mark.parametrize(
+    ("ends", "text"),
+    [((3.91, 7.11), "3.9-7.2"), ((8.2, 17.1), "8.2-18"), ((9.99, 10.01), "9.9-11"),
+     ((0.0, 0.0), "0"), ((0.01, 0.02), "0-0.1"), ((math.nan, 7.1), "none")],
+)  # fmt: skip
+def test_interval_of_flights_is_rounded_outwards(ends, text):
+    assert flights_interval(*ends) == text
+
+
+def test_interval_of_a_difference_is_rounded_outwards_and_judged_unrounded():
+    minus = "\N{MINUS SIGN}"
+    assert gap_interval(-4.21, 9.13) == f"{minus}4.3 to 9.2"
+    assert gap_interval(-10.2, -0.01) == f"{minus}11 to 0"
+    assert told_apart(-10.2, -0.01) and told_apart(0.01, 3.0)
+    assert not told_apart(0.0, 3.0) and not told_apart(-3.0, 0.0)
     assert flights_text(math.nan) == "no data"
-    assert flights_interval(3.9, 7.1) == "3-8" and flights_interval(math.nan, 7.1) == "none"
+
+
+def test_seasons_without_a_flight_are_left_out(result, tmp_path):
+    seasons = result.schedule_seasons.copy()
+    seasons.loc[seasons["season"] == SEASONS[0], "flights"] = 0
+    changed = replace(result, schedule_seasons=seasons)
+    told = table(written(changed, tmp_path)["Schedule"], "Season", "Flights")
+    assert [s["Season"].value for s in told] == ["whole schedule", *SEASONS[1:]]
+    page = render_report(changed)
+    part = page[page.index('id="schedule"') :]
+    part = part[part.index("<caption>By season") : part.index("</table>")]
+    assert SEASONS[0] not in part and html.escape(SEASONS[1]) in part
+
+
+def test_report_marks_steep_fields_and_notes_of_the_schedule(report, result):
+    part = report[report.index('id="schedule"') : report.index('id="air"')]
+    flights = result.schedule_flights
+    assert part.count('class="mark">steep<') == (flights["steep"] == "yes").sum()
+    for note, rows in flights[flights["note"] != ""].groupby("note"):
+        assert part.count(f"<small>{html.escape(str(note))}</small>") == len(rows)
+    assert (flights["note"] != "").any()
+    bases = report[report.index('id="bases"') : report.index('id="schedule"')]
+    assert bases.count('<small class="mark">steep<') == 2
+    assert "</bdi> (steep)</b> comes first" in bases

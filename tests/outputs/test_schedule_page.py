@@ -29,6 +29,7 @@ USUAL = {
     "limiting": "take-off to 50 ft", "holds_in": 0.9, "mass_that_holds_kg": 701.9,
     "useful_load_kg": 181.9, "outcome": "mass", "nearest_time": "11:00", "nearest_shift_h": -3.0,
     "nearest_shortfall": 0.04, "never_met": "no", "interval_note": "",
+    "steep": "", "note": "",
 }  # fmt: skip
 NOTHING = dict.fromkeys(
     ["shortfall", "ci_low", "ci_high", "affected", "mass_that_holds_kg", "useful_load_kg",
@@ -83,7 +84,7 @@ def words(html):
 def test_headline_says_how_many_of_how_many_with_interval_and_worst_year():
     text = words(page(row("A")))
     assert "Of 56 flights with figures about 12 would fall short." in text
-    assert "90 % interval 8-18, with all flights sharing" in text
+    assert "90 % interval 8.2-18, with all flights sharing" in text
     assert "In the best year of the record 4.0, in the worst, 2019, 21." in text
     assert "4 flights without figures" in text and CAUTIONS[0] in text
 
@@ -93,6 +94,16 @@ def test_row_shows_share_interval_check_mass_and_nearest_time():
     assert "25 % 18-31 % about 5.0 of 20 take-off to 50 ft 701 kg useful load 181 kg" in text
     assert "useful load 181 kg 11:00 3 h earlier, 4 %" in text
     assert "701 kg holds in 90 % of the hours; at 11:00 4 % fall short." in text
+
+
+def test_steep_fields_and_notes_are_told_with_the_flight():
+    name = RESULT.fields[0].name
+    text = words(page(row("A", steep="yes", note="outside the hours window")))
+    assert f"{name} (steep) 14:00: about 5.0 of 20" in text
+    assert f"A {name} steep " in text and "needs a site-specific procedure" in text
+    assert "20 flights outside the hours window" in text
+    plain = words(page(row("A")))
+    assert "(steep)" not in plain and "outside the hours" not in plain.split("Behind the")[0]
 
 
 def test_flight_that_can_never_be_met_is_told_as_such():
@@ -105,6 +116,7 @@ def test_flight_that_can_never_be_met_is_told_as_such():
     assert (
         "short in every hour of the record, take-off to 50 ft. No tabulated mass would do." in text
     )
+    assert "Flights that can never be met at the mass planned" in text
     assert "cannot be met at any tabulated mass none within 12 h" in text
     assert "None: every flight with figures was possible" not in text
     assert "None: every flight with figures was possible" in words(page(row("A")))
@@ -129,7 +141,7 @@ def test_flight_without_figures_is_no_data_and_not_zero():
 
 @pytest.mark.parametrize(
     ("affected", "told"),
-    [(0.0, "about 0 of"), (0.04, "about < 0.1 of"), (0.25, "about 0.2 of"), (9.96, "about 10 of")],
+    [(0.0, "about 0 of"), (0.04, "about < 0.1 of"), (0.25, "about 0.3 of"), (9.96, "about 10 of")],
 )
 def test_expected_numbers_are_rounded_and_small_ones_are_not_zero(affected, told):
     assert told in words(page(row("A", affected=affected)))
@@ -153,7 +165,7 @@ def test_days_and_seasons_stand_in_their_tables():
         "2027-07-18 Sun 9 (1 unknown) 2.4 30 %" in text
         and "2027-07-19" not in text.split("By season")[0].split("Worst days")[1]
     )
-    assert "JJA 40 11 8-16 4.0 19 (2019)" in text and "DJF" not in text
+    assert "JJA 40 11 8.0-16 4.0 19 (2019)" in text and "DJF" not in text
 
 
 def test_many_rows_are_cut_and_the_cut_is_told():

@@ -11,7 +11,7 @@ import pytest
 from sample_result import EMPTY_FIELD, LONG_NAME, sample_result
 
 from climarisk.findings import Finding
-from climarisk.outputs.summary import columns, cut, summary_lines
+from climarisk.outputs.summary import bases_lines, columns, cut, schedule_lines, summary_lines
 
 FOLDER = Path("maps") / "strips"
 FILES = [
@@ -113,7 +113,7 @@ def test_each_aircraft_shows_three_distinct_fields_among_few_and_one_among_many(
     assert len(below(three, "Tourer")) == 2
     many = summary_lines(sample_result(8, 7), FOLDER, FILES)
     assert "2 aircraft more: see the map." in many
-    assert sum(" at " in line and line.startswith("  ") for line in many) == 5
+    assert sum(" at " in line and line[:8].endswith("%") for line in many) == 5
 
 
 def test_aircraft_that_are_left_out_are_not_the_worst_ones():
@@ -153,13 +153,11 @@ def test_steep_fields_are_never_counted_as_usable(result):
     # The sample's fields 0 and 3 slope 3.5 %.
     lines = summary_lines(with_shares(result, {}, 0.0), FOLDER, FILES)
     assert "Two-seat trainer (invented): < 1 % all year at all 4 fields not steep" in lines
-    assert "Never counted as usable: 2 steep fields, which need a procedure of their own." in lines
+    assert "2 steep fields need a procedure of their own: no figure there is a pass." in lines
     (one,) = [
-        line
-        for line in summary_lines(sample_result(3), FOLDER, FILES)
-        if line.startswith("Never counted")
+        line for line in summary_lines(sample_result(3), FOLDER, FILES) if "steep field" in line
     ]
-    assert one.endswith(": 1 steep field, which needs a procedure of its own.")
+    assert one == "1 steep field needs a procedure of its own: no figure there is a pass."
 
 
 def test_rare_hours_are_not_called_none(result):
@@ -286,11 +284,27 @@ def test_no_findings_and_notes_only(result):
 def test_files_are_where_they_were_written(result, lines):
     assert lines[-2:] == [
         f"Map: {FOLDER / 'map.html'}",
-        "Beside it: tables.xlsx (workbook), report.html (to print), 1 CSV table.",
+        "Beside it: report.html (to print), tables.xlsx (workbook), 1 CSV table.",
     ]
     deep = Path("a" * 90) / "b"
     last = summary_lines(result, deep, [deep / "map.html", deep / "risk_monthly.csv"])[-2:]
     assert last == [f"Map: {deep / 'map.html'}", "Beside it: 1 CSV table."]
+
+
+def test_pages_of_bases_and_schedule_are_named_in_the_order_of_their_reading(result):
+    names = ["a.csv", "schedule.html", "tables.xlsx", "bases.html", "report.html", "map.html"]
+    lines = summary_lines(result, FOLDER, [FOLDER / name for name in names])
+    at = next(n for n, line in enumerate(lines) if line.startswith("Beside it"))
+    assert " ".join(line.strip() for line in lines[at:]) == (
+        "Beside it: report.html (to print), bases.html (bases), schedule.html (flights), "
+        "tables.xlsx (workbook), 1 CSV table."
+    )
+    assert all(columns(line) <= 80 for line in lines[at:])
+    alone = bases_lines(result, FOLDER, [FOLDER / "bases.html", FOLDER / "bases.csv"])
+    assert alone[-1] == "Beside it: bases.html (bases), 1 CSV table."
+    frames = {n: getattr(result, n) for n in ("schedule_flights", "schedule_seasons")}
+    flights = schedule_lines(frames, 0.9, FOLDER, [FOLDER / "schedule.html"])
+    assert flights[-2:] == [f"Files: {FOLDER}", "Beside it: schedule.html (flights)."]
 
 
 # ---------------------------------------------------------------- names

@@ -7,6 +7,7 @@ leave the folder, links and odd files are told and never opened.
 from __future__ import annotations
 
 import json
+import os
 import platform
 import sqlite3
 import stat
@@ -84,7 +85,7 @@ def check_evidence(
     manifest = _manifest(folder)
     listed = _listed(manifest, folder)
     problems = _file_problems(folder, listed)
-    if not problems:
+    if not problems and _has_zip(folder):
         problems = _zip_problems(folder, [*listed, MANIFEST])
     if problems:
         return _few(problems)
@@ -122,6 +123,10 @@ def _refused(folder: Path, why: str) -> InputError:
 def _manifest(folder: Path) -> dict[str, Any]:
     """The manifest of a folder, its shape checked."""
     path = folder / MANIFEST
+    if folder.is_file():
+        packed = folder.suffix.lower() == ".zip"
+        advice = "unpack it and name the folder" if packed else "name the folder that holds it"
+        raise InputError(f"{folder}: this is a file, and what is checked is a folder; {advice}.")
     if not folder.is_dir():
         raise _refused(folder, "there is no such folder")
     if _odd(folder, MANIFEST):
@@ -156,6 +161,11 @@ def _listed(manifest: Mapping[str, Any], folder: Path) -> dict[str, _Listed]:
     return found
 
 
+def _has_zip(folder: Path) -> bool:
+    """Whether the zip is there; of an unpacked one it is not."""
+    return os.path.lexists(folder / ZIP)
+
+
 def _shown(name: str) -> str:
     return repr(name if len(name) <= 80 else name[:77] + "...")
 
@@ -183,7 +193,8 @@ def _file_problems(folder: Path, listed: Mapping[str, _Listed]) -> list[str]:
         if name not in known
     ]
     found = {name: _file_problem(folder, name, told) for name, told in listed.items()}
-    found[ZIP] = _odd(folder, ZIP)
+    if _has_zip(folder):
+        found[ZIP] = _odd(folder, ZIP)
     return problems + [f"{_shown(name)} {problem}." for name, problem in found.items() if problem]
 
 

@@ -7,8 +7,10 @@ every file.  The same input gives the same bytes: no clock, no absolute path.
 
 from __future__ import annotations
 
+import errno
 import hashlib
 import json
+import os
 import platform
 import shutil
 import tempfile
@@ -63,6 +65,8 @@ _NOTE = (
     "The bytes of fields.gpkg and tables.xlsx also depend on the libraries named here; where they "
     "differ, the check compares rows and parts instead of bytes."
 )
+_FREE = "Free some space, or choose another folder"
+_ANOTHER = "The folder may be in use or not be yours to replace: choose another"
 #: A zip knows no time before this one.
 _FIXED_TIME = (1980, 1, 1, 0, 0, 0)
 
@@ -126,7 +130,7 @@ def write_evidence(
         Of that study with that weather.
     report : VerificationReport
     folder : Path
-        Absent, empty, or an earlier evidence with nothing else in it.
+        Absent, empty, or an earlier evidence with nothing else in it; a link is written through.
     progress : callable
 
     Returns
@@ -254,9 +258,14 @@ def refuse_foreign(folder: Path) -> None:
     Raises
     ------
     OutputError
-        It is a file, or something in it is not part of an evidence.
+        It is a file, something in it is not part of an evidence, or it is worked in.
     """
     folder = Path(folder)
+    if _is_worked_in(folder):
+        raise OutputError(
+            f"{folder}: the folder is replaced as a whole, which cannot be while it is or holds "
+            "the one this command runs in; choose another with --out, or run it from elsewhere."
+        )
     if folder.exists() and not folder.is_dir():
         raise OutputError(f"{folder}: this is a file; name a folder for the evidence with --out.")
     if not folder.is_dir():
@@ -271,6 +280,14 @@ def refuse_foreign(folder: Path) -> None:
         )
 
 
+def _is_worked_in(folder: Path) -> bool:
+    """Whether the folder is, or holds, the current one."""
+    try:
+        return Path(os.path.realpath(Path.cwd())).is_relative_to(os.path.realpath(folder))
+    except OSError:  # the current folder is gone
+        return False
+
+
 def _listed(folder: Path) -> set[str]:
     """Files that the manifest of an earlier evidence names; none where there is no such thing."""
     try:
@@ -283,9 +300,13 @@ def _listed(folder: Path) -> set[str]:
 
 
 def _replace_folder(folder: Path, write: Callable[[Path], list[str]]) -> list[str]:
-    """Write a folder beside its place and put it there whole; on failure the old one stays."""
-    staging = None
+    """Write a folder beside its place and put it there whole; on failure the old one stays.
+
+    A link to a folder stays: the folder that it names is replaced.
+    """
+    staging, told = None, folder
     try:
+        folder = Path(os.path.realpath(folder))
         folder.parent.mkdir(parents=True, exist_ok=True)
         staging = Path(tempfile.mkdtemp(prefix=".climarisk-", dir=folder.parent))
         new, old = staging / "new", staging / "old"
@@ -300,9 +321,10 @@ def _replace_folder(folder: Path, write: Callable[[Path], list[str]]) -> list[st
                 old.rename(folder)
             raise
     except OSError as error:
+        full = error.errno in (errno.ENOSPC, errno.EDQUOT)
         raise OutputError(
-            f"{folder}: the evidence cannot be written ({error.strerror or error}); what was "
-            "there stands as it was. Free some space, or choose another folder with --out."
+            f"{told}: the evidence cannot be written ({error.strerror or error}); what was there "
+            f"stands as it was. {_FREE if full else _ANOTHER} with --out."
         ) from None
     finally:
         if staging is not None:

@@ -11,6 +11,7 @@ from climarisk.outputs.evidence.sources import (
     EQUATIONS,
     LIMITS,
     OTHER_FACTORS,
+    RECALLED_BESIDES,
     SCALED,
     SENSITIVITY,
     surface_factors,
@@ -33,6 +34,11 @@ _WIDTHS = (
     ".aircraft thead th{width:11%}.aircraft thead th:nth-child(1){width:20%}"
     ".aircraft thead th:nth-child(2){width:30%}.aircraft thead th:nth-child(n+5){width:10%}"
     ".tried thead th{width:20%}.tried thead th:nth-child(2){width:80%}"
+)
+
+_RECALLED_WORDS = (
+    "The main figures and sources that are recalled and were not read; hold them against the "
+    "documents before relying on them."
 )
 
 
@@ -191,7 +197,8 @@ def _data(study: Study, result: StudyResult) -> Html:
             "ul",
         ),
         el("h2", "From memory"),
-        _prose(_recalled(result), "ul"),
+        el("p", _RECALLED_WORDS, class_="quiet"),
+        _prose(_recalled(study, result), "ul"),
         el("h2", "Limits"),
         _prose(LIMITS),
         el("h2", "Cautions"),
@@ -214,8 +221,8 @@ def _weather_words(study: Study) -> str:
     return "The hours come from the archive files whose SHA-256 and size stand in inputs.csv."
 
 
-def _recalled(result: StudyResult) -> list[object]:
-    """Everything that is recalled and not read, in one place."""
+def _recalled(study: Study, result: StudyResult) -> list[object]:
+    """What is recalled and not read and shapes the figures most, in one place."""
     recalled: list[object] = [
         f"{name}: {source}." for name, _, source, known in EQUATIONS if "memory" in known
     ]
@@ -224,7 +231,8 @@ def _recalled(result: StudyResult) -> list[object]:
         for surface, _, _, source, known in surface_factors()
         if "memory" in known
     ]
-    recalled.append("Thresholds of patchy months: WMO-No. 1203 (2017).")
-    if len(result.icing_monthly) and verified("chart") != "yes":
+    recalled += RECALLED_BESIDES
+    charted = len(result.icing_monthly) and study.planning.carburettor_icing == "chart"
+    if charted and verified("chart") != "yes":
         recalled.append(["Carburettor-icing zones: ", chart_source()])
     return recalled

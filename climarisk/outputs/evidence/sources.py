@@ -20,18 +20,23 @@ from climarisk.atmosphere import (
 from climarisk.daylight import CIVIL_TWILIGHT_DEG
 from climarisk.extremes import MINIMUM_MAXIMA
 from climarisk.lapse import MINIMUM_SPAN_M, MINIMUM_STATIONS
+from climarisk.occasions import HALF_WINDOW_DAYS
 from climarisk.performance import (
     LANDING_SURFACE,
     OUTSIDE_MARGIN,
     SLOPE_PER_PCT,
     TAKEOFF_SURFACE,
 )
+from climarisk.pressure import BAROMETER_HPA, SYNOPTIC_SD_HPA
+from climarisk.quality import RANGES
 from climarisk.risk import RESAMPLES
 from climarisk.rules import DAYS, MONTH, YEARS
 from climarisk.scenarios import REGULATORY_TAKEOFF
+from climarisk.schedule import MOST_SHIFT_H
 from climarisk.transfer import MAXIMUM_HEIGHT_DIFFERENCE_M, ON_SPOT_KM, ON_SPOT_M
 from climarisk.transfer_error import BASE_SD_K, HEIGHT_SD_K_PER_KM, LEVELS
 from climarisk.trend import TREND_YEARS
+from climarisk.weights import BIN_KG
 
 #: How a source is known.
 READ = "read in the source, or in a copy of the part used"
@@ -182,8 +187,44 @@ DECISIONS = (
     f"Percentiles from fewer than {YEARS.percentiles} years are marked, the outer ones from fewer "
     f"than {YEARS.extreme_percentiles}; below {YEARS.interval} years there is no interval, below "
     f"{YEARS.settled_interval} it is marked ({YEARS.source}).",
+    "The mass that holds is looked for up to the maximum mass and the heaviest table of each "
+    "operation, never below the empty mass; an hour in which no tabulated mass would do counts as "
+    "one without a mass. Landing is reckoned at the mass of the take-off. Its interval resamples "
+    f"whole years and the persistent part of the error, to {BIN_KG:g} kg, widened outwards.",
+    "An hour of the day is usable where its shortfall share is below the target and the hours "
+    "window holds it on some day of the month. A day has a run where enough hours in a row, inside "
+    "the window, do not fall short; an hour without a value breaks a run.",
+    "Fields are ranked as bases by usable hours a month: the mean over the twelve months of the "
+    "hours that the window offers times one less the shortfall share, and of the fleet the mean "
+    "over its aeroplanes. A difference of two fields resamples the same years for both and leaves "
+    "out what may persist in the error of carried air; each field is judged by its own years.",
+    "For a date of the schedule stand the hours of the record at its hour of local standard time "
+    f"on the {2 * HALF_WINDOW_DAYS + 1} days around it, in every year. Every date counts the same; "
+    "flights expected to fall short are their number times the share. The flights have their "
+    "weather in common, so that years are resampled for all of them together. Another clock time "
+    f"is looked for up to {MOST_SHIFT_H} hours to either side.",
+    "Carburettor icing is told of daylight hours, by zones of temperature and dew point of the "
+    "surface air, or where the study asks for it by a screening: the vapour beyond saturation over "
+    "ice in a throat colder than the air by an assumed drop, which is no published chart.",
     "Quality control is gross on purpose: ranges, single-hour spikes, values stuck for days, "
     "default pressures. An odd hour that could be weather stays.",
+)
+
+#: What is recalled and stands in no table of the statement.
+RECALLED_BESIDES = (
+    f"Error of a barometer, {BAROMETER_HPA:g} hPa: WMO-No. 8, operational uncertainty.",
+    f"Spread of QNH from day to day where nothing is known, {SYNOPTIC_SD_HPA:g} hPa: the upper "
+    "end of 3 to 5 hPa.",
+    "Ranges outside which a value is rejected, air temperature "
+    f"{RANGES['temperature_c'][0]:g} to {RANGES['temperature_c'][1]:g} degC, dew point "
+    f"{RANGES['dew_point_c'][0]:g} to {RANGES['dew_point_c'][1]:g} degC, sea-level pressure "
+    f"{RANGES['sea_level_pressure_hpa'][0]:g} to {RANGES['sea_level_pressure_hpa'][1]:g} hPa: "
+    "beyond the extremes in the archive of the World Meteorological Organization, and beyond a "
+    "record dew point.",
+    "How far the mean sea-level pressure strays at high latitudes, up to some 30 hPa: the "
+    "allowance for the pressure of a station without a neighbour there.",
+    f"Thresholds of counting days: {DAYS.source}.",
+    f"Thresholds of patchy months: {MONTH.source}.",
 )
 
 _LEAFLET = "UK CAA Safety Sense Leaflet 7c (2013)"

@@ -52,11 +52,36 @@ FILES = {
     "schedule.html": "the schedule, made to be printed",
     "schedule_flights.csv": "the schedule flight by flight",
     "schedule_seasons.csv": "affected flights by season",
-    "schedule_days.csv": "affected flights by day of the record",
+    "schedule_days.csv": "affected flights by day of the schedule",
     "trends.csv": "trends by season, with the test for a step",
     "extremes.csv": "return levels of density altitude",
 }
+#: What the check does not reckon again but holds by its digest alone.
+HELD_BY_DIGEST = (
+    "pages, workbook, layers and pictures, and the tables of trends, extremes, station use and "
+    "verification"
+)
 _WIDTH = 92
+
+
+def check_words(repeated: bool) -> str:
+    """What was checked of an evidence that holds, without the stop at the end.
+
+    Parameters
+    ----------
+    repeated : bool
+        The study was run again.
+    """
+    held = (
+        "every file has the size and SHA-256 listed, and the tables reckoned again from one "
+        "another agree"
+    )
+    if repeated:
+        return f"{held}; run again, the study gives the same files"
+    return (
+        f"{held}; {HELD_BY_DIGEST} are held by their SHA-256 alone, since the study was not run "
+        "again: name it with --study"
+    )
 
 
 def readme_text(study: Study, names: Sequence[str], runnable: bool) -> str:
@@ -87,9 +112,11 @@ def readme_text(study: Study, names: Sequence[str], runnable: bool) -> str:
         "TO CHECK IT",
         "    climarisk evidence --check ." + ("" if runnable else " --study STUDY.toml"),
         _wrapped(
-            "The check holds every file against its digest in manifest.json and against the zip, "
-            "recomputes the tables from one another by a routine of its own, and repeats the study "
-            + ("from inputs/." if runnable else "where it is given.")
+            "The check holds every file against its digest in manifest.json and against the zip "
+            "where it is there, reckons the tables again from one another by a routine of its own, "
+            "and runs the study again "
+            + ("from inputs/" if runnable else "where it is given")
+            + f". Without that run, {HELD_BY_DIGEST} are held by their digest alone."
             + " A digest shows that nothing changed since the evidence was written, not who wrote "
             "it: file the SHA-256 of evidence.zip where it cannot be changed."
         ),
@@ -135,4 +162,4 @@ def _repeat(study: Study, runnable: bool) -> str:
 
 def _command(study: Study, runnable: bool) -> str:
     where = f"inputs/{clean(study.path.name)}" if runnable else "STUDY.toml"
-    return f"climarisk evidence {where} --out again"
+    return f"climarisk evidence {where} --out ../again"

@@ -14,7 +14,7 @@ function showCompareBar() {
   byId("compare-open").textContent = count < 2 ? "Compare fields" : "Compare " + count + " fields";
   byId("compare-note").textContent =
     count < 2
-      ? "Tick two to " + MOST_COMPARED + " fields to see them on one chart."
+      ? "Tick 2 to " + MOST_COMPARED + " fields to see them on one chart."
       : state.compare.map((index) => givenString(STUDY.fields[index].name)).join(", ");
 }
 

@@ -4,6 +4,8 @@ const STUDY = JSON.parse(byId("study").textContent);
 const NO_BYTE = 255;
 const NO_FEET = -32768;
 const NO_WORD = 65535;
+// Stands for a share of something good that is above none and below 1 %.
+const BELOW_ONE = 101;
 const LOWEST_MARGIN = -100;
 const HIGHEST_MARGIN = LOWEST_MARGIN + NO_BYTE - 1;
 

@@ -68,7 +68,7 @@ function icingGrid(field) {
 }
 
 function icingHow() {
-  const { method, serious } = PLANNING.icing;
+  const { method } = PLANNING.icing;
   const how =
     method === "chart"
       ? "by zones of temperature and dew point"
@@ -77,9 +77,7 @@ function icingHow() {
     "Share of the daylight hours whose surface air lies in each band, " +
     how +
     ". An exposure of the air, not of an engine: ice needs no cloud, comes soonest at low power, and its signs, " +
-    "the use of carburettor heat and the flight manual go before this table. Serious even in cruise: " +
-    serious.join("; ") +
-    "."
+    "the use of carburettor heat and the flight manual go before this table."
   );
 }
 

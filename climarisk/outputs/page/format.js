@@ -29,7 +29,8 @@ const MEASURES = {
   weight: {
     name: "Weight that holds",
     short: "Useful load",
-    sentence: () => "Useful load that holds in " + percent(STUDY.planning.holdsIn) + " of the hours",
+    sentence: (time) =>
+      "Useful load that holds in " + percent(STUDY.planning.holdsIn) + " of the hours" + stepWords(time),
     unit: () => "kg, rounded down",
     ofAircraft: true,
     text: loadText,
@@ -85,6 +86,12 @@ function percentNumber(share) {
 function percent(share) {
   if (share === null) return NO_DATA;
   return percentNumber(share).replace("<", "< ") + " %";
+}
+
+// A share of something good: whole per cent, rounded down when it was packed.
+function percentDown(code) {
+  if (code === null) return NO_DATA;
+  return code === BELOW_ONE ? "< 1 %" : code + " %";
 }
 
 // Nothing below "all of them" is shown as all of them.
@@ -181,20 +188,4 @@ function marginText(margin) {
   if (margin === null) return "\u2013";
   if (margin >= HIGHEST_MARGIN) return ">" + (HIGHEST_MARGIN - 1);
   return margin < 100 ? signedWhole(margin) : grouped(margin); // three digits leave no room for a sign
-}
-
-// Hours that follow one another, as "06:00-10:00"; the label of an hour is its full hour.
-function hourRanges(hours) {
-  const runs = [];
-  for (const hour of hours) {
-    const run = runs[runs.length - 1];
-    if (run && run[1] === hour - 1) run[1] = hour;
-    else runs.push([hour, hour]);
-  }
-  // Across midnight.
-  if (runs.length > 1 && runs[0][0] === 0 && runs[runs.length - 1][1] === 23)
-    runs[runs.length - 1][1] = runs.shift()[1];
-  return runs
-    .map(([first, last]) => hourText(first) + (last === first ? "" : "-" + hourText(last)))
-    .join(", ");
 }

@@ -52,6 +52,13 @@ function massOf(load, profile) {
   return Math.floor(profile.emptyKg + load);
 }
 
+// The steps in which loads and masses travel, where they are coarser than what is shown.
+function stepWords(time) {
+  const { fineKg, coarseKg } = STUDY.aircraft[state.aircraft];
+  const step = time === "hour" ? coarseKg : fineKg;
+  return step > 1 ? ", in steps of " + step + " kg" : "";
+}
+
 function massText(load, profile) {
   if (load === null || load === NOT_MET) return load === null ? NO_DATA : NOT_MET_TEXT;
   return grouped(massOf(load, profile)) + " kg, useful load " + loadText(load);

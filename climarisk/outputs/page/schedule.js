@@ -25,64 +25,72 @@ const FLIGHT_ORDERS = {
   time: { name: "By clock time", compare: byText("clock_time") },
 };
 
-// Flights expected to be affected: a tenth at most, rounded up.
-function flightsText(count) {
-  if (count === null) return NO_DATA;
-  if (count >= 10) return grouped(Math.ceil(count - 1e-9));
-  return String(Math.ceil(count * 10 - 1e-9) / 10);
+function flightEnds(low, text) {
+  return low === null ? "no interval" : text;
 }
 
-function flightEnds(low, high) {
-  if (low === null || high === null) return "no interval";
-  return flightsText(Math.floor(low)) + "-" + grouped(Math.ceil(high));
+function headlineText({ told, flights, unknown_flights: unknown }) {
+  if (unknown >= flights)
+    return [el("b", null, NO_DATA), el("span", null, "for any of " + grouped(flights) + " flights")];
+  const known = grouped(flights - unknown);
+  return [
+    el("b", null, told + " of " + (unknown ? "the " : "") + known),
+    el(
+      "span",
+      null,
+      (unknown ? "flights with figures" : "flights") +
+        " are expected to fall short" +
+        (PLANNING.year ? " in " + PLANNING.year : ""),
+    ),
+  ];
+}
+
+function neverText() {
+  const { never } = PLANNING.schedule;
+  if (!never) return "none";
+  return (
+    grouped(never) +
+    (never === 1 ? " row" : " rows") +
+    " of the schedule fell short in every hour of the record at the mass planned"
+  );
 }
 
 function scheduleHeadline() {
   const whole = SCHEDULE_SEASONS.find((row) => !row.season);
-  if (!whole) return null;
+  if (!whole || !whole.flights) return null;
   const unknown = whole.unknown_flights;
-  const { never } = PLANNING.schedule;
-  return el(
-    "div",
-    { class: "headline" },
-    el(
-      "p",
-      { class: "big" },
-      el("b", null, flightsText(whole.affected) + " of " + grouped(whole.flights)),
-      el("span", null, "flights are expected to fall short" + (PLANNING.year ? " in " + PLANNING.year : "")),
-    ),
-    factList([
-      [
-        confidenceText(),
-        flightEnds(whole.ci_low, whole.ci_high) + (whole.interval_note ? ", " + whole.interval_note : ""),
-      ],
-      [
-        "Best and worst year",
-        flightEnds(whole.year_low, whole.year_high) + (whole.worst_year ? ", worst " + whole.worst_year : ""),
-      ],
-      [
-        "Without figures",
-        unknown ? grouped(unknown) + " flights: not counted, that does not mean no risk" : "none",
-      ],
-      [
-        "Never met",
-        never
-          ? grouped(never) +
-            (never === 1 ? " row" : " rows") +
-            " of the schedule fell short in every hour of the record"
-          : "none",
-      ],
-    ]),
-  );
+  const facts = [
+    [
+      "Without figures",
+      unknown
+        ? grouped(unknown) +
+          " of " +
+          grouped(whole.flights) +
+          " flights: not counted; that does not mean no risk"
+        : "none",
+    ],
+    ["Never met at the mass planned", neverText()],
+  ];
+  if (whole.year_low !== null)
+    facts.unshift([
+      "Best and worst year",
+      whole.told_years + (whole.worst_year ? ", worst " + whole.worst_year : ""),
+    ]);
+  if (unknown < whole.flights)
+    facts.unshift([
+      confidenceText(),
+      flightEnds(whole.ci_low, whole.told_ends) + (whole.interval_note ? ", " + whole.interval_note : ""),
+    ]);
+  return el("div", { class: "headline" }, el("p", { class: "big" }, headlineText(whole)), factList(facts));
 }
 
 function scheduleSeasons() {
-  const rows = SCHEDULE_SEASONS.filter((row) => row.season).map((row) => [
+  const rows = SCHEDULE_SEASONS.filter((row) => row.season && row.flights).map((row) => [
     given(row.season),
     grouped(row.flights),
-    flightsText(row.affected),
-    flightEnds(row.ci_low, row.ci_high),
-    flightEnds(row.year_low, row.year_high),
+    row.told,
+    row.affected === null ? NO_DATA : flightEnds(row.ci_low, row.told_ends),
+    row.affected === null ? NO_DATA : row.told_years,
     row.unknown_flights ? grouped(row.unknown_flights) : "\u2013",
   ]);
   if (!rows.length) return null;
@@ -101,7 +109,7 @@ function scheduleDays() {
   const rows = SCHEDULE_DAYS.filter((row) => row.affected !== null && row.affected > 0).map((row) => [
     [row.date, " ", el("small", null, row.weekday)],
     grouped(row.flights),
-    flightsText(row.affected),
+    row.told,
     percent(row.share),
   ]);
   if (!rows.length) return null;
@@ -155,9 +163,10 @@ function flightMass(flight) {
 
 function flightNearest(flight) {
   if (flight.shortfall === null) return NO_DATA;
-  if (!flight.nearest_time) return flight.shortfall < PLANNING.target ? "as planned" : "no hour";
   const hours = flight.nearest_shift_h;
-  const shift = hours === null ? "" : signed(hours, Number.isInteger(hours) ? 0 : 1) + " h";
+  if (hours === 0) return "as planned";
+  if (!flight.nearest_time) return flight.shortfall < PLANNING.target ? "as planned" : flight.no_time;
+  const shift = hours === null ? "" : Math.abs(hours) + " h " + (hours < 0 ? "earlier" : "later");
   return [
     given(flight.nearest_time),
     " ",
@@ -172,7 +181,13 @@ function flightRow(flight, actions) {
     given(flight.flight),
     [
       index < 0 ? given(flight.field) : fieldLink(index, actions),
-      el("small", null, given(profile ? profile.name : flight.aircraft), ", ", flight.operation),
+      el(
+        "small",
+        null,
+        given(profile ? profile.name : flight.aircraft),
+        ", " + flight.operation,
+        flight.mass_kg === null ? "" : " at " + grouped(Math.floor(flight.mass_kg)) + " kg",
+      ),
     ],
     [
       given(flight.when),
@@ -183,9 +198,10 @@ function flightRow(flight, actions) {
         given(flight.clock_time),
         ", " + grouped(flight.flights) + (flight.flights === 1 ? " flight" : " flights"),
       ),
+      flight.note ? el("small", { class: "note" }, given(flight.note)) : null,
     ],
     flightShare(flight),
-    flightsText(flight.affected),
+    flight.told,
     flight.limiting || (flight.shortfall === null ? NO_DATA : "none"),
     flightMass(flight),
     flightNearest(flight),
@@ -239,7 +255,8 @@ function scheduleView(state, actions) {
           percent(PLANNING.holdsIn) +
           " of the hours; target: fewer than " +
           edgeText(PLANNING.target) +
-          " %. Affected: flights of the schedule expected to fall short.",
+          " %. Affected: flights of the schedule expected to fall short." +
+          steepWords(FLIGHTS.map((flight) => indexOfId(STUDY.fields, flight.field))),
       ),
       stackedTable(
         "flights",

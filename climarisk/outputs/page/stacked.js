@@ -27,11 +27,24 @@ function stackedTable(kind, caption, heads, rows) {
   );
 }
 
-// A button with the name of a field that opens it.
+// A button with the name of a field that opens it, and what warns of the field.
 function fieldLink(index, actions) {
   const button = el("button", { type: "button", class: "plain-button" }, clamped(STUDY.fields[index].name));
   button.addEventListener("click", () => actions.open(index));
-  return button;
+  const marks = warningMarks(STUDY.fields[index]);
+  const told = el("span", { class: "marks" }, el("span", { class: "steep" }, marks.join(" \u00b7 ")));
+  return el("span", { class: "named" }, button, marks.length ? told : null);
+}
+
+// What the mark of a steep field means, where one of the fields shown has it.
+function steepWords(fields) {
+  return fields.some((index) => index >= 0 && isSteep(STUDY.fields[index]))
+    ? " \u201c" +
+        STEEP_MARK +
+        "\u201d: a runway of more than " +
+        STUDY.steepPct +
+        " % slope; no figure there is a pass."
+    : "";
 }
 
 function choice(id, label, options, value, choose) {

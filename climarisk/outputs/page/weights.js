@@ -3,7 +3,12 @@
 function weightFacts(state) {
   if (!PLANNING.hasWeights) return [];
   const load = loadThatHolds(state.field, state.aircraft, state.period, -1);
-  return [["Weight that holds", massText(load, STUDY.aircraft[state.aircraft])]];
+  return [
+    [
+      "Weight that holds",
+      massText(load, STUDY.aircraft[state.aircraft]) + (load > 0 ? stepWords("month") : ""),
+    ],
+  ];
 }
 
 function massInterval(bounds, profile) {
@@ -49,7 +54,7 @@ function weightPart(state) {
       { class: "key" },
       "The largest mass at which every check, landing included, holds in " +
         often +
-        " of the hours of the window. Rounded down to steps of " +
+        " of the hours of the window. Rounded down, in steps of " +
         profile.fineKg +
         " kg" +
         (profile.coarseKg > profile.fineKg ? ", by the hour of " + profile.coarseKg + " kg" : "") +

@@ -4,28 +4,28 @@ function monthPlace(state, month) {
   return riskPlace(state.field, state.aircraft, { season: false, index: month });
 }
 
-// Hours of the window below the target; null where no hour of the window has a figure.
-function workingHours(state, month) {
-  const place = monthPlace(state, month);
-  if (countAt("clock_count", place) === null) return null;
-  const cells = ARRAYS.clock_bits.length / 3;
-  const isSet = (hour) => (ARRAYS.clock_bits[(hour >> 3) * cells + place] >> (7 - (hour & 7))) & 1;
-  return Array.from({ length: 24 }, (_, hour) => hour).filter(isSet);
+// Hours in the order of the window as "06:00-10:00, 18:00"; the label of an hour is its full hour.
+function hourRanges(hours) {
+  return hours.replace(/\d+/g, "$&:00").replaceAll(" ", ", ");
+}
+
+// The same by the civil clock, earlier days first where it changes within the month.
+function clockRanges(hours) {
+  return hours
+    .split(" / ")
+    .map((days) => days.replaceAll(" ", ", "))
+    .join(" / ");
 }
 
 function workingCell(state, month) {
-  const hours = workingHours(state, month);
-  if (hours === null) return NO_DATA;
   const place = monthPlace(state, month);
+  const [hours, clock] = ["hours", "clock_hours"].map((name) => hoursAt("window_" + name, place));
+  if (hours === null) return NO_DATA;
   const unknown = countAt("clock_unknown", place);
-  const [first, last] = ["first", "last"].map((end) => countAt("clock_" + end, place));
-  const clock =
-    first === null || last === null
-      ? null
-      : [...new Set([PLANNING.clocks[first], PLANNING.clocks[last]])].join(" to ");
+  const shown = clock === null ? "" : PLANNING.windowClocks[clock];
   return [
-    hours.length ? hourRanges(hours) : "no hour",
-    clock === null ? null : el("small", null, "clock ", given(clock)),
+    PLANNING.windowHours[hours] ? hourRanges(PLANNING.windowHours[hours]) : "no hour",
+    shown ? el("small", null, "clock ", given(clockRanges(shown))) : null,
     unknown ? el("small", null, unknown + (unknown === 1 ? " hour" : " hours") + " without figures") : null,
   ];
 }
@@ -61,7 +61,7 @@ function worksPart(state) {
     name,
     workingCell(state, month),
     daylightCell(state, month, notes),
-    percent(shareAt("run_days", monthPlace(state, month))),
+    percentDown(countAt("run_days", monthPlace(state, month))),
   ]);
   return section(
     "When it works",
@@ -70,13 +70,13 @@ function worksPart(state) {
       { class: "key" },
       "Hours of the window, first to last full hour of local standard time, in which less than " +
         limit +
-        " of the days fall short; below them the first and the last by the civil clock" +
+        " of the days fall short; below them the same by the civil clock" +
         (PLANNING.year ? " of " + PLANNING.year : "") +
-        ". Usable hours a month: hours in daylight that do not fall short, with their " +
+        ", earlier days before the stroke where it changes within the month. Usable hours a month: hours in daylight that do not fall short, with their " +
         confidenceText() +
         ". Days: at least " +
         PLANNING.runHours +
-        " usable hours in a row.",
+        " usable hours in a row, rounded down.",
     ),
     table(
       ["When ", given(STUDY.aircraft[state.aircraft].name), " works here"],

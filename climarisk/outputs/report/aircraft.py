@@ -11,7 +11,6 @@ from climarisk.aircraft import AircraftProfile, PerformanceTable
 from climarisk.outputs.report.charts import share_chart, share_top
 from climarisk.outputs.report.data import N_MONTHS, ranked, worst
 from climarisk.outputs.report.key import band_key, chart_card
-from climarisk.outputs.report.planning import weight_part, window_part
 from climarisk.outputs.report.tables import Sheet, shortfall_tables
 from climarisk.outputs.report.words import Html, count_text, el, given, isolated, unbroken
 from climarisk.outputs.report.worst import Worst, worst_of
@@ -51,8 +50,6 @@ def _section(sheet: Sheet, aircraft: int) -> Html:
         el("p", summary(sheet, aircraft), class_="lead"),
         band_key(sheet),
         shortfall_tables(sheet, aircraft, order),
-        weight_part(sheet, aircraft, order),
-        window_part(sheet, aircraft, order),
         _charts(sheet, aircraft, order),
         class_="sheet",
         id=f"aircraft-{aircraft + 1}",

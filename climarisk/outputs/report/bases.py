@@ -7,14 +7,15 @@ from climarisk.outputs.bases_page import difference_sentence
 from climarisk.outputs.bases_tables import (
     View,
     fleet_text,
+    icing_words,
     interval_words,
     pairs_of,
     percent,
     ranking_table,
 )
 from climarisk.outputs.report.tables import Sheet
-from climarisk.outputs.report.words import Html, el, given, hours_text, isolated
-from climarisk.outputs.texts import NO_DATA, icing_basis
+from climarisk.outputs.report.words import Html, el, isolated
+from climarisk.outputs.texts import ICING_SERIOUS, NO_DATA, hours_text
 from climarisk.rules import YEARS
 
 
@@ -43,14 +44,14 @@ def _lead(view: View) -> list[object]:
         return ["No field has a figure in every month: there is no ranking."]
     row = view.rows[ranked[0], ""]
     lead: list[object] = [
-        el("b", given(view.names[ranked[0]])),
+        el("b", view.called(ranked[0])),
         f" comes first: {hours_text(row['usable_hours_month'])} a month ({interval_words(row)}).",
     ]
     pairs = pairs_of(view)
     for first, second in zip(ranked[:3], ranked[1:3], strict=False):
         gap = pairs.get((first, second), {}).get("")
         if gap is not None:
-            better, other = (isolated(view.names[str(gap[side])]) for side in ("first", "second"))
+            better, other = (view.told(str(gap[side])) for side in ("first", "second"))
             lead += [" ", difference_sentence(better, other, gap, view.confidence)]
     return lead
 
@@ -58,7 +59,6 @@ def _lead(view: View) -> list[object]:
 def _key(view: View, run: int) -> list[str]:
     years = YEARS.settled_interval
     few = any(0 < row["n_years"] < years for row in view.rows.values())
-    frame = view.result.icing_monthly
     items = [
         f"Usable hours: of the window, mean over the twelve months and the fleet; below them the "
         f"{percent(view.confidence)} interval (dark) and single years (pale).",
@@ -66,15 +66,12 @@ def _key(view: View, run: int) -> list[str]:
         f"A field with a month of {NO_DATA} has no rank: {NO_DATA} is not the same as no risk.",
         "Numbers here are ranks. Each aircraft, all differences: sheet “Bases” of the workbook.",
     ]
-    steep = [
-        name for f, name in zip(view.result.fields, view.names.values(), strict=True) if f.is_steep
-    ]
+    steep = [view.names[field] for field in view.order if view.steep(field)]
     if steep:
         told = ", ".join(isolated(name) for name in steep)
         items.append(f"Steeper than {STEEP_SLOPE_PCT:g} %, no figure is a pass: {told}.")
     if few:
         items.append(f"* interval from fewer than {years} years.")
-    if not frame.empty:
-        basis = icing_basis(str(frame["method"].iloc[0]), str(frame["verified"].iloc[0]))
-        items.append(f"Carburettor icing serious even in cruise: of the daylight hours; {basis}.")
+    if basis := icing_words(view):
+        items.append(f"Carburettor icing {ICING_SERIOUS}: of the daylight hours; {basis}.")
     return items

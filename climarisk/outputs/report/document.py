@@ -12,6 +12,7 @@ from climarisk.outputs.report.aircraft import aircraft_sections
 from climarisk.outputs.report.bases import bases_section
 from climarisk.outputs.report.data import figures
 from climarisk.outputs.report.overview import overview_section
+from climarisk.outputs.report.planning import planning_sections
 from climarisk.outputs.report.schedule import schedule_section
 from climarisk.outputs.report.sources import sources_section
 from climarisk.outputs.report.style import paper_page, report_text, style
@@ -32,13 +33,14 @@ def render_report(result: StudyResult) -> str:
     -------
     str
         A complete HTML document that needs no other file and no network and holds no script;
-        printed, it gives A4 pages: an overview, the aircraft, bases and schedule, the
-        air, method and sources.
+        printed, it gives A4 pages: an overview, the aircraft, their weights and working
+        hours, bases and schedule, the air, method and sources.
     """
     sheet = Sheet(result, figures(result))
     sections = [
         overview_section(sheet),
         *aircraft_sections(sheet),
+        *planning_sections(sheet),
         bases_section(sheet),
         schedule_section(sheet),
         air_section(sheet),

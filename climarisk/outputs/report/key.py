@@ -42,10 +42,15 @@ def band_key(sheet: Sheet, samples: bool = False) -> Html:
     if not samples:
         items += _season_items(sheet)
     if any(field.is_steep for field in sheet.result.fields):
-        steep = el("span", STEEP_MARK, class_="mark")
-        text = f" slope over {STEEP_SLOPE_PCT:g} %: needs a site-specific procedure"
-        items.append(el("li", steep, text))
+        items.append(steep_item())
     return el("ul", items, class_="key")
+
+
+def steep_item() -> Html:
+    """What the mark beside the name of a field means."""
+    need = "needs a site-specific procedure, no figure is a pass"
+    text = f" slope over {STEEP_SLOPE_PCT:g} %: {need}"
+    return el("li", el("span", STEEP_MARK, class_="mark"), text)
 
 
 def _season_items(sheet: Sheet) -> list[Html]:

@@ -7,6 +7,7 @@ import numpy as np
 from climarisk.outputs.report.aircraft import summary
 from climarisk.outputs.report.charts import month_strip, strip_months
 from climarisk.outputs.report.key import band_key, record_words
+from climarisk.outputs.report.planning import PLANNING_ID
 from climarisk.outputs.report.sketch import fields_sketch
 from climarisk.outputs.report.tables import Sheet, overview_tables
 from climarisk.outputs.report.words import Html, count_text, el, given, isolated
@@ -97,7 +98,9 @@ def _contents(sheet: Sheet) -> Html:
         el("li", el("a", isolated(name), href=f"#aircraft-{a + 1}"))
         for a, name in enumerate(sheet.aircraft)
     ]
-    further = [("Bases side by side", "bases", not sheet.result.bases.empty)]
+    works = not (sheet.result.weights_monthly.empty and sheet.result.windows_monthly.empty)
+    further = [("Weights and working hours", f"{PLANNING_ID}-1", works and bool(sheet.aircraft))]
+    further.append(("Bases side by side", "bases", not sheet.result.bases.empty))
     flights = sheet.result.schedule_flights
     further.append(("Schedule", "schedule", flights is not None and not flights.empty))
     links += [el("li", el("a", text, href=f"#{to}")) for text, to, there in further if there]

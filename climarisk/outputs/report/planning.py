@@ -1,4 +1,4 @@
-"""Tables of the planning answers: weights, working hours, carburettor icing, engine power."""
+"""The planning answers: pages of weights and working hours; tables of icing and engine power."""
 
 from __future__ import annotations
 
@@ -10,7 +10,7 @@ import numpy as np
 import pandas as pd
 
 from climarisk.icing import serious, serious_in_cruise
-from climarisk.outputs.report.data import N_MONTHS
+from climarisk.outputs.report.data import N_MONTHS, ranked
 from climarisk.outputs.report.tables import (
     NO_CELL,
     Sheet,
@@ -18,28 +18,52 @@ from climarisk.outputs.report.tables import (
     gap_mark,
     period_tables,
 )
-from climarisk.outputs.report.words import Html, el, given, hours_text, number, unbroken
+from climarisk.outputs.report.words import Html, el, given, number, unbroken
 from climarisk.outputs.texts import (
+    ICING_SERIOUS,
     LOAD_LABELS,
     MONTHS,
     NO_DATA,
-    either,
     engine_groups,
     grouped,
+    hours_text,
     icing_basis,
     load_class,
     mass_text,
     share_text,
     short_months,
     whole_down,
+    whole_up,
     worst_months,
 )
 from climarisk.rules import YEARS
 
 NOT_MET = LOAD_LABELS[-1]
+#: Begins the names of the pages of weights and working hours; the number of the aircraft follows.
+PLANNING_ID = "works"
 _Row = Mapping[Any, Any]
 #: Rows of a frame by the ids of field and aircraft and by month.
 _Rows = Mapping[tuple[str, str, int], _Row]
+
+
+def planning_sections(sheet: Sheet) -> list[Html]:
+    """A page for each aircraft with the weights that hold and the working hours."""
+    made = []
+    for aircraft, name in enumerate(sheet.aircraft):
+        order = ranked(sheet.figures.shares[:, aircraft]).tolist()
+        parts = [weight_part(sheet, aircraft, order), window_part(sheet, aircraft, order)]
+        if not any(parts):
+            continue
+        section = el(
+            "section",
+            el("p", "Weights and working hours", class_="kicker"),
+            el("h2", given(name)),
+            parts,
+            class_="sheet works",
+            id=f"{PLANNING_ID}-{aircraft + 1}",
+        )
+        made.append(section)
+    return made
 
 
 # Weights
@@ -127,10 +151,10 @@ def _mass_interval(low: float, high: float, years: float) -> str:
     """The interval of a mass, outwards, and why an end of it is missing."""
     if years < YEARS.interval or math.isnan(high):
         return "too few years"
-    ends = grouped(-whole_down(-high))
+    ends = grouped(whole_up(high))
     star = "*" if years < YEARS.settled_interval else ""
     first = NOT_MET if math.isnan(low) else grouped(whole_down(low))
-    return f"mass {first}{' to ' if math.isnan(low) else '-'}{ends} kg{star}"
+    return f"mass {first}{' to ' if math.isnan(low) else '-'}{ends}{star}"
 
 
 # Working hours
@@ -150,9 +174,9 @@ def window_part(sheet: Sheet, aircraft: int, order: Sequence[int]) -> list[Html]
         return NO_CELL if row is None else _hours_cell(row)
 
     heads = (
-        f"Hours of the day with a shortfall below {target}, local standard time; below them first "
-        f"and last by the civil clock of {asked['year']}, and usable daylight hours",
-        "Month: hours of the day; civil clock, 06/07 where it changes; usable hours of daylight",
+        f"Hours of the day with a shortfall below {target}, by local standard time and by the "
+        f"civil clock of {asked['year']}",
+        "Month: standard time; civil clock, before / after it changes; usable hours of daylight",
         "",
     )
     return [
@@ -169,15 +193,20 @@ def _hours_cell(row: _Row) -> Html:
     gone = [(el("small", f"{unknown} h {NO_DATA}"), " ")] if unknown else []
     if not row["n_clock_hours"]:
         return el("td", "none ", gone, usable, class_="span")
-    first, last = (_short(str(row[f"clock_{end}"])) for end in ("first", "last"))
-    clock = el("small", first if first == last else f"{first}-{last}")
-    ranges = [part for text in str(row["hours"]).split() for part in (", ", unbroken(text))]
-    return el("td", ranges[1:], " ", (clock, " "), gone, usable, class_="span")
+    clock = el("small", _clock_parts(str(row["clock_hours"])))
+    return el("td", _ranges(str(row["hours"])), " ", (clock, " "), gone, usable, class_="span")
 
 
-def _short(clock: str) -> str:
-    """Clock times without the minutes of a full hour: ``05/06`` for ``05:00 / 06:00``."""
-    return "/".join(time.removesuffix(":00") for time in either(clock).split(" or "))
+def _ranges(text: str) -> Sequence[object]:
+    """Ranges of hours, none of which breaks."""
+    return [part for hours in text.split() for part in (", ", unbroken(hours))][1:]
+
+
+def _clock_parts(clock: str) -> Sequence[object]:
+    """Hours by the civil clock without the minutes of full hours: ``05-13, 18-21 / 06-14``."""
+    stretches = clock.replace(":00", "").split(" / ")
+    parts = [part for text in stretches for part in ("\N{NO-BREAK SPACE}/ ", _ranges(text))]
+    return parts[1:]
 
 
 def _rows_of(frame: pd.DataFrame) -> _Rows:
@@ -215,9 +244,9 @@ def icing_tables(sheet: Sheet, order: Sequence[int]) -> list[Html]:
         return el("td", number(float(worst[field, period])), " ", below)
 
     heads = (
-        f"Carburettor icing, % of daylight hours ({basis}): serious even in cruise, below it "
-        "at least in descent",
-        f"Month: serious in cruise; in descent; {basis}",
+        f"Carburettor icing, % of daylight hours ({basis}): {ICING_SERIOUS}, below it serious at "
+        "least in descent",
+        f"Month: {ICING_SERIOUS}; at least in descent; {basis}",
         "",
     )
     return period_tables(sheet, order, cell, heads, seasons=False)
@@ -294,4 +323,4 @@ def _per_cent(share: float) -> str:
 
 
 def _up(value: float, step: float) -> int:
-    return -whole_down(-value / step) * int(step)
+    return whole_up(value / step) * int(step)

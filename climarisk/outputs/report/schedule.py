@@ -9,16 +9,20 @@ from typing import Any
 import pandas as pd
 
 from climarisk.outputs.report.planning import NOT_MET
-from climarisk.outputs.report.tables import Sheet
+from climarisk.outputs.report.tables import STEEP_MARK, Sheet
 from climarisk.outputs.report.words import Html, el, given, number, scroll
 from climarisk.outputs.report.worst import interval_words
+from climarisk.outputs.schedule_words import note_words
 from climarisk.outputs.texts import (
     NO_DATA,
+    affected_text,
     band_of,
     flights_interval,
     flights_text,
     grouped,
     mass_text,
+    no_time_text,
+    operation_text,
     schedule_words,
     share_text,
 )
@@ -52,8 +56,8 @@ def schedule_section(sheet: Sheet) -> Html | None:
             "p",
             f"Dates and clock times of {asked['year']}, weather of {result.settings['first_year']} "
             f"to {result.settings['last_year']}. Flights share their weather, so the intervals "
-            "come from whole years; numbers of flights are rounded up, intervals outwards. Never "
-            "met: short in every hour of the record.",
+            "come from whole years; intervals are rounded outwards. Never met: short in "
+            "every hour of the record.",
             class_="quiet",
         ),
         el("div", _season_table(sheet, seasons), _day_table(days), class_="tallies"),
@@ -70,7 +74,9 @@ def _table(kind: str, caption: str, heads: Sequence[str], rows: Iterable[Html]) 
 
 
 def _season_table(sheet: Sheet, seasons: pd.DataFrame) -> Html:
-    rows = [el("tr", _season_cells(row)) for row in seasons.to_dict("records")]
+    rows = [
+        el("tr", _season_cells(row)) for row in seasons.to_dict("records") if int(row["flights"])
+    ]
     heads = ["Season", "Flights", "Fall short", f"{sheet.confidence} interval"]
     heads += ["Best and worst year", "Without figures"]
     return _table("tally", "By season", heads, rows)
@@ -81,9 +87,9 @@ def _season_cells(row: _Row) -> list[Html]:
     head = el("th", name, scope="row")
     known = not pd.isna(row["affected"])
     ends = flights_interval(float(row["ci_low"]), float(row["ci_high"]))
-    years = flights_interval(float(row["year_low"]), float(row["year_high"]))
+    years = " and ".join(flights_text(float(row[end])) for end in ("year_low", "year_high"))
     if known and not pd.isna(row["worst_year"]):
-        years += f", worst {int(row['worst_year'])}"
+        years += f" in {int(row['worst_year'])}"
     told = [
         grouped(int(row["flights"])),
         flights_text(float(row["affected"])),
@@ -147,26 +153,29 @@ def _flight_cells(
         given(of.get(str(row[key]), str(row[key])))
         for of, key in ((names, "field"), (planes, "aircraft"))
     )
+    mark = [" ", el("small", STEEP_MARK, class_="mark")] if row["steep"] == "yes" else []
     head = [
         el(
             "th",
             el("span", given(row["flight"]), class_="label"),
             " ",
             el("small", when),
+            note_words(row),
             scope="row",
         ),
-        el("td", el("span", field, class_="label"), " ", el("small", plane)),
-        el("td", str(row["operation"])),
+        el("td", el("span", field, class_="label"), mark, " ", el("small", plane)),
+        el("td", operation_text(str(row["operation"]))),
     ]
     if pd.isna(row["shortfall"]):
         return [*head, el("td", NO_DATA, class_="none", colspan=5)]
     share = float(row["shortfall"])
     interval = interval_words(float(row["ci_low"]), float(row["ci_high"]), float(row["n_years"]))
+    never = [" ", el("small", "never met")] if row["never_met"] == "yes" else []
     return [
         *head,
-        el("td", share_text(share), " ", el("small", interval),
+        el("td", share_text(share), " ", el("small", interval), never,
            class_=f"share b{band_of(share, sheet.edges)}"),
-        el("td", f"{flights_text(float(row['affected']))} of {grouped(int(row['flights']))}"),
+        el("td", affected_text(row)),
         el("td", str(row["limiting"]) or "none"),
         _mass_cell(row),
         _nearest_cell(row),
@@ -183,9 +192,9 @@ def _mass_cell(row: _Row) -> Html:
 
 
 def _nearest_cell(row: _Row) -> Html:
-    if row["never_met"] == "yes":
-        return el("td", el("b", "never met"))
     if not row["nearest_time"] or pd.isna(row["nearest_time"]):
-        return el("td", "none")
+        return el("td", no_time_text(row["note"]))
+    if row["nearest_shift_h"] == 0:
+        return el("td", "as planned")
     share = number(float(row["nearest_shortfall"]))
     return el("td", str(row["nearest_time"]), " ", el("small", f"{share} %"))

@@ -18,7 +18,6 @@ from climarisk.outputs.report.words import (
     elevation_text,
     error_text,
     given,
-    hours_text,
     number,
     own_share_text,
     scroll,
@@ -33,6 +32,7 @@ from climarisk.outputs.texts import (
     altitude_text,
     band_of,
     field_labels,
+    hours_text,
     share_text,
     short_months,
 )

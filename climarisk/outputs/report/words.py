@@ -101,15 +101,6 @@ def height_text(metres: float) -> str:
     return f"{'+' if round(metres) > 0 else ''}{grouped(round(metres))} m"
 
 
-def hours_text(hours: float) -> str:
-    """Usable hours, rounded down: never more than there are."""
-    return (
-        ""
-        if math.isnan(hours)
-        else f"{grouped(math.floor(hours + 1e-9))}\N{NARROW NO-BREAK SPACE}h"
-    )
-
-
 def error_text(feet: float) -> str:
     """One standard deviation in feet, with two digits."""
     if math.isnan(feet):

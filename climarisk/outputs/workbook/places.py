@@ -9,27 +9,48 @@ from typing import Any
 import pandas as pd
 
 from climarisk.outputs.texts import (
+    ICING_SERIOUS,
     NO_DATA,
+    STEEP_TAIL,
     aircraft_labels,
     field_labels,
+    good_share,
     icing_basis,
+    nearest,
+    no_time_text,
+    operation_text,
+    outwards,
     ranges_text,
     schedule_words,
     share_text,
+    told_apart,
     whole_down,
+    whole_up,
 )
-from climarisk.outputs.workbook.cells import EDGE, MARK, STEEP, WHOLE, Book, Sheet, Shown
+from climarisk.outputs.workbook.cells import (
+    EDGE,
+    MARK,
+    SHARE,
+    STEEP,
+    TENTH,
+    WHOLE,
+    Book,
+    Sheet,
+    Shown,
+)
 from climarisk.outputs.workbook.grids import FEW, NO_CHECK, NO_INTERVAL, NO_PASS, label_width, scope
 from climarisk.outputs.workbook.planning import NOT_MET
 from climarisk.results import StudyResult
 from climarisk.rules import YEARS
 
 BASES, SCHEDULE = "Bases", "Schedule"
-FLEET, NO_RANK, NO_CARBURETTOR, NO_TIME = "fleet", "no rank", "no carburettor", "none"
+FLEET, NO_RANK, NO_CARBURETTOR = "fleet", "no rank", "no carburettor"
 #: Days of a schedule that the workbook shows; the CSV file holds them all.
 MOST_DAYS = 50
-#: Flights to a tenth below ten, then whole.
-_FLIGHTS = "[=0]0;[<10]0.0;#,##0"
+ICING_NOTE = " Carburettor icing: of the daylight hours."
+#: What is above zero and rounds to it.
+_RARE = '"< 0.1"'
+_TENTH = TENTH + ';"\N{MINUS SIGN}"0.0;0'
 
 _Row = Mapping[Any, Any]
 
@@ -40,7 +61,7 @@ class _Cells:
     def __init__(self, book: Book, result: StudyResult) -> None:
         self.book = book
         self.whole, self.part, self.band = book.numbers(WHOLE), book.parts(), book.banded()
-        self.number = book.numbers(_FLIGHTS)
+        self.good = book.numbers(SHARE)
         self.name, self.middle = book.style("text"), book.style("middle", shrink=True)
         self.fields = dict(zip([f.id for f in result.fields], field_labels(result), strict=True))
         planes = zip([a.id for a in result.aircraft], aircraft_labels(result), strict=True)
@@ -48,8 +69,9 @@ class _Cells:
         self.steep = {f.id for f in result.fields if f.is_steep}
 
     def field(self, key: Any) -> Shown:
-        """The name of a field; an unknown id stays as it is."""
-        return self.fields.get(str(key), str(key)), self.name
+        """The name of a field, told where no figure is a pass; an unknown id stays as it is."""
+        key = str(key)
+        return self.fields.get(key, key) + (STEEP_TAIL if key in self.steep else ""), self.name
 
     def plane(self, key: Any) -> Shown:
         """The name of an aircraft, or the word for the fleet."""
@@ -68,7 +90,7 @@ class _Cells:
 
     def up(self, value: Any, without: str = NO_DATA) -> Shown:
         """A number rounded up, or a word where there is none."""
-        return self._or(math.nan if pd.isna(value) else -float(whole_down(-float(value))), without)
+        return self._or(math.nan if pd.isna(value) else float(whole_up(float(value))), without)
 
     def share(self, value: Any, without: str = NO_DATA) -> Shown:
         """A share, or a word where there is none."""
@@ -76,12 +98,27 @@ class _Cells:
             return self.book.no_data if without == NO_DATA else (without, self.middle)
         return self.part(float(value))
 
-    def flights(self, value: Any) -> Shown:
-        """Flights expected to fall short, rounded up."""
+    def days(self, value: Any) -> Shown:
+        """A share of days that are good, rounded down."""
+        return self.good(good_share(float(value)))
+
+    def tenth(self, value: Any, without: str = NO_DATA) -> Shown:
+        """Flights or hours to the nearest tenth below ten, else whole; or a word without any."""
         if pd.isna(value):
-            return self.book.no_data
-        step = 10.0 if value < 10 else 1.0
-        return self.number(-whole_down(-float(value) * step) / step)
+            return self._or(math.nan, without)
+        rounded = nearest(float(value))
+        if rounded == 0.0 and value > 0.0:
+            return self.book.numbers(_RARE)(float(value))
+        return self._stepped(rounded)
+
+    def ends(self, low: Any, high: Any, without: str) -> list[Shown]:
+        """The ends of an interval of such numbers, outwards, or a word for each."""
+        if pd.isna(low) or pd.isna(high):
+            return [self._or(math.nan, without)] * 2
+        return [self._stepped(end) for end in outwards(float(low), float(high))]
+
+    def _stepped(self, value: float) -> Shown:
+        return self.book.numbers(_TENTH if abs(value) < 10.0 else WHOLE)(value)
 
     def marks(self, field: Any, years: Any) -> str:
         """What stands behind a figure of a field from so many years."""
@@ -115,17 +152,17 @@ def write_bases(book: Book, result: StudyResult) -> None:
     sheet.line(
         "Hours of a month, mean over the year, in which the fleet and each aircraft could have "
         f"worked at each field; {scope(result)}. The fleet is the mean over its aeroplanes: "
-        f"{_fleet(result, cells)}. Hours are rounded down, intervals outwards. A field with a "
-        f"month of {NO_DATA} has no rank.",
+        f"{_fleet(result, cells)}. Usable hours and shares of days are rounded down, intervals "
+        f"outwards. A field with a month of {NO_DATA} has no rank.",
     )
-    sheet.line(f"{FEW} {NO_PASS}{_icing_note(result)}", "note")
+    sheet.line(f"{FEW} {NO_PASS}{ICING_NOTE if len(result.icing_monthly) else ''}", "note")
     sure = f"{round(float(result.settings['confidence']) * 100)} % interval"
     sheet.head(
         [
             *("Rank", "Field", "Aircraft", "Usable hours a month", f"{sure}, low", "high"),
-            *("1 year in 10 is below", "1 year in 10 is above", "Worst season", "Hours a month"),
+            *("Single years, 10th percentile", "90th percentile", "Worst season", "Hours a month"),
             *(f"Days with {run} h in a row", "Within 1 K of saturation", "Within 2.5 K"),
-            *("Icing serious even in cruise", "Years, fewest"),
+            *(_icing_head(result), "Years, fewest"),
         ]
     )
     head = sheet.row - 1
@@ -144,12 +181,12 @@ def _fleet(result: StudyResult, cells: _Cells) -> str:
     return ", ".join(told) or "none"
 
 
-def _icing_note(result: StudyResult) -> str:
-    frame = result.icing_monthly
+def _icing_head(result: StudyResult) -> str:
+    """The head of the icing shares, with what they rest on."""
+    frame, head = result.icing_monthly, f"Icing {ICING_SERIOUS}"
     if frame.empty:
-        return ""
-    basis = icing_basis(str(frame["method"].iloc[0]), str(frame["verified"].iloc[0]))
-    return f" Carburettor icing serious even in cruise: of the daylight hours; {basis}."
+        return head
+    return f"{head} ({icing_basis(str(frame['method'].iloc[0]), str(frame['verified'].iloc[0]))})"
 
 
 def _base_cells(result: StudyResult, cells: _Cells, row: _Row) -> list[Shown]:
@@ -157,7 +194,9 @@ def _base_cells(result: StudyResult, cells: _Cells, row: _Row) -> list[Shown]:
     marks = cells.marks(row["field"], row["n_years"])
     few = NO_INTERVAL if known else NO_DATA
     usable = cells.book.marked(cells.down(row["usable_hours_month"]), marks)
-    carburettor = any(profile.carburettor for profile in result.aircraft)
+    planes = [a for a in result.aircraft if cells.plane(row["aircraft"])[0] == FLEET
+              or a.id == row["aircraft"]]  # fmt: skip
+    carburettor = any(profile.carburettor for profile in planes)
     return [
         cells.down(row["rank"], NO_RANK),
         cells.field(row["field"]),
@@ -169,7 +208,7 @@ def _base_cells(result: StudyResult, cells: _Cells, row: _Row) -> list[Shown]:
         cells.down(row["year_p90"], few),
         cells.text(row["worst_season"]),
         cells.down(row["worst_season_hours_month"]),
-        cells.share(row["days_with_run"]),
+        cells.days(row["days_with_run"]),
         cells.share(row["share_1k"]),
         cells.share(row["share_2_5k"]),
         cells.share(row["icing_serious"], NO_DATA if carburettor else NO_CARBURETTOR),
@@ -189,16 +228,15 @@ def _write_differences(sheet: Sheet, result: StudyResult, cells: _Cells, sure: s
     )
     for row in result.base_differences.to_dict("records"):
         none = pd.isna(row["ci_low"])
-        apart = "unknown" if none else "yes" if row["ci_low"] > 0.0 else "no"
+        apart = "unknown" if none else "yes" if told_apart(row["ci_low"], row["ci_high"]) else "no"
         plane = cells.plane(row["aircraft"])[0]
         told = [
             (apart, cells.middle),
             cells.field(row["first"]),
             cells.field(row["second"]),
             (plane, cells.book.style("text", shrink=True)),
-            cells.down(row["difference_hours_month"]),
-            cells.down(row["ci_low"], NO_INTERVAL),
-            cells.up(row["ci_high"], NO_INTERVAL),
+            cells.tenth(row["difference_hours_month"]),
+            *cells.ends(row["ci_low"], row["ci_high"], NO_INTERVAL),
         ]
         _written(sheet, told, **({"bold": True} if plane == FLEET else {}))
     if result.base_differences.empty:
@@ -219,7 +257,8 @@ def write_schedule(book: Book, result: StudyResult) -> None:
         return
     cells = _Cells(book, result)
     widths = [24.0, label_width([*cells.fields.values()]), label_width([*cells.aircraft.values()])]
-    widths += [12.0, 24.0, 11.0, 11.0, 11.0, 10.0, 11.0, 11.0, 11.0, 11.0, 19.0, *[11.0] * 6]
+    widths += [19.0, 24.0, 11.0, 11.0, 11.0, 10.0, *[11.0] * 5, 19.0]
+    widths += [*[11.0] * 6, 26.0]
     sheet = book.sheet(SCHEDULE, widths)
     sheet.line("Schedule", "title")
     asked = result.settings["planning"]
@@ -228,7 +267,7 @@ def write_schedule(book: Book, result: StudyResult) -> None:
     years = f"{settings['first_year']}-{settings['last_year']}"
     sheet.line(" ".join([*words, f"Dates of {asked['year']}, weather of the record: {years}."]))
     sheet.line(
-        "Flights expected to fall short are rounded up, intervals outwards: they come from "
+        "Intervals of the flights expected to fall short are rounded outwards; they come from "
         "resampling whole years, because the flights of a season share their weather.",
         "note",
     )
@@ -243,17 +282,16 @@ def _write_seasons(sheet: Sheet, cells: _Cells, seasons: pd.DataFrame, sure: str
     sheet.line("By season", "heading")
     heads = ["Season", "Flights", "Without figures", "Expected to fall short", f"{sure}, low"]
     sheet.head([*heads, "high", "Best year", "Worst year", "Which", "Years"])
-    for row in seasons.to_dict("records"):
+    for row in seasons[seasons["flights"] > 0].to_dict("records"):
         few = NO_INTERVAL if not pd.isna(row["affected"]) else NO_DATA
         told = [
             cells.text(row["season"] or "whole schedule"),
             cells.down(row["flights"]),
             cells.down(row["unknown_flights"]),
-            cells.flights(row["affected"]),
-            cells.down(row["ci_low"], few),
-            cells.up(row["ci_high"], few),
-            cells.down(row["year_low"], few),
-            cells.up(row["year_high"], few),
+            cells.tenth(row["affected"]),
+            *cells.ends(row["ci_low"], row["ci_high"], few),
+            cells.tenth(row["year_low"], few),
+            cells.tenth(row["year_high"], few),
             ("none" if pd.isna(row["worst_year"]) else str(int(row["worst_year"])), cells.middle),
             cells.down(row["n_years"]),
         ]
@@ -276,7 +314,7 @@ def _write_days(sheet: Sheet, cells: _Cells, days: pd.DataFrame) -> None:
             cells.text(row["weekday"]),
             cells.down(row["flights"]),
             cells.down(row["unknown_flights"]),
-            cells.flights(row["affected"]),
+            cells.tenth(row["affected"]),
             cells.band(float(row["share"])),
         ]
         _written(sheet, told)
@@ -308,9 +346,9 @@ def _write_flights(
     sheet.head(
         [
             *("Flight", "Field", "Aircraft", "Operation", "When", "Clock time", "Hours, LST"),
-            *("Mass, kg", "Flights", "Shortfall share", f"{sure}, low", "high"),
+            *("Mass, kg", "Flights", "Without figures", "Shortfall share", f"{sure}, low", "high"),
             *("Expected to fall short", "Limiting check", "Mass that holds, kg", "Useful load, kg"),
-            *("Nearest time", "Its share", "Never met", "Years that count"),
+            *("Nearest time", "Its share", "Never met", "Years that count", "Note"),
         ]
     )
     head = sheet.row - 1
@@ -331,25 +369,28 @@ def _flight_cells(cells: _Cells, row: _Row) -> list[Shown]:
     hours = ranges_text(str(row["hours"])) if isinstance(row["hours"], str) else ""
     never = row["never_met"] == "yes"
     told = str(row["never_met"]) if known else ""
+    none = no_time_text(row["note"]) if known else NO_DATA
     return [
         cells.text(row["flight"]),
         cells.field(row["field"]),
         cells.plane(row["aircraft"]),
-        cells.text(row["operation"]),
+        cells.text(operation_text(str(row["operation"]))),
         cells.text(row["when"]),
         cells.text(row["clock_time"]),
         cells.text(hours),
         cells.down(row["mass_kg"]),
         cells.down(row["flights"]),
+        cells.down(row["unknown_flights"]),
         cells.book.marked(share, marks),
         cells.share(row["ci_low"], few),
         cells.share(row["ci_high"], few),
-        cells.flights(row["affected"]),
+        cells.tenth(row["affected"]),
         cells.text(row["limiting"], NO_CHECK if known else NO_DATA),
         cells.down(row["mass_that_holds_kg"], load),
         cells.down(row["useful_load_kg"], load),
-        cells.text(row["nearest_time"], NO_TIME if known else NO_DATA),
-        cells.share(row["nearest_shortfall"], NO_TIME if known else NO_DATA),
+        cells.text(row["nearest_time"], none),
+        cells.share(row["nearest_shortfall"], none),
         (told, cells.book.style("middle", bold=never)) if told else cells.book.no_data,
         cells.down(row["n_years"]),
+        cells.text(row["note"], "\N{EN DASH}"),
     ]

@@ -9,20 +9,22 @@ import numpy as np
 import pandas as pd
 
 from climarisk.aircraft import AircraftProfile
-from climarisk.icing import LABELS, bands, serious, verified
+from climarisk.icing import LABELS, bands, serious, serious_in_cruise, verified
 from climarisk.outputs.texts import (
+    ICING_SERIOUS,
     LOAD_LABELS,
     MONTHS,
     NO_DATA,
     aircraft_labels,
-    either,
     engine_groups,
     field_labels,
+    good_share,
     icing_basis,
     load_class,
     ranges_text,
     share_text,
     whole_down,
+    whole_up,
 )
 from climarisk.outputs.workbook.cells import (
     EDGE,
@@ -183,10 +185,10 @@ def write_windows(book: Book, result: StudyResult) -> None:
     sheet.line("Usable windows", "title")
     sheet.line(
         f"Hours of the day whose shortfall share stays below {target}, {scope(result)}: by local "
-        f"standard time (LST), and the first and last of them by the civil clock of "
-        f"{asked['year']}; “or” where the clocks change in the month. Usable daylight hours are "
-        "those of civil daylight that do not fall short, whatever the hours window, rounded "
-        f"down; days with {run} hours in a row are days of the window."
+        f"standard time (LST), and by the civil clock of {asked['year']}; a slash stands between "
+        "the days before and after the clocks change. Usable daylight hours are those of civil "
+        "daylight that do not fall short, whatever the hours window; days with "
+        f"{run} hours in a row are days of the window. Both are rounded down."
     )
     sheet.line(
         f"{FEW} {NO_PASS} “{NO_HOUR}”: no hour of the day with figures stays below the target.",
@@ -210,12 +212,17 @@ def _window_blocks(book: Book, result: StudyResult, aircraft: str, run: int) -> 
     }
     return [
         _told(book, "Hours of the day, LST", _months(result, hours)("told")),
-        _told(book, "First and last, civil clock", _months(result, clock)("told")),
+        _told(book, "The same, civil clock", _months(result, clock)("told")),
         Block("Usable daylight hours", mapped(_whole_down, usable), words, marks=marks),
         Block(f"{sure}, low", mapped(_whole_down, ends["low"]), words, marks=marks),
         Block(f"{sure}, high", mapped(_whole_up, ends["high"]), words, marks=marks),
         Block("Daylight hours", mapped(_whole_down, values("daylight_hours")), words),
-        Block(f"Days with {run} h in a row", values("days_with_run"), book.parts(), marks=marks),
+        Block(
+            f"Days with {run} h in a row",
+            mapped(good_share, values("days_with_run")),
+            book.numbers(SHARE),
+            marks=marks,
+        ),
         Block("Years that count", years, words, marks=few),
     ]
 
@@ -245,11 +252,11 @@ def _hours_told(frame: pd.DataFrame) -> pd.DataFrame:
 
 
 def _clock_told(frame: pd.DataFrame) -> pd.DataFrame:
-    """The first and the last usable hour by the civil clock."""
+    """The usable hours by the civil clock."""
     told = [
         math.nan
         if pd.isna(row.n_clock_hours)
-        else f"{either(str(row.clock_first))} to {either(str(row.clock_last))}"
+        else " / ".join(ranges_text(text) for text in str(row.clock_hours).split(" / "))
         if row.n_clock_hours
         else NO_HOUR
         for row in frame.itertuples()
@@ -268,32 +275,29 @@ def write_icing(book: Book, result: StudyResult) -> None:
     method = str(result.settings["planning"]["carburettor_icing"])
     checked = str(frame["verified"].iloc[0]) if len(frame) else verified(method)
     basis = icing_basis(method, checked)
-    together = frame[frame["band"].isin(serious(method))]
-    together = together.groupby(["field", "month"], sort=False)["share"].sum(min_count=1)
     axes = _months(result, frame.drop_duplicates(["field", "month"]))
     years, few = axes("n_years"), few_years(axes("n_years"), YEARS.percentiles)
     share = book.numbers(SHARE)
+
+    def block(name: str, names: Sequence[str]) -> Block:
+        part = frame[frame["band"].isin(names)].groupby(["field", "month"], sort=False)["share"]
+        told = _months(result, part.sum(min_count=1).reset_index())("share")
+        return Block(name, told, share, marks=few)
+
+    worst = serious_in_cruise(method)
     blocks = [
-        Block(
-            "Serious in some phase of a flight",
-            _months(result, together.reset_index())("share"),
-            share,
-            marks=few,
-        ),
-        *(
-            Block(_capital(LABELS[band]), _months(result, frame[frame["band"] == band])("share"),
-                  share, marks=few)
-            for band in bands(method)
-        ),
+        block(_capital(ICING_SERIOUS), worst),
+        block("Serious at least in descent", serious(method)),
+        *(block(_capital(LABELS[name]), [name]) for name in bands(method) if name not in worst),
         Block("Years that count", years, book.numbers(WHOLE), marks=few),
-    ]  # fmt: skip
+    ]
     sheet = _open(book, ICING, result, [basis], (), figure=38.0)
     sheet.line("Carburettor icing", "title")
     sheet.line(
         "Share of the daylight hours whose surface air lies in each band of temperature and dew "
-        f"point, for aircraft with a carburettor; {basis}, {_period(result)}. The first figure "
-        "adds up the bands that are serious at some power, a descent included. Engines differ; "
-        "it is no forecast of ice."
+        f"point, for aircraft with a carburettor; {basis}, {_period(result)}. The second "
+        "figure adds up all bands that are serious at some power, a descent included. Engines "
+        "differ; it is no forecast of ice."
     )
     if basis.endswith("not verified"):
         sheet.line(
@@ -388,7 +392,7 @@ def _whole_down(value: float) -> float:
 
 
 def _whole_up(value: float) -> float:
-    return value if isinstance(value, str) or math.isnan(value) else -float(whole_down(-value))
+    return value if isinstance(value, str) or math.isnan(value) else float(whole_up(value))
 
 
 def _up(step: float) -> Callable[[float], float]:
