@@ -69,7 +69,7 @@ def test_run_writes_the_contract_and_says_where(study_folder, command, tmp_path,
     assert done.code == 0
     assert tree(tmp_path / "results") == FILES >= CONTRACT
     assert "Map: results/map.html" in done.out
-    assert "tables.xlsx (workbook), report.html (to print)" in done.out
+    assert "report.html (to print), bases.html (bases), tables.xlsx (workbook)" in done.out
     assert "caution: aircraft tourer" in done.err, "findings go to stderr"
     assert "%|" not in done.err, "no progress bar where stderr is no terminal"
 

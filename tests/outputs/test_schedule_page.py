@@ -29,7 +29,7 @@ USUAL = {
     "limiting": "take-off to 50 ft", "holds_in": 0.9, "mass_that_holds_kg": 701.9,
     "useful_load_kg": 181.9, "outcome": "mass", "nearest_time": "11:00", "nearest_shift_h": -3.0,
     "nearest_shortfall": 0.04, "never_met": "no", "interval_note": "",
-    "steep": "", "note": "",
+    "steep": "", "note": "", "unknown_flights": 0,
 }  # fmt: skip
 NOTHING = dict.fromkeys(
     ["shortfall", "ci_low", "ci_high", "affected", "mass_that_holds_kg", "useful_load_kg",
@@ -94,6 +94,15 @@ def test_row_shows_share_interval_check_mass_and_nearest_time():
     assert "25 % 18-31 % about 5.0 of 20 take-off to 50 ft 701 kg useful load 181 kg" in text
     assert "useful load 181 kg 11:00 3 h earlier, 4 %" in text
     assert "701 kg holds in 90 % of the hours; at 11:00 4 % fall short." in text
+
+
+def test_flights_without_figures_are_never_counted_as_fine():
+    text = words(page(row("A", affected=2.0, unknown_flights=12)))
+    assert text.count("about 2.0 of 8 with figures, 12 without") == 2
+    note = "the nearest time cannot be told"
+    there = row("A", nearest_time="", nearest_shift_h=np.nan, nearest_shortfall=np.nan)
+    assert "701 kg useful load 181 kg none within 12 h" in words(page(there))
+    assert "181 kg cannot be told" in words(page(there | {"note": note}))
 
 
 def test_steep_fields_and_notes_are_told_with_the_flight():
