@@ -66,7 +66,7 @@ def test_wide_tables_scroll_by_keyboard_in_a_container_of_their_own(open_report)
     assert box.evaluate("(box) => box.scrollWidth > box.clientWidth")
     box.focus()
     page.keyboard.press("ArrowRight")
-    for _ in range(50):  # the page's policy lets no other way of waiting in
+    for _ in range(200):  # the page's policy lets no other way of waiting in
         if box.evaluate("(box) => box.scrollLeft"):
             break
         page.wait_for_timeout(100)
