@@ -21,7 +21,9 @@ function headlineFacts(state) {
     ...weightFacts(state),
     [
       "Years, coverage",
-      (years || 0) + " years that count, " + shareBelowAll(risk("coverage")) + " of the period",
+      (years === 1 ? "1 year that counts, " : (years || 0) + " years that count, ") +
+        shareBelowAll(risk("coverage")) +
+        " of the period",
     ],
     ["Days affected", shareOf(risk("days_affected"), " of days have at least one such hour")],
     ["Outside table", shareOf(risk("outside_table"), " of hours")],

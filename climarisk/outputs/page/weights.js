@@ -3,12 +3,9 @@
 function weightFacts(state) {
   if (!PLANNING.hasWeights) return [];
   const load = loadThatHolds(state.field, state.aircraft, state.period, -1);
-  return [
-    [
-      "Weight that holds",
-      massText(load, STUDY.aircraft[state.aircraft]) + (load > 0 ? stepWords("month") : ""),
-    ],
-  ];
+  const often = load === null ? "" : " in " + percent(PLANNING.holdsIn) + " of the hours";
+  const steps = load > 0 ? stepWords("month") : "";
+  return [["Weight that holds", massText(load, STUDY.aircraft[state.aircraft]) + often + steps]];
 }
 
 function massInterval(bounds, profile) {
